@@ -1,0 +1,1 @@
+//! What is done (ledger) and what was found (catalogue).

@@ -1,0 +1,1 @@
+//! (Teff, log g) to temperature structure to emergent spectrum.

@@ -1,0 +1,8 @@
+//! The command line: one file per command.
+
+use std::process::ExitCode;
+
+/// Parses the arguments, runs the command, returns the exit code.
+pub fn run() -> ExitCode {
+    ExitCode::from(2)
+}

@@ -1,0 +1,1 @@
+//! Degenerate stars: (mass, Teff) to radius, luminosity, age.

@@ -1,0 +1,7 @@
+//! The command line of Emberline; everything it does lives in the library.
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    emberline::cli::run()
+}

@@ -1,0 +1,1 @@
+//! Mathematics only, thin over libraries.

@@ -1,0 +1,1 @@
+//! An invented night with known truth.

@@ -1,0 +1,1 @@
+//! One file per layout of reduced one-dimensional spectra.

@@ -1,0 +1,5 @@
+//! Benchmarks: `cargo bench`.
+#![allow(missing_docs)]
+fn main() {
+    divan::main();
+}
