@@ -1,0 +1,116 @@
+//! Absorption and scattering at every frequency and depth, with their temperature derivatives.
+
+use ndarray::Array2;
+
+use super::frequency::FrequencyGrid;
+use crate::physics::opacity::{Continuum, LineOpacity, SERIES, rosseland_mean};
+use crate::physics::planck::PLANCK_OVER_BOLTZMANN_K_S;
+use crate::physics::stark::ProfileTable;
+use crate::physics::state::State;
+
+/// Relative temperature step of the derivatives at constant pressure.
+const DERIVATIVE_STEP: f64 = 1e-3;
+
+/// Opacity sources prepared for one frequency grid.
+pub struct Sources<'t> {
+    grid: FrequencyGrid,
+    continuum: Continuum,
+    lines: LineOpacity<'t>,
+}
+
+/// Opacities per gram; arrays are (frequency, depth), so that a frequency's run is contiguous.
+#[derive(Debug)]
+pub struct Extinction {
+    /// True absorption plus scattering, cm^2 g^-1.
+    pub total_cm2_g: Array2<f64>,
+    /// True absorption over extinction.
+    pub thermal_fraction: Array2<f64>,
+    /// Derivative of `total_cm2_g` with temperature at constant pressure, cm^2 g^-1 K^-1.
+    pub total_slope: Array2<f64>,
+    /// Derivative of `thermal_fraction` with temperature, 1/K.
+    pub thermal_slope: Array2<f64>,
+    /// Rosseland mean at each depth, cm^2 g^-1.
+    pub rosseland_cm2_g: Vec<f64>,
+}
+
+impl<'t> Sources<'t> {
+    /// Prepares all sources on a frequency grid.
+    pub fn new(grid: FrequencyGrid, profiles: &'t ProfileTable) -> Self {
+        let continuum = Continuum::new(&grid.frequency_hz);
+        let lines = LineOpacity::new(&grid.wave_vac_aa, profiles);
+        Sources { grid, continuum, lines }
+    }
+
+    /// The frequencies.
+    pub fn grid(&self) -> &FrequencyGrid {
+        &self.grid
+    }
+
+    /// Computes the opacities of a run of states; derivatives only where asked, zero otherwise.
+    pub fn evaluate(&self, states: &[State], with_slopes: bool) -> Extinction {
+        let (frequencies, depths) = (self.grid.len(), states.len());
+        let zeros = || Array2::zeros((frequencies, depths));
+        let mut extinction = Extinction {
+            total_cm2_g: zeros(),
+            thermal_fraction: zeros(),
+            total_slope: zeros(),
+            thermal_slope: zeros(),
+            rosseland_cm2_g: Vec::with_capacity(depths),
+        };
+        let mut cross_section_cm2: [Vec<f64>; SERIES.len()] =
+            std::array::from_fn(|_| vec![0.0; frequencies]);
+        let column = || (vec![0.0; frequencies], vec![0.0; frequencies]);
+        let (mut total, mut fraction) = column();
+        let (mut shifted_total, mut shifted_fraction) = column();
+        for (depth, state) in states.iter().enumerate() {
+            self.lines.evaluate(state, &mut cross_section_cm2);
+            self.combine(state, &cross_section_cm2, &mut total, &mut fraction);
+            extinction.rosseland_cm2_g.push(rosseland_mean(
+                &self.grid.frequency_hz,
+                &self.grid.weight_hz,
+                &total,
+                state.temperature_k,
+            ));
+            extinction.total_cm2_g.column_mut(depth).assign(&ndarray::aview1(&total));
+            extinction.thermal_fraction.column_mut(depth).assign(&ndarray::aview1(&fraction));
+            if with_slopes {
+                let step_k = state.temperature_k * DERIVATIVE_STEP;
+                let shifted = State::new(state.temperature_k + step_k, state.pressure_cgs);
+                // Line shapes are kept: their own temperature dependence is weak, and the Newton
+                // iteration converges to the same structure without it.
+                self.combine(&shifted, &cross_section_cm2, &mut shifted_total, &mut shifted_fraction);
+                for frequency in 0..frequencies {
+                    extinction.total_slope[[frequency, depth]] =
+                        (shifted_total[frequency] - total[frequency]) / step_k;
+                    extinction.thermal_slope[[frequency, depth]] =
+                        (shifted_fraction[frequency] - fraction[frequency]) / step_k;
+                }
+            }
+        }
+        extinction
+    }
+
+    /// Extinction per gram and thermal fraction of one state with given line cross-sections.
+    fn combine(
+        &self,
+        state: &State,
+        cross_section_cm2: &[Vec<f64>; SERIES.len()],
+        total_cm2_g: &mut [f64],
+        thermal_fraction: &mut [f64],
+    ) {
+        // The outputs serve as absorption and scattering until the last loop.
+        self.continuum.evaluate(state, total_cm2_g, thermal_fraction);
+        for (frequency, hz) in self.grid.frequency_hz.iter().enumerate() {
+            let emission = 1.0 - (-PLANCK_OVER_BOLTZMANN_K_S * hz / state.temperature_k).exp();
+            let lines: f64 = cross_section_cm2
+                .iter()
+                .zip(&state.levels_per_cm3)
+                .map(|(section, population)| section[frequency] * population)
+                .sum();
+            let absorption = total_cm2_g[frequency] + lines * emission;
+            let extinction = absorption + thermal_fraction[frequency];
+            total_cm2_g[frequency] = extinction / state.density_g_cm3;
+            thermal_fraction[frequency] = absorption / extinction;
+        }
+    }
+}

@@ -1,0 +1,87 @@
+//! Photoionisation of hydrogen, and the pseudo-continuum of dissolved levels.
+
+use crate::physics::constants::{BOHR_RADIUS_CM, LIGHT_SPEED_CM_S, RYDBERG_H_PER_CM};
+use crate::physics::occupation::Surroundings;
+use crate::physics::state::LEVELS;
+
+/// Ionisation frequency of the ground state, Hz.
+pub const LYMAN_LIMIT_HZ: f64 = LIGHT_SPEED_CM_S * RYDBERG_H_PER_CM;
+
+/// Fine-structure constant (CODATA 2018).
+const FINE_STRUCTURE: f64 = 7.297_352_5693e-3;
+
+/// Kramers cross-section of level 1 at its threshold, cm^2: 64 pi alpha a0^2 / (3 sqrt 3).
+const KRAMERS_THRESHOLD_CM2: f64 = 64.0 * std::f64::consts::PI * FINE_STRUCTURE * BOHR_RADIUS_CM * BOHR_RADIUS_CM
+    / (3.0 * 1.732_050_807_568_877_2);
+
+/// Photoionisation cross-section of level n averaged over its sublevels, cm^2, at or above its
+/// threshold; below it, the smooth continuation as nu^-3 that the pseudo-continuum needs.
+///
+/// # Reference
+/// n = 1, 2 exactly (Stobbe 1930, as in Bethe & Salpeter 1957, sect. 71); n > 2 Kramers with the
+/// asymptotic Gaunt factor (Menzel & Pekeris 1935), good to 0.4 % at the n = 3 threshold.
+pub fn cross_section_cm2(level: usize, frequency_hz: f64) -> f64 {
+    let n = level as f64;
+    let threshold_hz = LYMAN_LIMIT_HZ / (n * n);
+    let kramers = |ratio: f64| KRAMERS_THRESHOLD_CM2 * n * ratio.powi(3);
+    if frequency_hz < threshold_hz {
+        return cross_section_cm2(level, threshold_hz) * (threshold_hz / frequency_hz).powi(3);
+    }
+    let ratio = threshold_hz / frequency_hz;
+    match level {
+        1 | 2 => exact_low_level(n, ratio),
+        _ => kramers(ratio) * asymptotic_gaunt(n, 1.0 / ratio - 1.0),
+    }
+}
+
+/// Exact cross-sections of n = 1 and 2; `ratio` is threshold over photon frequency.
+fn exact_low_level(n: f64, ratio: f64) -> f64 {
+    let common = std::f64::consts::PI.powi(2) * FINE_STRUCTURE * BOHR_RADIUS_CM.powi(2) * ratio.powi(4);
+    // Coulomb parameter of the ejected electron; infinite at threshold.
+    let excess = (1.0 / ratio - 1.0) / (n * n);
+    let exponential = if excess < 1e-10 {
+        (-4.0 * n).exp()
+    } else {
+        let coulomb = 1.0 / excess.sqrt();
+        let arc_cotangent = (n / coulomb).atan();
+        (-4.0 * coulomb * arc_cotangent).exp() / (1.0 - (-std::f64::consts::TAU * coulomb).exp())
+    };
+    if n < 1.5 {
+        512.0 / 3.0 * common * exponential
+    } else {
+        16_384.0 / 12.0 * common * (1.0 + 6.0 * ratio + 8.0 * ratio * ratio) * exponential
+    }
+}
+
+/// Bound-free Gaunt factor for an ejected energy of `u` thresholds.
+fn asymptotic_gaunt(n: f64, u: f64) -> f64 {
+    let scale = (n * (u + 1.0)).powf(-2.0 / 3.0);
+    1.0 + 0.1728 * scale * (u - 1.0) - 0.0496 * scale * scale * (u * u + 4.0 * u / 3.0 + 1.0)
+}
+
+/// Fraction of transitions from a level that end in dissolved states, for photons between the
+/// series' first line and its limit; 1 above the limit, 0 below the first line.
+///
+/// The first line is where the pseudo-continuum ends: there is no bound level below its upper one
+/// that could be dissolved, and running the formula on would give the Lyman series an unphysical
+/// opacity in the optical.
+///
+/// # Reference
+/// Dappen, Anderson & Mihalas 1987, ApJ 319, 195: D = 1 - w(n*) / w(n).
+pub fn dissolved_fraction(
+    level: usize,
+    frequency_hz: f64,
+    occupation: &[f64; LEVELS],
+    surroundings: &Surroundings,
+) -> f64 {
+    let n = level as f64;
+    let inverse_square = 1.0 / (n * n) - frequency_hz / LYMAN_LIMIT_HZ;
+    if inverse_square <= 0.0 {
+        return 1.0;
+    }
+    let effective_level = 1.0 / inverse_square.sqrt();
+    if effective_level <= n + 1.0 {
+        return 0.0;
+    }
+    (1.0 - surroundings.occupation(effective_level) / occupation[level - 1]).clamp(0.0, 1.0)
+}

@@ -1,0 +1,105 @@
+//! Line opacity: Lyman, Balmer, Paschen and Brackett series.
+
+use crate::physics::constants::{
+    ELECTRON_MASS_G, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S,
+};
+use crate::physics::hydrogen::Line;
+use crate::physics::stark::{Broadened, LineTable, ProfileTable, StaticLine, self_broadening_hwhm_aa};
+use crate::physics::state::State;
+
+/// Lower level of each series and the highest upper level that is followed.
+pub const SERIES: [(u32, u32); 4] = [(1, 24), (2, 30), (3, 22), (4, 18)];
+
+/// How far from its centre a line is followed, relative to its wavelength, per series. The Lyman
+/// lines reach far to the red, where they shape the ultraviolet.
+const REACH: [f64; 4] = [1.0, 0.35, 0.3, 0.3];
+
+/// Lines whose upper level is dissolved beyond this are left out.
+const LEAST_OCCUPATION: f64 = 1e-6;
+
+/// pi e^2 / (m_e c), cm^2 Hz.
+const CROSS_SECTION_CM2_HZ: f64 = std::f64::consts::PI * ELEMENTARY_CHARGE_ESU * ELEMENTARY_CHARGE_ESU
+    / (ELECTRON_MASS_G * LIGHT_SPEED_CM_S);
+
+/// Lines on a fixed set of wavelengths.
+#[derive(Debug)]
+pub struct LineOpacity<'t> {
+    wave_vac_aa: Vec<f64>,
+    transitions: Vec<Transition<'t>>,
+}
+
+#[derive(Debug)]
+struct Transition<'t> {
+    line: Line,
+    series: usize,
+    profile: Profile<'t>,
+    /// Indices of the wavelengths within reach.
+    first: usize,
+    end: usize,
+}
+
+#[derive(Debug)]
+enum Profile<'t> {
+    Unified(&'t LineTable),
+    Static(StaticLine),
+}
+
+impl<'t> LineOpacity<'t> {
+    /// Prepares the lines that reach into ascending vacuum wavelengths, A.
+    pub fn new(wave_vac_aa: &[f64], profiles: &'t ProfileTable) -> Self {
+        let mut transitions = Vec::new();
+        for (series, (lower, highest)) in SERIES.into_iter().enumerate() {
+            for upper in lower + 1..=highest {
+                let line = Line { lower, upper };
+                let centre = line.wave_vac_aa();
+                let first = wave_vac_aa.partition_point(|wave| *wave < centre * (1.0 - REACH[series]));
+                let end = wave_vac_aa.partition_point(|wave| *wave < centre * (1.0 + REACH[series]));
+                if first < end {
+                    let profile = profiles
+                        .line(lower, upper)
+                        .map_or_else(|| Profile::Static(StaticLine::new(lower, upper)), Profile::Unified);
+                    transitions.push(Transition { line, series, profile, first, end });
+                }
+            }
+        }
+        LineOpacity { wave_vac_aa: wave_vac_aa.to_vec(), transitions }
+    }
+
+    /// Adds up, per series, the cross-section of one atom in the series' lower level, cm^2,
+    /// without stimulated emission; `cross_section[series]` is as long as the wavelengths.
+    pub fn evaluate(&self, state: &State, cross_section_cm2: &mut [Vec<f64>; SERIES.len()]) {
+        for series in cross_section_cm2.iter_mut() {
+            series.fill(0.0);
+        }
+        for transition in &self.transitions {
+            let lower_index = transition.line.lower as usize - 1;
+            let survival = state.occupation[transition.line.upper as usize - 1];
+            if survival < LEAST_OCCUPATION {
+                continue;
+            }
+            let broadened = transition.broadened(state);
+            let centre = transition.line.wave_vac_aa();
+            let strength = CROSS_SECTION_CM2_HZ * transition.line.oscillator_strength() * survival
+                / state.occupation[lower_index]
+                * 1e-8
+                / LIGHT_SPEED_CM_S;
+            let range = transition.first..transition.end;
+            let output = &mut cross_section_cm2[transition.series][range.clone()];
+            for (sum, wave) in output.iter_mut().zip(&self.wave_vac_aa[range]) {
+                *sum += strength * wave * wave * broadened.per_aa(wave - centre);
+            }
+        }
+    }
+}
+
+impl Transition<'_> {
+    fn broadened(&self, state: &State) -> Broadened {
+        let hwhm_aa = self_broadening_hwhm_aa(self.line, state.temperature_k, state.levels_per_cm3[0]);
+        match &self.profile {
+            Profile::Unified(table) => {
+                table.broadened(state.temperature_k, state.electrons_per_cm3, hwhm_aa)
+            }
+            Profile::Static(line) => line.broadened(state.temperature_k, state.electrons_per_cm3, hwhm_aa),
+        }
+    }
+}

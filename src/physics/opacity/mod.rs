@@ -1,0 +1,21 @@
+//! Opacity of hydrogen gas, one file per source.
+//!
+//! Everything is linear absorption or scattering, per cm, corrected for stimulated emission where
+//! it is true absorption.
+
+mod bound_free;
+mod continuum;
+mod free_free;
+mod h2_plus;
+mod h_minus;
+mod lines;
+mod rosseland;
+mod scattering;
+
+pub use bound_free::LYMAN_LIMIT_HZ;
+pub use continuum::Continuum;
+pub use lines::{LineOpacity, SERIES};
+pub use rosseland::rosseland_mean;
+
+#[cfg(test)]
+mod tests;
