@@ -83,5 +83,9 @@ pub fn dissolved_fraction(
     if effective_level <= n + 1.0 {
         return 0.0;
     }
+    // A level that is itself gone has no atoms to absorb.
+    if occupation[level - 1] < f64::MIN_POSITIVE {
+        return 1.0;
+    }
     (1.0 - surroundings.occupation(effective_level) / occupation[level - 1]).clamp(0.0, 1.0)
 }

@@ -25,6 +25,7 @@ pub fn gaunt_factor(frequency_hz: f64, temperature_k: f64) -> f64 {
     let photon = PLANCK_OVER_BOLTZMANN_K_S * frequency_hz / temperature_k;
     let rydbergs = frequency_hz / LYMAN_LIMIT_HZ;
     let third = rydbergs.cbrt();
+    let photon = photon.max(0.3);
     1.0 + 0.1728 * third * (1.0 + 2.0 / photon)
         - 0.0496 * third * third * (1.0 + 2.0 / (3.0 * photon) + 4.0 / (3.0 * photon * photon))
 }
