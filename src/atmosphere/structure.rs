@@ -34,6 +34,14 @@ const LARGEST_STEP: f64 = 0.1;
 pub const TEMPERATURE_TOLERANCE: f64 = 1e-5;
 /// Converged: largest relative departure of the total flux from sigma Teff^4.
 pub const FLUX_TOLERANCE: f64 = 1e-3;
+/// Gradient of the starting model's convective layers over the adiabatic one. Too much convection
+/// decays by a factor five an iteration; none at all has no derivative and makes the first steps
+/// blind.
+const STARTING_EXCESS: f64 = 1.03;
+/// With larger relative flux errors the convective layers are settled one by one after each step.
+const LARGEST_NEWTON_FLUX_ERROR: f64 = 1.0;
+/// Convective fraction of the flux from which a layer takes part in that.
+const SETTLED_FRACTION: f64 = 0.3;
 /// Iterations before a model is given up.
 const MOST_ITERATIONS: usize = 60;
 
@@ -128,6 +136,9 @@ pub fn compute_atmosphere(
             Some(steps) => iteration.apply(&steps),
             None => f64::INFINITY,
         };
+        if flux_error > LARGEST_NEWTON_FLUX_ERROR {
+            iteration.settle_convection();
+        }
         if !temperature_change.is_finite() || iterations == MOST_ITERATIONS {
             return Err(NotConverged { teff_k, log_g, iterations, temperature_change, flux_error });
         }
@@ -146,6 +157,9 @@ struct Iteration<'s, 't> {
     fields: Vec<Field>,
     states: Vec<State>,
     rosseland_depth: Vec<f64>,
+    rosseland_cm2_g: Vec<f64>,
+    /// Radiative and convective flux at the interval midpoints, first-moment units.
+    fluxes: Vec<(f64, f64)>,
 }
 
 /// The linear system for the temperature changes, and the flux errors it starts from.
@@ -200,7 +214,7 @@ impl<'s, 't> Iteration<'s, 't> {
                 if let (Some(above_k), Some(above_cgs)) = (temperature_k.last(), pressure_cgs.last()) {
                     let ratio = column * gravity_cgs / above_cgs;
                     let limit: f64 = if grey_k > 1.3 * teff_k || teff_k < 20_000.0 {
-                        Thermodynamics::new(*above_k, *above_cgs).adiabatic_gradient
+                        STARTING_EXCESS * Thermodynamics::new(*above_k, *above_cgs).adiabatic_gradient
                     } else {
                         1.0
                     };
@@ -246,6 +260,8 @@ impl<'s, 't> Iteration<'s, 't> {
             fields,
             states: Vec::new(),
             rosseland_depth: Vec::new(),
+            rosseland_cm2_g: Vec::new(),
+            fluxes: Vec::new(),
         };
         iteration.renew_states();
         iteration
@@ -268,6 +284,8 @@ impl<'s, 't> Iteration<'s, 't> {
         let sums = self.sum_frequencies(&extinction);
         let convection = self.convection(&extinction.rosseland_cm2_g);
         let linear = self.assemble(&sums, &convection);
+        self.fluxes = sums.flux.iter().copied().zip(convection.iter().map(|[flux, ..]| *flux)).collect();
+        self.rosseland_cm2_g = extinction.rosseland_cm2_g;
         self.renew_pressures(&sums.momentum);
         linear
     }
@@ -318,16 +336,15 @@ impl<'s, 't> Iteration<'s, 't> {
 
     /// Convective flux in first-moment units and its derivatives with the two temperatures.
     fn convection(&self, rosseland_cm2_g: &[f64]) -> Vec<[f64; 3]> {
-        let point = |i: usize, factor: f64| Point {
-            temperature_k: self.temperature_k[i] * factor,
-            pressure_cgs: self.pressure_cgs[i],
-            rosseland_cm2_g: rosseland_cm2_g[i],
-        };
-        let scale = 1.0 / (4.0 * std::f64::consts::PI);
         (0..self.column_g_cm2.len() - 1)
             .map(|i| {
                 let flux = |above: f64, below: f64| {
-                    scale * convective_flux(point(i, above), point(i + 1, below), self.gravity_cgs)
+                    self.convective_flux(
+                        rosseland_cm2_g,
+                        i,
+                        self.temperature_k[i] * above,
+                        self.temperature_k[i + 1] * below,
+                    )
                 };
                 let value = flux(1.0, 1.0);
                 if value == 0.0 {
@@ -342,6 +359,45 @@ impl<'s, 't> Iteration<'s, 't> {
                 [value, slope(1.0, 0.0, self.temperature_k[i]), slope(0.0, 1.0, self.temperature_k[i + 1])]
             })
             .collect()
+    }
+
+    /// Convective flux of interval i with given temperatures at its ends, first-moment units.
+    fn convective_flux(&self, rosseland_cm2_g: &[f64], i: usize, above_k: f64, below_k: f64) -> f64 {
+        let point = |i: usize, temperature_k: f64| Point {
+            temperature_k,
+            pressure_cgs: self.pressure_cgs[i],
+            rosseland_cm2_g: rosseland_cm2_g[i],
+        };
+        convective_flux(point(i, above_k), point(i + 1, below_k), self.gravity_cgs)
+            / (4.0 * std::f64::consts::PI)
+    }
+
+    /// Gives each convective layer, from the top down, the gradient that carries what radiation
+    /// leaves. Far from the solution Newton steps overshoot here, because the flux goes with the
+    /// 3/2 power of a tiny difference of gradients; this brings them into reach.
+    fn settle_convection(&mut self) {
+        let target = self.target_flux();
+        for i in 0..self.column_g_cm2.len() - 1 {
+            let (radiative, convective) = self.fluxes[i];
+            let wanted = target - radiative;
+            if convective < SETTLED_FRACTION * target || wanted < SETTLED_FRACTION * target {
+                continue;
+            }
+            let above_k = self.temperature_k[i];
+            let log_pressure_ratio = (self.pressure_cgs[i + 1] / self.pressure_cgs[i]).ln();
+            let (mut low, mut high) = (0.03, 1.5);
+            for _ in 0..32 {
+                let gradient = 0.5 * (low + high);
+                let below_k = above_k * (gradient * log_pressure_ratio).exp();
+                if self.convective_flux(&self.rosseland_cm2_g, i, above_k, below_k) > wanted {
+                    high = gradient;
+                } else {
+                    low = gradient;
+                }
+            }
+            self.temperature_k[i + 1] = above_k * (0.5 * (low + high) * log_pressure_ratio).exp();
+        }
+        self.renew_states();
     }
 
     fn assemble(&self, sums: &Sums, convection: &[[f64; 3]]) -> Linear {
