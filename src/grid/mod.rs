@@ -1,1 +1,3 @@
-//! See the map in `lib.rs`.
+//! Immutable tables made by the layers above.
+
+pub mod profile_table;

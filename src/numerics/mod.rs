@@ -1,1 +1,4 @@
 //! Mathematics only, thin over libraries.
+
+pub mod cubic;
+pub mod quadrature;

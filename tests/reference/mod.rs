@@ -1,1 +1,2 @@
-
+mod hydrogen;
+mod stark;

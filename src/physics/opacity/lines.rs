@@ -78,15 +78,19 @@ impl<'t> LineOpacity<'t> {
                 continue;
             }
             let broadened = transition.broadened(state);
-            let centre = transition.line.wave_vac_aa();
-            let strength = CROSS_SECTION_CM2_HZ * transition.line.oscillator_strength() * survival
+            let line = transition.line;
+            let centre = line.wave_vac_aa();
+            // Detunings are proportional to frequency: 1/Hz is lambda0^2 / c times 1/A.
+            let strength = CROSS_SECTION_CM2_HZ * line.oscillator_strength() * survival
                 / state.occupation[lower_index]
+                * centre
+                * centre
                 * 1e-8
                 / LIGHT_SPEED_CM_S;
             let range = transition.first..transition.end;
             let output = &mut cross_section_cm2[transition.series][range.clone()];
             for (sum, wave) in output.iter_mut().zip(&self.wave_vac_aa[range]) {
-                *sum += strength * wave * wave * broadened.per_aa(wave - centre);
+                *sum += strength * broadened.per_aa(line.detuning_aa(*wave));
             }
         }
     }

@@ -1,0 +1,241 @@
+//! The file of tabulated Stark profiles: format, checksum, and the build that fills it.
+//!
+//! Layout: the magic line, the length of a JSON header (u32, little endian), the header with nodes,
+//! lines and provenance, the values (f32, little endian; fastest over alpha, then density, then
+//! temperature, then line), and the blake3 hash of all that. The build writes the whole file anew after
+//! each line (temporary file, sync, rename) and continues a file of the same physics and nodes.
+
+use crate::physics::hydrogen::Line;
+use crate::physics::stark::{LineTable, ProfileTable, TableNodes};
+use serde::{Deserialize, Serialize};
+use std::io::Write;
+use std::path::{Path, PathBuf};
+
+const MAGIC: &[u8] = b"emberline stark profiles\n";
+/// Changes whenever the numbers in the file would.
+pub const PHYSICS_VERSION: &str = "static-1";
+/// Largest file that is read, bytes.
+const LARGEST_FILE: u64 = 64 << 20;
+const HASH_BYTES: usize = 32;
+
+/// Why a profile table could not be read or written.
+#[derive(Debug, thiserror::Error)]
+pub enum ProfileTableError {
+    /// The file system refused.
+    #[error("cannot {verb} the profile table {path}")]
+    Io {
+        /// What was attempted.
+        verb: &'static str,
+        /// The file.
+        path: PathBuf,
+        /// Why.
+        source: std::io::Error,
+    },
+    /// The content is not a whole profile table.
+    #[error("cannot use the profile table {path}: {found} (build it again with `emberline grid build`)")]
+    Damaged {
+        /// The file.
+        path: PathBuf,
+        /// What was found.
+        found: String,
+    },
+    /// The table was made by other physics.
+    #[error(
+        "cannot use the profile table {path}: found physics {found}, need {PHYSICS_VERSION} \
+         (build it again with `emberline grid build`)"
+    )]
+    OtherPhysics {
+        /// The file.
+        path: PathBuf,
+        /// Version in the file.
+        found: String,
+    },
+}
+
+#[derive(Debug, Serialize, Deserialize)]
+struct Header {
+    physics: String,
+    software: String,
+    method: String,
+    log_temperature: Vec<f64>,
+    log_density: Vec<f64>,
+    ln_alpha_first: f64,
+    ln_alpha_step: f64,
+    alpha_count: usize,
+    lines: Vec<(u32, u32)>,
+}
+
+impl ProfileTable {
+    /// Reads and checks a table.
+    ///
+    /// # Errors
+    /// If the file cannot be read, is damaged or was made by other physics.
+    pub fn read(path: &Path) -> Result<Self, ProfileTableError> {
+        let io = |source| ProfileTableError::Io { verb: "read", path: path.to_owned(), source };
+        let damaged = |found: String| ProfileTableError::Damaged { path: path.to_owned(), found };
+        let size = std::fs::metadata(path).map_err(io)?.len();
+        if size > LARGEST_FILE {
+            return Err(damaged(format!("found {size} bytes, expected at most {LARGEST_FILE}")));
+        }
+        let bytes = std::fs::read(path).map_err(io)?;
+        let (content, hash) = bytes
+            .split_last_chunk::<HASH_BYTES>()
+            .ok_or_else(|| damaged(format!("found {size} bytes, too few for a table")))?;
+        if blake3::hash(content).as_bytes() != hash {
+            return Err(damaged("its checksum does not match its content".to_owned()));
+        }
+        parse_table(content).map_err(|fault| match fault {
+            ParseFault::Damaged(found) => damaged(found),
+            ParseFault::OtherPhysics(found) => {
+                ProfileTableError::OtherPhysics { path: path.to_owned(), found }
+            }
+        })
+    }
+
+    /// Writes the table: temporary file, sync, rename.
+    ///
+    /// # Errors
+    /// If the file system refuses.
+    pub fn write(&self, path: &Path) -> Result<(), ProfileTableError> {
+        let io = |source| ProfileTableError::Io { verb: "write", path: path.to_owned(), source };
+        let bytes = self.to_bytes();
+        let partial = path.with_extension("partial");
+        let mut file = std::fs::File::create(&partial).map_err(io)?;
+        file.write_all(&bytes).map_err(io)?;
+        file.sync_all().map_err(io)?;
+        std::fs::rename(&partial, path).map_err(io)?;
+        if let Some(folder) = path.parent().filter(|folder| !folder.as_os_str().is_empty()) {
+            std::fs::File::open(folder).and_then(|folder| folder.sync_all()).map_err(io)?;
+        }
+        Ok(())
+    }
+
+    fn to_bytes(&self) -> Vec<u8> {
+        let nodes = self.lines.first().map(|line| line.nodes().clone()).unwrap_or_default();
+        let header = Header {
+            physics: PHYSICS_VERSION.to_owned(),
+            software: format!("emberline {}", env!("CARGO_PKG_VERSION")),
+            method: METHOD.to_owned(),
+            log_temperature: nodes.log_temperature,
+            log_density: nodes.log_density,
+            ln_alpha_first: nodes.ln_alpha_first,
+            ln_alpha_step: nodes.ln_alpha_step,
+            alpha_count: nodes.alpha_count,
+            lines: self.lines.iter().map(|table| (table.line().lower, table.line().upper)).collect(),
+        };
+        // Plain numbers and strings always serialise.
+        let header = serde_json::to_vec(&header).unwrap_or_default();
+        let mut bytes = MAGIC.to_vec();
+        bytes.extend((header.len() as u32).to_le_bytes());
+        bytes.extend(&header);
+        for table in &self.lines {
+            bytes.extend(table.ln_s().iter().flat_map(|value| value.to_le_bytes()));
+        }
+        let hash = blake3::hash(&bytes);
+        bytes.extend(hash.as_bytes());
+        bytes
+    }
+}
+
+enum ParseFault {
+    Damaged(String),
+    OtherPhysics(String),
+}
+
+fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
+    let damaged = |found: &str| ParseFault::Damaged(found.to_owned());
+    let rest = content.strip_prefix(MAGIC).ok_or_else(|| damaged("it does not begin with the magic line"))?;
+    let (length, rest) = rest.split_first_chunk::<4>().ok_or_else(|| damaged("its header is cut off"))?;
+    let length = u32::from_le_bytes(*length) as usize;
+    let (header, values) = rest.split_at_checked(length).ok_or_else(|| damaged("its header is cut off"))?;
+    let header: Header = serde_json::from_slice(header)
+        .map_err(|fault| ParseFault::Damaged(format!("its header cannot be parsed: {fault}")))?;
+    if header.physics != PHYSICS_VERSION {
+        return Err(ParseFault::OtherPhysics(header.physics));
+    }
+    let nodes = TableNodes {
+        log_temperature: header.log_temperature,
+        log_density: header.log_density,
+        ln_alpha_first: header.ln_alpha_first,
+        ln_alpha_step: header.ln_alpha_step,
+        alpha_count: header.alpha_count,
+    };
+    let per_line = nodes.log_temperature.len() * nodes.log_density.len() * nodes.alpha_count;
+    if per_line == 0 || values.len() != per_line * header.lines.len() * size_of::<f32>() {
+        return Err(damaged("its values do not fill the nodes of its header"));
+    }
+    let values: Vec<f32> = values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
+    if values.iter().any(|value| !value.is_finite()) {
+        return Err(damaged("it holds values that are not finite"));
+    }
+    let mut lines = Vec::new();
+    for (line, values) in header.lines.iter().zip(values.chunks_exact(per_line)) {
+        if line.0 < 1 || line.1 <= line.0 {
+            return Err(damaged("it names a line that does not exist"));
+        }
+        lines.push(LineTable::new(Line { lower: line.0, upper: line.1 }, nodes.clone(), values.to_vec()));
+    }
+    Ok(ProfileTable { lines })
+}
+
+const METHOD: &str = "quasi-static Stark profiles, both species static, cut at the critical field";
+
+/// The lines of the table: Lyman alpha to delta, Balmer alpha to H10.
+pub fn tabulated_lines() -> Vec<Line> {
+    let lyman = (2..=5).map(|upper| Line { lower: 1, upper });
+    let balmer = (3..=10).map(|upper| Line { lower: 2, upper });
+    lyman.chain(balmer).collect()
+}
+
+/// The nodes of the table: log T 3.5 to 5.0, log n_e 12 to 19, alpha 1e-5 to 1e2.
+pub fn table_nodes() -> TableNodes {
+    TableNodes {
+        log_temperature: vec![3.6, 3.9, 4.2, 4.5, 4.8, 5.1],
+        log_density: (0..15).map(|i| 12.0 + 0.5 * f64::from(i)).collect(),
+        ln_alpha_first: 1e-5f64.ln(),
+        ln_alpha_step: 10f64.ln() / 9.0,
+        alpha_count: 64,
+    }
+}
+
+/// Builds the whole table, or what is missing in the file, and writes it after each line.
+/// `progress` receives the lines done and the total.
+///
+/// # Errors
+/// If the file cannot be written.
+pub fn build_profile_table(
+    path: &Path,
+    progress: &dyn Fn(usize, usize),
+) -> Result<ProfileTable, ProfileTableError> {
+    let nodes = table_nodes();
+    let wanted = tabulated_lines();
+    // A file that is absent, damaged or from other physics is simply made anew.
+    let mut table = ProfileTable::read(path).unwrap_or_default();
+    table.lines.retain(|line| *line.nodes() == nodes && wanted.contains(&line.line()));
+    for line in &wanted {
+        if table.line(line.lower, line.upper).is_none() {
+            table.lines.push(compute_line(*line, &nodes));
+            table.write(path)?;
+        }
+        progress(table.lines.len(), wanted.len());
+    }
+    Ok(table)
+}
+
+fn compute_line(line: Line, nodes: &TableNodes) -> LineTable {
+    use crate::physics::stark::{StaticLine, microfield::normal_field_esu};
+    let static_line = StaticLine::new(line.lower, line.upper);
+    let mut values = Vec::new();
+    for log_t in &nodes.log_temperature {
+        for log_ne in &nodes.log_density {
+            let density = 10f64.powf(*log_ne);
+            let field = normal_field_esu(density);
+            let stark = static_line.stark(10f64.powf(*log_t), density, true);
+            for i in 0..nodes.alpha_count {
+                let ln_alpha = nodes.ln_alpha_first + nodes.ln_alpha_step * i as f64;
+                values.push((stark.ln_value(ln_alpha + field.ln()) + field.ln()) as f32);
+            }
+        }
+    }
+    LineTable::new(line, nodes.clone(), values)
+}
