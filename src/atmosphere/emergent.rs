@@ -5,6 +5,7 @@ use super::frequency::FrequencyGrid;
 use super::structure::Atmosphere;
 use super::transfer::{Field, Medium, Scratch};
 use crate::physics::constants::LIGHT_SPEED_CM_S;
+use crate::physics::opacity::ALL_LINES;
 use crate::physics::planck::planck_per_hz;
 use crate::physics::stark::ProfileTable;
 
@@ -17,7 +18,7 @@ pub fn emergent_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &Pr
 }
 
 fn block_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &ProfileTable) -> Vec<f64> {
-    let sources = Sources::new(FrequencyGrid::from_wavelengths(wave_vac_aa), profiles);
+    let sources = Sources::new(FrequencyGrid::from_wavelengths(wave_vac_aa), ALL_LINES, profiles);
     let extinction = sources.evaluate(&atmosphere.states, false);
     let depths = atmosphere.states.len();
     let mut scratch = Scratch::new(depths);

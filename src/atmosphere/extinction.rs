@@ -3,7 +3,7 @@
 use ndarray::Array2;
 
 use super::frequency::FrequencyGrid;
-use crate::physics::opacity::{Continuum, LineOpacity, SERIES, rosseland_mean};
+use crate::physics::opacity::{Continuum, HighestLevels, LineOpacity, SERIES_COUNT, rosseland_mean};
 use crate::physics::planck::PLANCK_OVER_BOLTZMANN_K_S;
 use crate::physics::stark::ProfileTable;
 use crate::physics::state::State;
@@ -34,10 +34,10 @@ pub struct Extinction {
 }
 
 impl<'t> Sources<'t> {
-    /// Prepares all sources on a frequency grid.
-    pub fn new(grid: FrequencyGrid, profiles: &'t ProfileTable) -> Self {
+    /// Prepares all sources on a frequency grid, with the lines up to given levels.
+    pub fn new(grid: FrequencyGrid, highest: HighestLevels, profiles: &'t ProfileTable) -> Self {
         let continuum = Continuum::new(&grid.frequency_hz);
-        let lines = LineOpacity::new(&grid.wave_vac_aa, profiles);
+        let lines = LineOpacity::new(&grid.wave_vac_aa, highest, profiles);
         Sources { grid, continuum, lines }
     }
 
@@ -57,7 +57,7 @@ impl<'t> Sources<'t> {
             thermal_slope: zeros(),
             rosseland_cm2_g: Vec::with_capacity(depths),
         };
-        let mut cross_section_cm2: [Vec<f64>; SERIES.len()] =
+        let mut cross_section_cm2: [Vec<f64>; SERIES_COUNT] =
             std::array::from_fn(|_| vec![0.0; frequencies]);
         let column = || (vec![0.0; frequencies], vec![0.0; frequencies]);
         let (mut total, mut fraction) = column();
@@ -94,7 +94,7 @@ impl<'t> Sources<'t> {
     fn combine(
         &self,
         state: &State,
-        cross_section_cm2: &[Vec<f64>; SERIES.len()],
+        cross_section_cm2: &[Vec<f64>; SERIES_COUNT],
         total_cm2_g: &mut [f64],
         thermal_fraction: &mut [f64],
     ) {

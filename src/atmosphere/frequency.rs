@@ -5,10 +5,10 @@
 
 use crate::physics::constants::{BOLTZMANN_ERG_K, LIGHT_SPEED_CM_S, PLANCK_ERG_S};
 use crate::physics::hydrogen::Line;
-use crate::physics::opacity::LYMAN_LIMIT_HZ;
+use crate::physics::opacity::{HighestLevels, LYMAN_LIMIT_HZ};
 
-/// Lower level and highest upper level of the lines whose profiles are followed in the structure.
-const FOLLOWED: [(u32, u32); 4] = [(1, 10), (2, 13), (3, 9), (4, 7)];
+/// The lines that shape the temperature structure, and that its frequencies resolve.
+pub const STRUCTURE_LINES: HighestLevels = [10, 13, 9, 7];
 
 /// Base points per unit of ln(nu).
 const BASE_PER_E_FOLD: f64 = 36.0;
@@ -43,7 +43,7 @@ impl FrequencyGrid {
             let limit_hz = LYMAN_LIMIT_HZ / f64::from(level * level);
             frequency_hz.extend([limit_hz * (1.0 + 1e-7), limit_hz * (1.0 - 1e-7)]);
         }
-        for (lower, highest) in FOLLOWED {
+        for (lower, highest) in (1..).zip(STRUCTURE_LINES) {
             for upper in lower + 1..=highest {
                 let centre_hz = 1e8 * LIGHT_SPEED_CM_S / Line { lower, upper }.wave_vac_aa();
                 frequency_hz.push(centre_hz);
@@ -77,10 +77,5 @@ impl FrequencyGrid {
     /// Number of frequencies.
     pub fn len(&self) -> usize {
         self.frequency_hz.len()
-    }
-
-    /// Whether there are none.
-    pub fn is_empty(&self) -> bool {
-        self.frequency_hz.is_empty()
     }
 }

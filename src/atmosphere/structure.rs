@@ -15,7 +15,7 @@ use ndarray::Array2;
 
 use super::convection::{Point, convective_flux};
 use super::extinction::{Extinction, Sources};
-use super::frequency::FrequencyGrid;
+use super::frequency::{FrequencyGrid, STRUCTURE_LINES};
 use super::transfer::{Field, Medium, Scratch, cell_depth};
 use crate::physics::constants::{LIGHT_SPEED_CM_S, STEFAN_BOLTZMANN_CGS};
 use crate::physics::planck::{planck_per_hz, planck_slope_per_hz};
@@ -108,7 +108,7 @@ pub fn compute_atmosphere(
     log_g: f64,
     profiles: &ProfileTable,
 ) -> Result<Atmosphere, NotConverged> {
-    let sources = Sources::new(FrequencyGrid::for_structure(teff_k), profiles);
+    let sources = Sources::new(FrequencyGrid::for_structure(teff_k), STRUCTURE_LINES, profiles);
     let mut iteration = Iteration::start(teff_k, log_g, &sources);
     let mut temperature_change = f64::INFINITY;
     for iterations in 1..=MOST_ITERATIONS {

@@ -6,6 +6,8 @@
 //! integrated numerically; the reduced mass cancels to 5e-4. Accuracy: `validate_hydrogen_lines`
 //! (wavelengths and f values against atomic data bases).
 
+use std::sync::OnceLock;
+
 use super::constants::RYDBERG_H_PER_CM;
 use crate::numerics::quadrature::panels;
 use statrs::function::gamma::ln_gamma;
@@ -50,6 +52,11 @@ impl Line {
     /// # Reference
     /// Bethe & Salpeter 1957, section 60: f = (1/3) dE[Ry] max(l, l')/(2 l + 1) R^2 per sublevel.
     pub fn oscillator_strength(self) -> f64 {
+        static STORE: PerLine = PerLine::new();
+        STORE.get_or_compute(self, Self::compute_oscillator_strength)
+    }
+
+    fn compute_oscillator_strength(self) -> f64 {
         let (n, u) = (f64::from(self.lower), f64::from(self.upper));
         let energy_ry = 1.0 / (n * n) - 1.0 / (u * u);
         let mut strength = 0.0;
@@ -70,6 +77,28 @@ impl Line {
         let wave = self.wave_vac_aa();
         let rate = decay_rate_per_s(self.upper) + decay_rate_per_s(self.lower);
         rate * wave * wave * 1e-8 / (4.0 * std::f64::consts::PI * super::constants::LIGHT_SPEED_CM_S)
+    }
+}
+
+/// A property of lines, computed at first use: the radial integrals behind it cost milliseconds.
+pub struct PerLine([[OnceLock<f64>; PerLine::LEVELS]; PerLine::LEVELS]);
+
+impl PerLine {
+    /// Lines between levels up to 40 are kept; others are computed each time.
+    const LEVELS: usize = 41;
+
+    /// An empty store.
+    #[allow(clippy::new_without_default)]
+    pub const fn new() -> Self {
+        PerLine([const { [const { OnceLock::new() }; PerLine::LEVELS] }; PerLine::LEVELS])
+    }
+
+    /// The kept value, or the computed one.
+    pub fn get_or_compute(&self, line: Line, compute: impl Fn(Line) -> f64) -> f64 {
+        match self.0.get(line.lower as usize).and_then(|row| row.get(line.upper as usize)) {
+            Some(slot) => *slot.get_or_init(|| compute(line)),
+            None => compute(line),
+        }
     }
 }
 

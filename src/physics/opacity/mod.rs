@@ -14,8 +14,5 @@ mod scattering;
 
 pub use bound_free::LYMAN_LIMIT_HZ;
 pub use continuum::Continuum;
-pub use lines::{LineOpacity, SERIES};
+pub use lines::{ALL_LINES, HighestLevels, LineOpacity, SERIES_COUNT};
 pub use rosseland::rosseland_mean;
-
-#[cfg(test)]
-mod tests;

@@ -8,7 +8,7 @@
 //! at H-gamma, so H-delta and above are probably too narrow by that order; where it matters (below about
 //! 9 000 K) neutral hydrogen also dissolves those levels. Checked by `validate_self_broadening`.
 
-use crate::physics::hydrogen::{Line, radial_integral};
+use crate::physics::hydrogen::{Line, PerLine, radial_integral};
 
 /// Temperatures of the Barklem grid, K.
 const GRID_TEMPERATURE_K: [f64; 4] = [2500.0, 5000.0, 10_000.0, 20_000.0];
@@ -34,7 +34,8 @@ pub fn self_broadening_hwhm_aa(line: Line, temperature_k: f64, n_h_ground_per_cm
         let slope = (widths[cell + 1] / widths[cell]).ln() / (t1 / t0).ln();
         return 1e-20 * widths[cell] * (temperature_k / t0).powf(slope) * n_h_ground_per_cm3;
     }
-    n_h_ground_per_cm3 * resonance_hwhm_aa(line)
+    static STORE: PerLine = PerLine::new();
+    n_h_ground_per_cm3 * STORE.get_or_compute(line, resonance_hwhm_aa)
 }
 
 /// Strength-weighted resonance width per atom of the ground state, A cm^3.
