@@ -170,3 +170,51 @@ fn validate_against_stehle() {
         print_breakdown(&format!("Stehle {lower}-{upper}"), &ratios(line, &read_stehle(line)));
     }
 }
+
+#[test]
+#[ignore = "debug"]
+fn debug_detail() {
+    for line in [Line::new(1, 2), Line::new(1, 3), Line::new(2, 3), Line::new(2, 4)] {
+        let published: Vec<_> = read_stehle(line).into_iter().filter(|p| [12.0, 14.0, 15.0, 16.0, 17.0].contains(&p.log_density) && p.temperature_k < 5e4).collect();
+        let all = ratios(line, &published);
+        for p in &published {
+            print!("{}-{} T {:6.0} ne {:4}:", line.lower, line.upper, p.temperature_k, p.log_density);
+            for r in all.iter().filter(|r| r.0 == p.temperature_k.log10() && r.1 == p.log_density) {
+                print!(" {:.2}", r.3);
+            }
+            println!();
+        }
+    }
+}
+
+#[test]
+#[ignore = "debug"]
+fn debug_integrals() {
+    for (lower, upper) in [(1, 2), (1, 3), (1, 5), (2, 3), (2, 6), (2, 9)] {
+        let line = UnifiedLine::new(Line::new(lower, upper));
+        let step = 10f64.ln() / 18.0;
+        let ln_alpha: Vec<f64> = (0..171).map(|i| 1e-7f64.ln() + step * f64::from(i)).collect();
+        for (t, ne) in [(1e4, 1e12), (1e4, 1e14), (1e4, 1e17), (4e4, 1e19)] {
+          for cut in [false, true] {
+            let start = std::time::Instant::now();
+            let s = line.profile(t, ne, cut, &ln_alpha);
+            let took = start.elapsed();
+            let mut total = s[0] * ln_alpha[0].exp() * (1.0 - 0.5 * step);
+            for i in 0..ln_alpha.len() { total += step * ln_alpha[i].exp() * s[i]; }
+            total += s[170] * ln_alpha[170].exp() * (1.0/1.5 - 0.5 * step);
+            println!("{lower}-{upper} T {t} ne {ne:.0e} cut {cut}: integral {:.5} first {:.4e} {:.4e} took {took:?}", 2.0 * total, s[0], s[90]);
+          }
+        }
+    }
+}
+
+#[test]
+#[ignore = "debug"]
+fn debug_build() {
+    let start = std::time::Instant::now();
+    let path = PathBuf::from(std::env::var_os("EMBERLINE_PROFILE_TABLE").unwrap());
+    let table = emberline::grid::profile_table::build_profile_table(&path, &|done, total| {
+        println!("{done}/{total} {:?}", start.elapsed());
+    });
+    println!("{} lines, {} bytes", table.unwrap().lines.len(), std::fs::metadata(&path).unwrap().len());
+}

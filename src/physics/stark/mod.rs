@@ -14,4 +14,4 @@ pub use broadened::{Broadened, StarkProfile};
 pub use self_broadening::self_broadening_hwhm_aa;
 pub use static_line::StaticLine;
 pub use unified::UnifiedLine;
-pub use table::{LineTable, ProfileTable, TableNodes};
+pub use table::{DENSITY_STEP, LineTable, ProfileTable, TableNodes};

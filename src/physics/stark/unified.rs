@@ -27,9 +27,9 @@ const LARGEST_FIELD: f64 = 300.0;
 const BEYOND_RESONANCE: f64 = 30.0;
 /// Scale where field nodes turn logarithmic, and nodes per unit of ln(1 + beta/scale).
 const FIELD_SCALE: f64 = 0.4;
-const BASE_NODES: f64 = 7.0;
+const BASE_NODES: f64 = 6.0;
 /// Field nodes for the strongest component.
-const COMPONENT_NODES: f64 = 16.0;
+const COMPONENT_NODES: f64 = 12.0;
 
 /// The unified-theory calculation for one line.
 #[derive(Debug, Clone)]
@@ -106,8 +106,7 @@ impl<'a> Plasma<'a> {
         let sum: f64 = nodes
             .iter()
             .map(|(beta, weight)| {
-                let weight = weight * self.field.density(*beta);
-                if weight < 1e-12 { 0.0 } else { weight * self.at_field(detuning, *beta, workspace) }
+                weight * self.field.density(*beta) * self.at_field(detuning, *beta, workspace)
             })
             .sum();
         self.norm * sum
