@@ -6,14 +6,15 @@
 //! each line (temporary file, sync, rename) and continues a file of the same physics and nodes.
 
 use crate::physics::hydrogen::Line;
-use crate::physics::stark::{LineTable, ProfileTable, TableNodes};
+use crate::physics::stark::{DENSITY_STEP, LineTable, ProfileTable, TableNodes, UnifiedLine};
+use rayon::prelude::*;
 use serde::{Deserialize, Serialize};
 use std::io::Write;
 use std::path::{Path, PathBuf};
 
 const MAGIC: &[u8] = b"emberline stark profiles\n";
 /// Changes whenever the numbers in the file would.
-pub const PHYSICS_VERSION: &str = "static-1";
+pub const PHYSICS_VERSION: &str = "unified-1";
 /// Largest file that is read, bytes.
 const LARGEST_FILE: u64 = 64 << 20;
 const HASH_BYTES: usize = 32;
@@ -59,10 +60,15 @@ struct Header {
     method: String,
     log_temperature: Vec<f64>,
     log_density: Vec<f64>,
+    lines: Vec<LineHeader>,
+}
+
+#[derive(Debug, Serialize, Deserialize)]
+struct LineHeader {
+    lower: u32,
+    upper: u32,
     ln_alpha_first: f64,
-    ln_alpha_step: f64,
     alpha_count: usize,
-    lines: Vec<(u32, u32)>,
 }
 
 impl ProfileTable {
@@ -111,17 +117,23 @@ impl ProfileTable {
     }
 
     fn to_bytes(&self) -> Vec<u8> {
-        let nodes = self.lines.first().map(|line| line.nodes().clone()).unwrap_or_default();
+        let nodes = self.lines.first().map(LineTable::nodes);
         let header = Header {
             physics: PHYSICS_VERSION.to_owned(),
             software: format!("emberline {}", env!("CARGO_PKG_VERSION")),
             method: METHOD.to_owned(),
-            log_temperature: nodes.log_temperature,
-            log_density: nodes.log_density,
-            ln_alpha_first: nodes.ln_alpha_first,
-            ln_alpha_step: nodes.ln_alpha_step,
-            alpha_count: nodes.alpha_count,
-            lines: self.lines.iter().map(|table| (table.line().lower, table.line().upper)).collect(),
+            log_temperature: nodes.map(|nodes| nodes.log_temperature.clone()).unwrap_or_default(),
+            log_density: nodes.map(|nodes| nodes.log_density.clone()).unwrap_or_default(),
+            lines: self
+                .lines
+                .iter()
+                .map(|table| LineHeader {
+                    lower: table.line().lower,
+                    upper: table.line().upper,
+                    ln_alpha_first: table.nodes().ln_alpha_first,
+                    alpha_count: table.nodes().alpha_count,
+                })
+                .collect(),
         };
         // Plain numbers and strings always serialise.
         let header = serde_json::to_vec(&header).unwrap_or_default();
@@ -153,32 +165,44 @@ fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
     if header.physics != PHYSICS_VERSION {
         return Err(ParseFault::OtherPhysics(header.physics));
     }
-    let nodes = TableNodes {
-        log_temperature: header.log_temperature,
-        log_density: header.log_density,
-        ln_alpha_first: header.ln_alpha_first,
-        ln_alpha_step: header.ln_alpha_step,
-        alpha_count: header.alpha_count,
-    };
-    let per_line = nodes.log_temperature.len() * nodes.log_density.len() * nodes.alpha_count;
-    if per_line == 0 || values.len() != per_line * header.lines.len() * size_of::<f32>() {
+    let per_alpha = header.log_temperature.len() * header.log_density.len();
+    let wanted: usize =
+        header.lines.iter().map(|line| per_alpha.saturating_mul(line.alpha_count)).fold(0, usize::saturating_add);
+    let is_ascending = |nodes: &[f64]| !nodes.is_empty() && nodes.windows(2).all(|pair| pair[0] < pair[1]);
+    if !is_ascending(&header.log_temperature) || !is_ascending(&header.log_density) {
+        return Err(damaged("its nodes do not ascend"));
+    }
+    if values.len() != wanted.saturating_mul(size_of::<f32>()) {
         return Err(damaged("its values do not fill the nodes of its header"));
     }
-    let values: Vec<f32> = values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
+    let values: Vec<f32> =
+        values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
     if values.iter().any(|value| !value.is_finite()) {
         return Err(damaged("it holds values that are not finite"));
     }
+    let mut rest = &values[..];
     let mut lines = Vec::new();
-    for (line, values) in header.lines.iter().zip(values.chunks_exact(per_line)) {
-        if line.0 < 1 || line.1 <= line.0 {
-            return Err(damaged("it names a line that does not exist"));
+    for line in &header.lines {
+        let LineHeader { lower, upper, ln_alpha_first, alpha_count } = *line;
+        if lower < 1 || upper <= lower || alpha_count < 4 {
+            return Err(damaged("it names a line that does not exist, or gives it no profile"));
         }
-        lines.push(LineTable::new(Line { lower: line.0, upper: line.1 }, nodes.clone(), values.to_vec()));
+        let (own, others) = rest.split_at(per_alpha * alpha_count);
+        rest = others;
+        let nodes = TableNodes {
+            log_temperature: header.log_temperature.clone(),
+            log_density: header.log_density.clone(),
+            ln_alpha_first,
+            alpha_count,
+        };
+        lines.push(LineTable::new(Line { lower, upper }, nodes, own.to_vec()));
     }
     Ok(ProfileTable { lines })
 }
 
-const METHOD: &str = "quasi-static Stark profiles, both species static, cut at the critical field";
+const METHOD: &str = "unified theory (Vidal, Cooper & Smith 1971): Baranger-Mozer ion field to second order, \
+    one-electron operator on straight classical paths cut at 0.681 Debye lengths, both levels broadened, ion field \
+    cut at the critical field of the upper level, integral 1";
 
 /// The lines of the table: Lyman alpha to delta, Balmer alpha to H10.
 pub fn tabulated_lines() -> Vec<Line> {
@@ -187,14 +211,21 @@ pub fn tabulated_lines() -> Vec<Line> {
     lyman.chain(balmer).collect()
 }
 
-/// The nodes of the table: log T 3.5 to 5.0, log n_e 12 to 19, alpha 1e-5 to 1e2.
-pub fn table_nodes() -> TableNodes {
+/// The nodes of a line's table: log T 3.6 to 5.1, log n_e 12 to 19, alpha up to 100 from where the
+/// line's core is flat.
+pub fn table_nodes(line: Line) -> TableNodes {
+    // Cores without a linear Stark shift are as narrow as electron impacts leave them at log n_e = 12.
+    let decades = match (line.lower, line.upper) {
+        (1, 2) => 9,
+        (1, _) => 7,
+        (2, 3) => 6,
+        _ => 5,
+    };
     TableNodes {
-        log_temperature: vec![3.6, 3.9, 4.2, 4.5, 4.8, 5.1],
-        log_density: (0..15).map(|i| 12.0 + 0.5 * f64::from(i)).collect(),
-        ln_alpha_first: 1e-5f64.ln(),
-        ln_alpha_step: 10f64.ln() / 9.0,
-        alpha_count: 64,
+        log_temperature: (0..6).map(|i| 3.6 + 0.3 * f64::from(i)).collect(),
+        log_density: (0..29).map(|i| 12.0 + DENSITY_STEP * f64::from(i)).collect(),
+        ln_alpha_first: (2.0 - f64::from(decades)) * std::f64::consts::LN_10,
+        alpha_count: 12 * decades as usize + 1,
     }
 }
 
@@ -207,14 +238,13 @@ pub fn build_profile_table(
     path: &Path,
     progress: &dyn Fn(usize, usize),
 ) -> Result<ProfileTable, ProfileTableError> {
-    let nodes = table_nodes();
     let wanted = tabulated_lines();
     // A file that is absent, damaged or from other physics is simply made anew.
     let mut table = ProfileTable::read(path).unwrap_or_default();
-    table.lines.retain(|line| *line.nodes() == nodes && wanted.contains(&line.line()));
+    table.lines.retain(|made| wanted.contains(&made.line()) && *made.nodes() == table_nodes(made.line()));
     for line in &wanted {
         if table.line(line.lower, line.upper).is_none() {
-            table.lines.push(compute_line(*line, &nodes));
+            table.lines.push(compute_line(*line, &table_nodes(*line)));
             table.write(path)?;
         }
         progress(table.lines.len(), wanted.len());
@@ -222,20 +252,21 @@ pub fn build_profile_table(
     Ok(table)
 }
 
-fn compute_line(line: Line, nodes: &TableNodes) -> LineTable {
-    use crate::physics::stark::{StaticLine, microfield::normal_field_esu};
-    let static_line = StaticLine::new(line.lower, line.upper);
-    let mut values = Vec::new();
-    for log_t in &nodes.log_temperature {
-        for log_ne in &nodes.log_density {
-            let density = 10f64.powf(*log_ne);
-            let field = normal_field_esu(density);
-            let stark = static_line.stark(10f64.powf(*log_t), density, true);
-            for i in 0..nodes.alpha_count {
-                let ln_alpha = nodes.ln_alpha_first + nodes.ln_alpha_step * i as f64;
-                values.push((stark.ln_value(ln_alpha + field.ln()) + field.ln()) as f32);
-            }
-        }
-    }
-    LineTable::new(line, nodes.clone(), values)
+/// Computes the table of one line on all processors.
+pub fn compute_line(line: Line, nodes: &TableNodes) -> LineTable {
+    let unified = UnifiedLine::new(line);
+    let ln_alpha = nodes.ln_alpha();
+    let plasmas: Vec<(f64, f64)> = nodes
+        .log_temperature
+        .iter()
+        .flat_map(|log_t| nodes.log_density.iter().map(move |log_density| (*log_t, *log_density)))
+        .collect();
+    let ln_s = plasmas
+        .par_iter()
+        .flat_map_iter(|(log_t, log_density)| {
+            let s = unified.profile(10f64.powf(*log_t), 10f64.powf(*log_density), true, &ln_alpha);
+            s.into_iter().map(|s| s.ln() as f32)
+        })
+        .collect();
+    LineTable::new(line, nodes.clone(), ln_s)
 }

@@ -1,2 +1,3 @@
 mod hydrogen;
 mod stark;
+mod stark_tables;

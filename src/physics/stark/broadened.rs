@@ -13,7 +13,7 @@ use crate::physics::hydrogen::Line;
 use std::f64::consts::PI;
 
 /// Logarithmic slope of every Stark wing.
-const WING_SLOPE: f64 = -2.5;
+pub const WING_SLOPE: f64 = -2.5;
 /// Grid step of the result in ln detuning.
 const LN_STEP: f64 = 0.12;
 /// First node of the result, in Gaussian sigmas.

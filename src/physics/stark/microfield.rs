@@ -15,8 +15,8 @@ use crate::numerics::cubic::{Spline, catmull_rom};
 use std::f64::consts::PI;
 use std::sync::OnceLock;
 
-/// r0 times the cube root of the density: the definition of r0 above.
-const ION_DENSITY: f64 = 0.238_099_6; // n r0^3 = 15 / (4 (2 pi)^(3/2))
+/// n r0^3 = 15 / (4 (2 pi)^(3/2)), the definition of r0.
+const ION_DENSITY: f64 = 0.238_101_134_753;
 /// Largest screening parameter that is computed.
 pub const LARGEST_SCREENING: f64 = 1.2;
 /// Grid of the tabulated distribution in ln beta: first node, step, count.
@@ -29,7 +29,13 @@ const COARSE_STRIDE: usize = 3;
 /// Spacing of the stored distributions in the screening parameter.
 const SCREENING_STEP: f64 = 0.1;
 
-/// Holtsmark field as the tabulations of Stark profiles define it, F0 = 1.25e-9 n^(2/3) statvolt/cm.
+/// Holtsmark field F0 = e/r0^2, statvolt/cm.
+pub fn holtsmark_field_esu(electron_density_per_cm3: f64) -> f64 {
+    use crate::physics::constants::ELEMENTARY_CHARGE_ESU;
+    ELEMENTARY_CHARGE_ESU * (electron_density_per_cm3 / ION_DENSITY).powf(2.0 / 3.0)
+}
+
+/// Field unit of alpha as the tabulations of Stark profiles define it, F0 = 1.25e-9 n^(2/3) statvolt/cm.
 pub fn normal_field_esu(electron_density_per_cm3: f64) -> f64 {
     1.25e-9 * electron_density_per_cm3.powf(2.0 / 3.0)
 }

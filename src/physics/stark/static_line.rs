@@ -69,7 +69,7 @@ impl StaticLine {
         let field = Microfield::stored(microfield::screening(temperature_k, electron_density_per_cm3));
         let unit_aa = shift_aa_per_esu(self.line)
             * BOTH_SPECIES
-            * microfield::normal_field_esu(electron_density_per_cm3);
+            * microfield::holtsmark_field_esu(electron_density_per_cm3);
         let beta_cut = if cut {
             microfield::critical_field(self.line.upper, electron_density_per_cm3) / BOTH_SPECIES
         } else {
