@@ -1,3 +1,10 @@
-//! Immutable tables made by the layers above.
+//! Immutable tables made by the layers above: file format, checksum, lookup, build.
 
+pub mod axis;
+pub mod build;
+mod flux_file;
+mod flux_grid;
 pub mod profile_table;
+
+pub use flux_file::{FORMAT_VERSION, GridFault};
+pub use flux_grid::{FluxGrid, GridHeader, NodeRecord, OutsideGrid, Stencil};

@@ -157,4 +157,14 @@ impl ProfileTable {
     pub fn line(&self, lower: u32, upper: u32) -> Option<&LineTable> {
         self.lines.iter().find(|table| table.line == Line { lower, upper })
     }
+
+    /// Names the content: number of unified lines and the hash of their values.
+    pub fn fingerprint(&self) -> String {
+        let mut hasher = blake3::Hasher::new();
+        for table in &self.lines {
+            let bytes: Vec<u8> = table.ln_s.iter().flat_map(|value| value.to_le_bytes()).collect();
+            hasher.update(&bytes);
+        }
+        format!("{} lines unified, table {}", self.lines.len(), &hasher.finalize().to_hex()[..16])
+    }
 }
