@@ -166,8 +166,11 @@ fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
         return Err(ParseFault::OtherPhysics(header.physics));
     }
     let per_alpha = header.log_temperature.len() * header.log_density.len();
-    let wanted: usize =
-        header.lines.iter().map(|line| per_alpha.saturating_mul(line.alpha_count)).fold(0, usize::saturating_add);
+    let wanted: usize = header
+        .lines
+        .iter()
+        .map(|line| per_alpha.saturating_mul(line.alpha_count))
+        .fold(0, usize::saturating_add);
     let is_ascending = |nodes: &[f64]| !nodes.is_empty() && nodes.windows(2).all(|pair| pair[0] < pair[1]);
     if !is_ascending(&header.log_temperature) || !is_ascending(&header.log_density) {
         return Err(damaged("its nodes do not ascend"));
@@ -175,8 +178,7 @@ fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
     if values.len() != wanted.saturating_mul(size_of::<f32>()) {
         return Err(damaged("its values do not fill the nodes of its header"));
     }
-    let values: Vec<f32> =
-        values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
+    let values: Vec<f32> = values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
     if values.iter().any(|value| !value.is_finite()) {
         return Err(damaged("it holds values that are not finite"));
     }
@@ -225,7 +227,7 @@ pub fn table_nodes(line: Line) -> TableNodes {
         log_temperature: (0..6).map(|i| 3.6 + 0.3 * f64::from(i)).collect(),
         log_density: (0..29).map(|i| 12.0 + DENSITY_STEP * f64::from(i)).collect(),
         ln_alpha_first: (2.0 - f64::from(decades)) * std::f64::consts::LN_10,
-        alpha_count: 12 * decades as usize + 1,
+        alpha_count: 18 * decades as usize + 1,
     }
 }
 

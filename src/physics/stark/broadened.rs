@@ -38,6 +38,8 @@ pub struct StarkProfile {
     pub ln_detuning_step: f64,
     /// ln of the profile per A; beyond the last node it falls as detuning^(-5/2).
     pub ln_s: Vec<f64>,
+    /// Half width of a Lorentz profile already folded in, A: its wing is added to the -5/2 wing.
+    pub lorentz_hwhm: f64,
     /// Share of the intensity that is not broadened at all and stays at the centre.
     pub centre: f64,
 }
@@ -52,7 +54,13 @@ impl StarkProfile {
             return s[0];
         }
         if at >= last as f64 {
-            return s[last] + WING_SLOPE * (at - last as f64) * self.ln_detuning_step;
+            let ln_beyond = (at - last as f64) * self.ln_detuning_step;
+            if self.lorentz_hwhm == 0.0 {
+                return s[last] + WING_SLOPE * ln_beyond;
+            }
+            let lorentz = |ln_x: f64| self.lorentz_hwhm / PI * (-2.0 * ln_x).exp();
+            let stark = (s[last].exp() - lorentz(ln_detuning - ln_beyond)).max(0.0);
+            return (stark * (WING_SLOPE * ln_beyond).exp() + lorentz(ln_detuning)).ln();
         }
         let i = at as usize;
         let after = if i + 2 <= last { s[i + 2] } else { s[last] + WING_SLOPE * self.ln_detuning_step };
@@ -85,7 +93,7 @@ impl StarkProfile {
         } else {
             self.ln_detuning_first
         };
-        // The Lorentz wing falls less steeply than the Stark wing: follow it until it holds 1e-3.
+        // Beyond the grid the two wings simply add, if that is far out for both.
         let stark_last = self.ln_detuning_first + step * (self.ln_s.len() - 1) as f64;
         let last = stark_last.max((600.0 * hwhm).ln());
         let count = ((last - first) / step).ceil() as usize + 1;
@@ -105,7 +113,13 @@ impl StarkProfile {
                 (s[i] + sum + self.centre * lorentz(x)).max(f64::MIN_POSITIVE).ln()
             })
             .collect();
-        StarkProfile { ln_detuning_first: first, ln_detuning_step: step, ln_s, centre: 0.0 }
+        StarkProfile {
+            ln_detuning_first: first,
+            ln_detuning_step: step,
+            ln_s,
+            lorentz_hwhm: hwhm,
+            centre: 0.0,
+        }
     }
 }
 

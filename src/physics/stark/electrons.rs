@@ -194,7 +194,13 @@ fn path_integral(rho: f64, s: f64) -> f64 {
         let change: f64 = last_phase.map_or(0.0, |last: f64| phase - last);
         last_phase = Some(phase);
         let spread = 0.5 * change.hypot(phase * P_AXIS.step);
-        let average = if spread < 1e-3 { 1.0 } else if spread < PI { spread.sin() / spread } else { 0.0 };
+        let average = if spread < 1e-3 {
+            1.0
+        } else if spread < PI {
+            spread.sin() / spread
+        } else {
+            0.0
+        };
         let value = if phase < 1e-3 { 0.5 * phase * phase } else { 1.0 - average * phase.cos() };
         sum += u.cosh() * value;
     }

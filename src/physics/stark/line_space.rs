@@ -82,7 +82,8 @@ impl Frame {
                 return 0.0;
             }
             let up = upper.by_m[m_up.unsigned_abs() as usize].amplitudes[((l - m_up.abs()) as usize, i)];
-            let low = lower.by_m[m_low.unsigned_abs() as usize].amplitudes[((l_low - m_low.abs()) as usize, j)];
+            let low =
+                lower.by_m[m_low.unsigned_abs() as usize].amplitudes[((l_low - m_low.abs()) as usize, j)];
             // The lower state enters conjugated: |l' m'>* transforms as (-1)^(l'-m') |l' -m'>.
             let sign = if (l_low - m_low) % 2 == 0 { 1.0 } else { -1.0 };
             sign * clebsch_gordan(l, m_up, l_low, -m_low, total, m) * up * low
@@ -128,7 +129,8 @@ fn block(upper: &Shell, lower: &Shell, frame: &Frame, averages: &[DMatrix<f64>],
             let pair = frame.pairs[p];
             let mirror = (m == 0 && pair.lower.0 > 0).then(|| {
                 frame.pairs.iter().position(|other| {
-                    other.upper == (-pair.upper.0, pair.upper.1) && other.lower == (-pair.lower.0, pair.lower.1)
+                    other.upper == (-pair.upper.0, pair.upper.1)
+                        && other.lower == (-pair.lower.0, pair.lower.1)
                 })
             });
             (p, mirror.flatten())

@@ -9,7 +9,7 @@
 //!
 //! Domain: a from 0 (Holtsmark) to [`LARGEST_SCREENING`]; beyond about 0.8 the linearised
 //! correlation is a poor approximation, and larger values are taken at the limit. Accuracy:
-//! `validate_holtsmark_table` (1e-4), `validate_microfield_moments`.
+//! `validate_holtsmark_table` (1e-4), `validate_microfield_against_hooper_fit`.
 
 use crate::numerics::cubic::{Spline, catmull_rom};
 use std::f64::consts::PI;

@@ -94,8 +94,7 @@ impl<'a> Plasma<'a> {
         let field_cut =
             if cut { microfield::critical_field(unified.line.upper, density) } else { f64::INFINITY };
         let norm = 1.0 / field.cumulative(field_cut);
-        let operator =
-            OperatorTable::new(&Electrons::new(temperature_k, density), &space.values, unit_rad_s);
+        let operator = OperatorTable::new(&Electrons::new(temperature_k, density), &space.values, unit_rad_s);
         let components = components(space, &operator);
         Plasma { space, unit_rad_s, field, field_cut, norm, operator, components }
     }
@@ -130,7 +129,11 @@ impl<'a> Plasma<'a> {
                 }
                 None => {
                     let from = detuning - f64::from(*shift) * beta;
-                    self.operator.row(from, &mut work.re[slot..slot + count], &mut work.im[slot..slot + count]);
+                    self.operator.row(
+                        from,
+                        &mut work.re[slot..slot + count],
+                        &mut work.im[slot..slot + count],
+                    );
                 }
             }
         }
@@ -182,7 +185,11 @@ impl<'a> Plasma<'a> {
                 let mut beta: f64 = low;
                 for _ in 0..60 {
                     let (value, density) = measure(beta);
-                    if value < target { from = beta } else { to = beta }
+                    if value < target {
+                        from = beta
+                    } else {
+                        to = beta
+                    }
                     let next = beta - (value - target) / density;
                     let next = if next > from && next < to { next } else { 0.5 * (from + to) };
                     let done = (next - beta).abs() < 1e-9 * (next + 1e-9);
