@@ -27,9 +27,9 @@ const LARGEST_FIELD: f64 = 300.0;
 const BEYOND_RESONANCE: f64 = 30.0;
 /// Scale where field nodes turn logarithmic, and nodes per unit of ln(1 + beta/scale).
 const FIELD_SCALE: f64 = 0.4;
-const BASE_NODES: f64 = 6.0;
+const BASE_NODES: f64 = 10.0;
 /// Field nodes for the strongest component.
-const COMPONENT_NODES: f64 = 12.0;
+const COMPONENT_NODES: f64 = 16.0;
 
 /// The unified-theory calculation for one line.
 #[derive(Debug, Clone)]
@@ -162,7 +162,14 @@ impl<'a> Plasma<'a> {
         let resonances: Vec<(f64, f64, f64)> = self
             .components
             .iter()
-            .map(|c| (detuning / c.shift, c.width / c.shift, c.nodes))
+            .enumerate()
+            .map(|(i, c)| {
+                // Resonances that overlap need no more nodes together than one alone.
+                let next = self.components.get(i + 1).map_or(f64::INFINITY, |next| next.shift);
+                let (centre, width) = (detuning / c.shift, c.width / c.shift);
+                let apart = (centre - detuning / next) / (2.0 * width);
+                (centre, width, c.nodes * apart.clamp(0.05, 1.0))
+            })
             .filter(|(centre, width, _)| centre - 30.0 * width < field_max)
             .collect();
         let measure = |beta: f64| {
@@ -278,7 +285,7 @@ struct OperatorTable {
 }
 
 impl OperatorTable {
-    fn new(electrons: &Electrons, values: &[i32], unit_rad_s: f64) -> Self {
+    fn new(electrons: &Electrons, values: &[f64], unit_rad_s: f64) -> Self {
         // From far inside any width to beyond the largest shift of interest.
         let (ln_first, ln_last) = (1e-5f64.ln(), 1e6f64.ln());
         let rows = ((ln_last - ln_first) / LN_DETUNING_STEP) as usize + 2;
@@ -286,7 +293,7 @@ impl OperatorTable {
         for row in 0..rows {
             let detuning = (ln_first + LN_DETUNING_STEP * row as f64).exp();
             for value in values {
-                let l = electrons.operator_rad_s(1.5 * f64::from(*value), detuning * unit_rad_s) / unit_rad_s;
+                let l = electrons.operator_rad_s(1.5 * value, detuning * unit_rad_s) / unit_rad_s;
                 re.push(l.re);
                 im.push(l.im);
             }
