@@ -18,6 +18,8 @@ pub const PHYSICS_VERSION: &str = "unified-1";
 /// Largest file that is read, bytes.
 const LARGEST_FILE: u64 = 64 << 20;
 const HASH_BYTES: usize = 32;
+/// Rounding of node values (logarithms of order 10) by the header's decimal numbers.
+const NODE_ROUNDING: f64 = 1e-9;
 
 /// Why a profile table could not be read or written.
 #[derive(Debug, thiserror::Error)]
@@ -243,7 +245,9 @@ pub fn build_profile_table(
     let wanted = tabulated_lines();
     // A file that is absent, damaged or from other physics is simply made anew.
     let mut table = ProfileTable::read(path).unwrap_or_default();
-    table.lines.retain(|made| wanted.contains(&made.line()) && *made.nodes() == table_nodes(made.line()));
+    table
+        .lines
+        .retain(|made| wanted.contains(&made.line()) && is_same(made.nodes(), &table_nodes(made.line())));
     for line in &wanted {
         if table.line(line.lower, line.upper).is_none() {
             table.lines.push(compute_line(*line, &table_nodes(*line)));
@@ -252,6 +256,17 @@ pub fn build_profile_table(
         progress(table.lines.len(), wanted.len());
     }
     Ok(table)
+}
+
+/// Equal up to the rounding of a decimal header.
+fn is_same(a: &TableNodes, b: &TableNodes) -> bool {
+    let close = |a: &[f64], b: &[f64]| {
+        a.len() == b.len() && a.iter().zip(b).all(|(a, b)| (a - b).abs() < NODE_ROUNDING)
+    };
+    a.alpha_count == b.alpha_count
+        && close(&a.log_temperature, &b.log_temperature)
+        && close(&a.log_density, &b.log_density)
+        && close(&[a.ln_alpha_first], &[b.ln_alpha_first])
 }
 
 /// Computes the table of one line on all processors.
