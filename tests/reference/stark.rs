@@ -2,7 +2,7 @@
 
 use std::f64::consts::PI;
 
-use emberline::grid::profile_table::{PHYSICS_VERSION, ProfileTableError, compute_line};
+use emberline::grid::profile_table::{PHYSICS_VERSION, ProfileTableError, compute_line, tabulated_lines};
 use emberline::physics::hydrogen::Line;
 use emberline::physics::stark::microfield::{Microfield, normal_field_esu};
 use emberline::physics::stark::{
@@ -148,6 +148,21 @@ fn validate_self_broadening() {
     assert!((found / expected - 1.0).abs() < 2e-3, "{found} {expected}");
 }
 
+/// The common far wing of VCS 1973, twice the ions' Holtsmark wing: log10 S at log10 alpha = 4.8 for H-alpha
+/// to H-delta (`vcsbalmer.dat`; the electrons are static there).
+const VCS_ASYMPTOTE: [(u32, f64); 4] = [(3, -14.5917), (4, -14.1517), (5, -13.9255), (6, -13.7119)];
+
+#[test]
+fn validate_far_wing() {
+    for (upper, expected) in VCS_ASYMPTOTE {
+        let ln_alpha = 4.8 * std::f64::consts::LN_10;
+        let found = UnifiedLine::new(Line::new(2, upper)).profile(1e4, 1e15, false, &[ln_alpha])[0].log10();
+        println!("2-{upper}: log S {found:.4}, VCS {expected}");
+        // 1 %: what the quadrature and the interpolated kernel may add up to.
+        assert!((found - expected).abs() < 0.0043, "2-{upper}: {found} {expected}");
+    }
+}
+
 /// The static profile is the unified one where electrons are nearly static: the near wings of high lines
 /// at high density.
 #[test]
@@ -203,6 +218,17 @@ fn verify_table_interpolation() {
         quantile(0.9),
         quantile(1.0)
     );
+    for gamma in [0.0, 0.01] {
+        let best = (0..200)
+            .map(|_| {
+                let now = std::time::Instant::now();
+                std::hint::black_box(table.broadened(t, ne, gamma));
+                now.elapsed()
+            })
+            .min()
+            .unwrap();
+        println!("broadened with Lorentz width {gamma}: {best:?}");
+    }
     // The largest errors sit on the edges that the cut of the ion field leaves in the far wing.
     assert!(quantile(0.5) < 1e-3 && quantile(0.9) < 0.01 && quantile(1.0) < 0.06);
     assert!((stark.integral() - 1.0).abs() < 1e-3);
@@ -240,4 +266,27 @@ fn verify_profile_table_file() {
     std::fs::write(&path, &other).unwrap();
     assert!(matches!(ProfileTable::read(&path), Err(ProfileTableError::OtherPhysics { .. })));
     assert!(matches!(ProfileTable::read(&folder.path().join("none")), Err(ProfileTableError::Io { .. })));
+}
+
+/// The table in `grids/` is what the physics gives today: a few nodes computed anew.
+#[test]
+fn verify_bundled_table() {
+    let path = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/stark_profiles.bin");
+    let table = ProfileTable::read(&path).unwrap();
+    let lines: Vec<Line> = table.lines.iter().map(LineTable::line).collect();
+    assert_eq!(lines, tabulated_lines());
+    for (line, t, d) in [(Line::new(1, 2), 2, 4), (Line::new(2, 4), 1, 18), (Line::new(2, 10), 2, 20)] {
+        let stored = table.line(line.lower, line.upper).unwrap();
+        let nodes = stored.nodes();
+        let (log_t, log_d) = (nodes.log_temperature[t], nodes.log_density[d]);
+        let start = (t * nodes.log_density.len() + d) * nodes.alpha_count;
+        let chosen: Vec<usize> = (0..nodes.alpha_count).step_by(5).collect();
+        let ln_alpha: Vec<f64> = chosen.iter().map(|i| nodes.ln_alpha()[*i]).collect();
+        let made = UnifiedLine::new(line).profile(10f64.powf(log_t), 10f64.powf(log_d), true, &ln_alpha);
+        for (i, made) in chosen.iter().zip(made) {
+            let difference = made.ln() - f64::from(stored.ln_s()[start + i]);
+            // Single precision of ln S up to 30.
+            assert!(difference.abs() < 4e-6, "{line:?} alpha node {i}: {difference}");
+        }
+    }
 }

@@ -99,18 +99,24 @@ impl StarkProfile {
         let count = ((last - first) / step).ceil() as usize + 1;
         let u: Vec<f64> = (0..count).map(|i| (first + step * i as f64).exp()).collect();
         let s: Vec<f64> = u.iter().map(|u| self.ln_value(u.ln()).exp()).collect();
-        let lorentz = |x: f64| hwhm / PI / (x * x + hwhm * hwhm);
-        let ln_s = (0..count)
-            .map(|i| {
-                let x = u[i];
-                let mut sum = u[0] * (1.0 - 0.5 * step) * (s[0] - s[i]) * 2.0 * lorentz(x);
-                let weight_ends = 0.5 * step * u[count - 1] * (s[count - 1] - s[i]);
-                for j in 0..count {
-                    let (near, far) = (x - u[j], x + u[j]);
-                    sum += step * u[j] * (s[j] - s[i]) * (lorentz(near) + lorentz(far));
+        // Trapezoid in ln u; the first node also stands for the flat core, and the ends count half.
+        let mut weights: Vec<f64> = u.iter().map(|u| step * u).collect();
+        weights[0] *= 0.5;
+        weights[count - 1] *= 0.5;
+        let square = hwhm * hwhm;
+        let lorentz = |x: f64| hwhm / PI / (x * x + square);
+        let ln_s = u
+            .iter()
+            .zip(&s)
+            .map(|(x, own)| {
+                let mut sum = 0.0;
+                for ((u, s), weight) in u.iter().zip(&s).zip(&weights) {
+                    // Both sides of the profile at once: 1/near + 1/far with one division.
+                    let (near, far) = ((x - u) * (x - u) + square, (x + u) * (x + u) + square);
+                    sum += weight * (s - own) * (near + far) / (near * far);
                 }
-                sum -= weight_ends * (lorentz(x - u[count - 1]) + lorentz(x + u[count - 1]));
-                (s[i] + sum + self.centre * lorentz(x)).max(f64::MIN_POSITIVE).ln()
+                let core = 2.0 * u[0] * (s[0] - own) * lorentz(*x);
+                (own + core + hwhm / PI * sum + self.centre * lorentz(*x)).max(f64::MIN_POSITIVE).ln()
             })
             .collect();
         StarkProfile {

@@ -287,7 +287,7 @@ struct OperatorTable {
 impl OperatorTable {
     fn new(electrons: &Electrons, values: &[f64], unit_rad_s: f64) -> Self {
         // From far inside any width to beyond the largest shift of interest.
-        let (ln_first, ln_last) = (1e-5f64.ln(), 1e6f64.ln());
+        let (ln_first, ln_last) = (1e-5f64.ln(), 1e9f64.ln());
         let rows = ((ln_last - ln_first) / LN_DETUNING_STEP) as usize + 2;
         let (mut re, mut im) = (Vec::new(), Vec::new());
         for row in 0..rows {
