@@ -18,6 +18,8 @@ pub const PHYSICS_VERSION: &str = "unified-1";
 /// Largest file that is read, bytes.
 const LARGEST_FILE: u64 = 64 << 20;
 const HASH_BYTES: usize = 32;
+/// Rounding of node values (logarithms of order 10) by the header's decimal numbers.
+const NODE_ROUNDING: f64 = 1e-9;
 
 /// Why a profile table could not be read or written.
 #[derive(Debug, thiserror::Error)]
@@ -166,8 +168,11 @@ fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
         return Err(ParseFault::OtherPhysics(header.physics));
     }
     let per_alpha = header.log_temperature.len() * header.log_density.len();
-    let wanted: usize =
-        header.lines.iter().map(|line| per_alpha.saturating_mul(line.alpha_count)).fold(0, usize::saturating_add);
+    let wanted: usize = header
+        .lines
+        .iter()
+        .map(|line| per_alpha.saturating_mul(line.alpha_count))
+        .fold(0, usize::saturating_add);
     let is_ascending = |nodes: &[f64]| !nodes.is_empty() && nodes.windows(2).all(|pair| pair[0] < pair[1]);
     if !is_ascending(&header.log_temperature) || !is_ascending(&header.log_density) {
         return Err(damaged("its nodes do not ascend"));
@@ -175,8 +180,7 @@ fn parse_table(content: &[u8]) -> Result<ProfileTable, ParseFault> {
     if values.len() != wanted.saturating_mul(size_of::<f32>()) {
         return Err(damaged("its values do not fill the nodes of its header"));
     }
-    let values: Vec<f32> =
-        values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
+    let values: Vec<f32> = values.as_chunks::<4>().0.iter().map(|bytes| f32::from_le_bytes(*bytes)).collect();
     if values.iter().any(|value| !value.is_finite()) {
         return Err(damaged("it holds values that are not finite"));
     }
@@ -225,7 +229,7 @@ pub fn table_nodes(line: Line) -> TableNodes {
         log_temperature: (0..6).map(|i| 3.6 + 0.3 * f64::from(i)).collect(),
         log_density: (0..29).map(|i| 12.0 + DENSITY_STEP * f64::from(i)).collect(),
         ln_alpha_first: (2.0 - f64::from(decades)) * std::f64::consts::LN_10,
-        alpha_count: 12 * decades as usize + 1,
+        alpha_count: 18 * decades as usize + 1,
     }
 }
 
@@ -241,7 +245,9 @@ pub fn build_profile_table(
     let wanted = tabulated_lines();
     // A file that is absent, damaged or from other physics is simply made anew.
     let mut table = ProfileTable::read(path).unwrap_or_default();
-    table.lines.retain(|made| wanted.contains(&made.line()) && *made.nodes() == table_nodes(made.line()));
+    table
+        .lines
+        .retain(|made| wanted.contains(&made.line()) && is_same(made.nodes(), &table_nodes(made.line())));
     for line in &wanted {
         if table.line(line.lower, line.upper).is_none() {
             table.lines.push(compute_line(*line, &table_nodes(*line)));
@@ -250,6 +256,17 @@ pub fn build_profile_table(
         progress(table.lines.len(), wanted.len());
     }
     Ok(table)
+}
+
+/// Equal up to the rounding of a decimal header.
+fn is_same(a: &TableNodes, b: &TableNodes) -> bool {
+    let close = |a: &[f64], b: &[f64]| {
+        a.len() == b.len() && a.iter().zip(b).all(|(a, b)| (a - b).abs() < NODE_ROUNDING)
+    };
+    a.alpha_count == b.alpha_count
+        && close(&a.log_temperature, &b.log_temperature)
+        && close(&a.log_density, &b.log_density)
+        && close(&[a.ln_alpha_first], &[b.ln_alpha_first])
 }
 
 /// Computes the table of one line on all processors.

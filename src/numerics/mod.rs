@@ -1,5 +1,6 @@
 //! Mathematics only, thin over libraries.
 
 pub mod angular;
+pub mod bessel;
 pub mod cubic;
 pub mod quadrature;

@@ -21,7 +21,9 @@ struct Published {
 const VCS_LIMIT: [(u32, f64); 4] = [(3, 18.0), (4, 17.0), (5, 16.5), (6, 16.0)];
 
 fn tables_folder() -> PathBuf {
-    PathBuf::from(std::env::var_os("EMBERLINE_STARK_TABLES").expect("EMBERLINE_STARK_TABLES names the folder"))
+    PathBuf::from(
+        std::env::var_os("EMBERLINE_STARK_TABLES").expect("EMBERLINE_STARK_TABLES names the folder"),
+    )
 }
 
 /// The VCS file: per line 40 alpha (log alpha = -3 + 0.2 i) x 6 temperatures (2 500 K x 2^i) x 17
@@ -38,12 +40,12 @@ fn read_vcs(upper: u32) -> Vec<Published> {
     assert_eq!(values.len(), 40 * 6 * 17);
     let limit = VCS_LIMIT[upper as usize - 3].1;
     let mut found = Vec::new();
-    for t in 1..6 {
+    // The sixth, 80 000 K, is not in the paper, and its profiles integrate to as much as 1.12.
+    for t in 0..5 {
         for d in 4..17 {
             let log_density = 10.0 + 0.5 * d as f64;
             if log_density <= limit {
-                let points =
-                    (0..40).map(|a| (-3.0 + 0.2 * a as f64, values[(a * 6 + t) * 17 + d])).collect();
+                let points = (0..40).map(|a| (-3.0 + 0.2 * a as f64, values[(a * 6 + t) * 17 + d])).collect();
                 found.push(Published { temperature_k: 2500.0 * 2f64.powi(t as i32), log_density, points });
             }
         }
@@ -84,20 +86,23 @@ fn read_stehle(line: Line) -> Vec<Published> {
 }
 
 /// Ours on a fine grid, ready to be folded.
-fn unified(line: &UnifiedLine, upper_lower: Line, temperature_k: f64, log_density: f64) -> Broadened {
+fn unified(line: &UnifiedLine, name: Line, temperature_k: f64, log_density: f64) -> Broadened {
     let density = 10f64.powf(log_density);
-    let step = 10f64.ln() / 12.0;
-    let ln_alpha: Vec<f64> = (0..96).map(|i| 1e-5f64.ln() + step * f64::from(i)).collect();
+    // Centres of Lyman lines are narrow, the others flat inside 1e-4.
+    let decades = if name.lower == 1 { 8 } else { 6 };
+    let step = 10f64.ln() / 10.0;
+    let ln_alpha: Vec<f64> = (-10 * decades + 20..21).map(|i| step * f64::from(i)).collect();
     let ln_field = normal_field_esu(density).ln();
     let s = line.profile(temperature_k, density, false, &ln_alpha);
     let stark = StarkProfile {
         ln_detuning_first: ln_alpha[0] + ln_field,
         ln_detuning_step: step,
         ln_s: s.iter().map(|s| s.ln() - ln_field).collect(),
+        lorentz_hwhm: 0.0,
         centre: 0.0,
     };
     let lost = 1.0 - stark.integral();
-    Broadened::new(upper_lower, &StarkProfile { centre: lost.max(0.0), ..stark }, temperature_k, 0.0)
+    Broadened::new(name, &StarkProfile { centre: lost.max(0.0), ..stark }, temperature_k, 0.0)
 }
 
 /// Ratios ours / published with where they are: (log T, log n_e, log alpha, ratio).
@@ -134,8 +139,15 @@ fn print_quantiles(label: &str, ratios: impl Iterator<Item = f64>) -> (f64, f64)
     let within = sorted.iter().filter(|r| (*r - 1.0).abs() < 0.08).count() as f64 / sorted.len() as f64;
     println!(
         "{label:28} {:5} points  min {:.3}  2.5% {:.3}  25% {:.3}  50% {:.3}  75% {:.3}  97.5% {:.3}  max {:.3}  within 8%: {:.3}",
-        sorted.len(), sorted[0], quantile(&sorted, 0.025), quantile(&sorted, 0.25), quantile(&sorted, 0.5),
-        quantile(&sorted, 0.75), quantile(&sorted, 0.975), sorted[sorted.len() - 1], within
+        sorted.len(),
+        sorted[0],
+        quantile(&sorted, 0.025),
+        quantile(&sorted, 0.25),
+        quantile(&sorted, 0.5),
+        quantile(&sorted, 0.75),
+        quantile(&sorted, 0.975),
+        sorted[sorted.len() - 1],
+        within
     );
     (quantile(&sorted, 0.5), within)
 }
@@ -147,9 +159,70 @@ fn print_breakdown(label: &str, ratios: &[(f64, f64, f64, f64)]) {
         let chosen = ratios.iter().filter(|r| (r.1 - density).abs() < 0.3);
         print_quantiles(&format!("  log n_e {density}"), chosen.map(|r| r.3));
     }
-    for (from, to) in [(-3.1, -2.1), (-2.1, -1.5), (-1.5, -1.0), (-1.0, -0.5), (-0.5, 0.0), (0.0, 1.0), (1.0, 2.1)] {
+    for (from, to) in
+        [(-3.1, -2.1), (-2.1, -1.5), (-1.5, -1.0), (-1.0, -0.5), (-0.5, 0.0), (0.0, 1.0), (1.0, 2.1)]
+    {
         let chosen = ratios.iter().filter(|r| r.2 >= from && r.2 < to);
         print_quantiles(&format!("  log alpha {from} .. {to}"), chosen.map(|r| r.3));
+    }
+}
+
+/// The committed extract of both tables, by source and line.
+fn read_extract(source: &str) -> Vec<(Line, Vec<Published>)> {
+    let text = include_str!("../data/stark_published.csv");
+    let mut found: Vec<(Line, Vec<Published>)> = Vec::new();
+    for row in text.lines().filter(|row| row.starts_with(source)) {
+        let fields: Vec<f64> = row.split(',').skip(1).map(|field| field.parse().unwrap()).collect();
+        let [lower, upper, temperature_k, log_density, log_alpha, log_s] = fields[..] else {
+            panic!("{row}")
+        };
+        let line = Line::new(lower as u32, upper as u32);
+        if found.last().is_none_or(|last| last.0 != line) {
+            found.push((line, Vec::new()));
+        }
+        let tables = &mut found.last_mut().unwrap().1;
+        let is_same = |t: &Published| t.temperature_k == temperature_k && t.log_density == log_density;
+        if !tables.last().is_some_and(is_same) {
+            tables.push(Published { temperature_k, log_density, points: Vec::new() });
+        }
+        tables.last_mut().unwrap().points.push((log_alpha, log_s));
+    }
+    found
+}
+
+/// Where ions in motion change the profile (Stehle & Hutcheon compute them, this theory and VCS do not):
+/// inside log alpha = -0.5 for Balmer lines, -2 for Lyman lines.
+fn is_wing(line: Line, log_alpha: f64) -> bool {
+    log_alpha > if line.lower == 1 { -2.0 } else { -0.5 }
+}
+
+#[test]
+fn validate_extract_of_vcs() {
+    for (line, published) in read_extract("vcs") {
+        let ratios = ratios(line, &published);
+        let label = format!("VCS {}-{}", line.lower, line.upper);
+        let (median, _) = print_quantiles(&label, ratios.iter().map(|r| r.3));
+        assert!((median - 1.0).abs() < 0.02, "{label}: median {median}");
+        // Centres and near wings: 95 % within 8 %. In the wings VCS are up to a fifth higher than we
+        // and Stehle & Hutcheon, see `validate_against_stehle`.
+        let core = ratios.iter().filter(|r| !is_wing(line, r.2)).map(|r| r.3);
+        let (_, within) = print_quantiles(&format!("{label} inside"), core);
+        assert!(within > 0.95, "{label}: {within} within 8 % inside");
+    }
+}
+
+#[test]
+fn validate_extract_of_stehle() {
+    for (line, published) in read_extract("stehle") {
+        let ratios = ratios(line, &published);
+        let label = format!("Stehle {}-{}", line.lower, line.upper);
+        print_quantiles(&label, ratios.iter().map(|r| r.3));
+        let wing = ratios.iter().filter(|r| is_wing(line, r.2)).map(|r| r.3);
+        let (median, within) = print_quantiles(&format!("{label} wing"), wing);
+        assert!(
+            (median - 1.0).abs() < 0.02 && within > 0.95,
+            "{label}: median {median}, {within} within 8 %"
+        );
     }
 }
 
@@ -158,63 +231,72 @@ fn print_breakdown(label: &str, ratios: &[(f64, f64, f64, f64)]) {
 fn validate_against_vcs() {
     for upper in 3..=6 {
         let line = Line::new(2, upper);
-        print_breakdown(&format!("VCS 2-{upper}"), &ratios(line, &read_vcs(upper)));
+        let ratios = ratios(line, &read_vcs(upper));
+        print_breakdown(&format!("VCS 2-{upper}"), &ratios);
+        let (median, _) = print_quantiles("  all", ratios.iter().map(|r| r.3));
+        assert!((median - 1.0).abs() < 0.02, "2-{upper}: median {median}");
+        let core = ratios.iter().filter(|r| !is_wing(line, r.2)).map(|r| r.3);
+        let (_, within) = print_quantiles("  inside the wings", core);
+        assert!(within > 0.95, "2-{upper}: {within} within 8 % inside");
+    }
+}
+
+/// Balmer lines above H7 are another kind of calculation in the file: they integrate to 0.987 - 0.995, their
+/// wings are 8 % above the trend of the lower lines and grow by (1 + detuning/wavelength)^2 besides. Printed only.
+#[test]
+#[ignore = "minutes; EMBERLINE_STARK_TABLES=folder cargo test -- --ignored --nocapture print_stehle_high"]
+fn print_stehle_high_lines() {
+    for upper in [8, 10] {
+        let line = Line::new(2, upper);
+        print_breakdown(&format!("Stehle 2-{upper}"), &ratios(line, &read_stehle(line)));
     }
 }
 
 #[test]
 #[ignore = "minutes; EMBERLINE_STARK_TABLES=folder cargo test -- --ignored --nocapture validate_against_stehle"]
 fn validate_against_stehle() {
-    for (lower, upper) in [(1, 2), (1, 3), (1, 4), (1, 5), (2, 3), (2, 4), (2, 5), (2, 6), (2, 8)] {
+    for (lower, upper) in [(1, 2), (1, 3), (1, 4), (1, 5), (2, 3), (2, 4), (2, 5), (2, 6), (2, 7)] {
         let line = Line::new(lower, upper);
-        print_breakdown(&format!("Stehle {lower}-{upper}"), &ratios(line, &read_stehle(line)));
+        let ratios = ratios(line, &read_stehle(line));
+        print_breakdown(&format!("Stehle {lower}-{upper}"), &ratios);
+        let wing = ratios.iter().filter(|r| is_wing(line, r.2)).map(|r| r.3);
+        let (median, within) = print_quantiles("  wing", wing);
+        assert!((median - 1.0).abs() < 0.02, "{lower}-{upper}: median {median}, {within} within 8 %");
     }
 }
 
+/// Builds the table at the place that EMBERLINE_PROFILE_TABLE names, and says what it took.
 #[test]
-#[ignore = "debug"]
-fn debug_detail() {
-    for line in [Line::new(1, 2), Line::new(1, 3), Line::new(2, 3), Line::new(2, 4)] {
-        let published: Vec<_> = read_stehle(line).into_iter().filter(|p| [12.0, 14.0, 15.0, 16.0, 17.0].contains(&p.log_density) && p.temperature_k < 5e4).collect();
-        let all = ratios(line, &published);
-        for p in &published {
-            print!("{}-{} T {:6.0} ne {:4}:", line.lower, line.upper, p.temperature_k, p.log_density);
-            for r in all.iter().filter(|r| r.0 == p.temperature_k.log10() && r.1 == p.log_density) {
-                print!(" {:.2}", r.3);
-            }
-            println!();
-        }
-    }
-}
-
-#[test]
-#[ignore = "debug"]
-fn debug_integrals() {
-    for (lower, upper) in [(1, 2), (1, 3), (1, 5), (2, 3), (2, 6), (2, 9)] {
-        let line = UnifiedLine::new(Line::new(lower, upper));
-        let step = 10f64.ln() / 18.0;
-        let ln_alpha: Vec<f64> = (0..171).map(|i| 1e-7f64.ln() + step * f64::from(i)).collect();
-        for (t, ne) in [(1e4, 1e12), (1e4, 1e14), (1e4, 1e17), (4e4, 1e19)] {
-          for cut in [false, true] {
-            let start = std::time::Instant::now();
-            let s = line.profile(t, ne, cut, &ln_alpha);
-            let took = start.elapsed();
-            let mut total = s[0] * ln_alpha[0].exp() * (1.0 - 0.5 * step);
-            for i in 0..ln_alpha.len() { total += step * ln_alpha[i].exp() * s[i]; }
-            total += s[170] * ln_alpha[170].exp() * (1.0/1.5 - 0.5 * step);
-            println!("{lower}-{upper} T {t} ne {ne:.0e} cut {cut}: integral {:.5} first {:.4e} {:.4e} took {took:?}", 2.0 * total, s[0], s[90]);
-          }
-        }
-    }
-}
-
-#[test]
-#[ignore = "debug"]
-fn debug_build() {
+#[ignore = "ten minutes; EMBERLINE_PROFILE_TABLE=file cargo test -- --ignored --nocapture build_whole"]
+fn verify_build_whole_table() {
     let start = std::time::Instant::now();
-    let path = PathBuf::from(std::env::var_os("EMBERLINE_PROFILE_TABLE").unwrap());
-    let table = emberline::grid::profile_table::build_profile_table(&path, &|done, total| {
-        println!("{done}/{total} {:?}", start.elapsed());
-    });
-    println!("{} lines, {} bytes", table.unwrap().lines.len(), std::fs::metadata(&path).unwrap().len());
+    let path = PathBuf::from(std::env::var_os("EMBERLINE_PROFILE_TABLE").expect("EMBERLINE_PROFILE_TABLE"));
+    let report = |done, total| println!("{done}/{total} lines after {:?}", start.elapsed());
+    let table = emberline::grid::profile_table::build_profile_table(&path, &report).unwrap();
+    let size = std::fs::metadata(&path).unwrap().len();
+    println!("{} lines, {size} bytes", table.lines.len());
+    assert!(size < 4_000_000);
+    for table in &table.lines {
+        let name = table.line();
+        let (mut made, mut evaluated, mut worst) =
+            (std::time::Duration::ZERO, std::time::Duration::ZERO, 0.0f64);
+        for (t, ne) in [(7e3, 3e13), (1.2e4, 1e15), (2.2e4, 2e16), (4e4, 3e17)] {
+            let now = std::time::Instant::now();
+            let profile = table.broadened(t, ne, 1e-3);
+            made = made.max(now.elapsed());
+            let now = std::time::Instant::now();
+            let (step, mut sum) = (0.005f64, 0.0);
+            for i in 0..5000 {
+                let x = 1e-5 * (step * (f64::from(i) + 0.5)).exp();
+                sum += 2.0 * step * x * profile.per_aa(x);
+            }
+            evaluated = evaluated.max(now.elapsed() / 5000);
+            worst = worst.max((sum - 1.0).abs());
+        }
+        println!(
+            "{}-{}: made in {made:?}, evaluated in {evaluated:?}, integral off by {worst:.1e}",
+            name.lower, name.upper
+        );
+        assert!(worst < 1e-3);
+    }
 }

@@ -25,7 +25,7 @@ const NEAR_SIGMA: f64 = 8.0;
 const HERMITE_CENTRE: f64 = 0.457_142_857_142_857_1;
 const HERMITE: [(f64, f64); 3] = [
     (1.154_405_394_739_968_1, 0.240_123_178_605_012_7),
-    (2.366_759_410_734_541_3, 0.030_757_123_967_586_5),
+    (2.366_759_410_734_541, 0.030_757_123_967_586_5),
     (3.750_439_717_725_742_3, 5.482_688_559_722_179e-4),
 ];
 
@@ -38,6 +38,8 @@ pub struct StarkProfile {
     pub ln_detuning_step: f64,
     /// ln of the profile per A; beyond the last node it falls as detuning^(-5/2).
     pub ln_s: Vec<f64>,
+    /// Half width of a Lorentz profile already folded in, A: its wing is added to the -5/2 wing.
+    pub lorentz_hwhm: f64,
     /// Share of the intensity that is not broadened at all and stays at the centre.
     pub centre: f64,
 }
@@ -52,7 +54,13 @@ impl StarkProfile {
             return s[0];
         }
         if at >= last as f64 {
-            return s[last] + WING_SLOPE * (at - last as f64) * self.ln_detuning_step;
+            let ln_beyond = (at - last as f64) * self.ln_detuning_step;
+            if self.lorentz_hwhm == 0.0 {
+                return s[last] + WING_SLOPE * ln_beyond;
+            }
+            let lorentz = |ln_x: f64| self.lorentz_hwhm / PI * (-2.0 * ln_x).exp();
+            let stark = (s[last].exp() - lorentz(ln_detuning - ln_beyond)).max(0.0);
+            return (stark * (WING_SLOPE * ln_beyond).exp() + lorentz(ln_detuning)).ln();
         }
         let i = at as usize;
         let after = if i + 2 <= last { s[i + 2] } else { s[last] + WING_SLOPE * self.ln_detuning_step };
@@ -85,27 +93,39 @@ impl StarkProfile {
         } else {
             self.ln_detuning_first
         };
-        // The Lorentz wing falls less steeply than the Stark wing: follow it until it holds 1e-3.
+        // Beyond the grid the two wings simply add, if that is far out for both.
         let stark_last = self.ln_detuning_first + step * (self.ln_s.len() - 1) as f64;
         let last = stark_last.max((600.0 * hwhm).ln());
         let count = ((last - first) / step).ceil() as usize + 1;
         let u: Vec<f64> = (0..count).map(|i| (first + step * i as f64).exp()).collect();
         let s: Vec<f64> = u.iter().map(|u| self.ln_value(u.ln()).exp()).collect();
-        let lorentz = |x: f64| hwhm / PI / (x * x + hwhm * hwhm);
-        let ln_s = (0..count)
-            .map(|i| {
-                let x = u[i];
-                let mut sum = u[0] * (1.0 - 0.5 * step) * (s[0] - s[i]) * 2.0 * lorentz(x);
-                let weight_ends = 0.5 * step * u[count - 1] * (s[count - 1] - s[i]);
-                for j in 0..count {
-                    let (near, far) = (x - u[j], x + u[j]);
-                    sum += step * u[j] * (s[j] - s[i]) * (lorentz(near) + lorentz(far));
+        // Trapezoid in ln u; the first node also stands for the flat core, and the ends count half.
+        let mut weights: Vec<f64> = u.iter().map(|u| step * u).collect();
+        weights[0] *= 0.5;
+        weights[count - 1] *= 0.5;
+        let square = hwhm * hwhm;
+        let lorentz = |x: f64| hwhm / PI / (x * x + square);
+        let ln_s = u
+            .iter()
+            .zip(&s)
+            .map(|(x, own)| {
+                let mut sum = 0.0;
+                for ((u, s), weight) in u.iter().zip(&s).zip(&weights) {
+                    // Both sides of the profile at once: 1/near + 1/far with one division.
+                    let (near, far) = ((x - u) * (x - u) + square, (x + u) * (x + u) + square);
+                    sum += weight * (s - own) * (near + far) / (near * far);
                 }
-                sum -= weight_ends * (lorentz(x - u[count - 1]) + lorentz(x + u[count - 1]));
-                (s[i] + sum + self.centre * lorentz(x)).max(f64::MIN_POSITIVE).ln()
+                let core = 2.0 * u[0] * (s[0] - own) * lorentz(*x);
+                (own + core + hwhm / PI * sum + self.centre * lorentz(*x)).max(f64::MIN_POSITIVE).ln()
             })
             .collect();
-        StarkProfile { ln_detuning_first: first, ln_detuning_step: step, ln_s, centre: 0.0 }
+        StarkProfile {
+            ln_detuning_first: first,
+            ln_detuning_step: step,
+            ln_s,
+            lorentz_hwhm: hwhm,
+            centre: 0.0,
+        }
     }
 }
 

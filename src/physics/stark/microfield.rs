@@ -9,8 +9,9 @@
 //!
 //! Domain: a from 0 (Holtsmark) to [`LARGEST_SCREENING`]; beyond about 0.8 the linearised
 //! correlation is a poor approximation, and larger values are taken at the limit. Accuracy:
-//! `validate_holtsmark_table` (1e-4), `validate_microfield_moments`.
+//! `validate_holtsmark_table` (1e-4), `validate_microfield_against_hooper_fit`.
 
+use crate::numerics::bessel::{ModifiedPair, spherical_j};
 use crate::numerics::cubic::{Spline, catmull_rom};
 use std::f64::consts::PI;
 use std::sync::OnceLock;
@@ -270,6 +271,9 @@ fn transform(a: f64) -> Transform {
     Transform { exponent: Spline::new(&roots, &exponents), last: ROOT_LAST }
 }
 
+/// Legendre components of the pair integral; the last adds less than 1e-5.
+const L_COUNT: usize = 17;
+
 /// First- and second-order terms n h1 and (n^2/2) h2 of ln F(k).
 fn cluster_integrals(k: f64, a: f64) -> (f64, f64) {
     // Radii on a logarithmic grid from where the phase k E is large to where screening ends all.
@@ -288,110 +292,24 @@ fn cluster_integrals(k: f64, a: f64) -> (f64, f64) {
     let x0 = phases[0];
     first -= 0.5 * step * r_first.powi(3) * (x0.sin() / x0 - 1.0);
     let first = 4.0 * PI * ION_DENSITY * first;
-    // h2 by Legendre components: running integrals of i_l, k_l against j_l(kE) - delta_l0.
+    // h2 by Legendre components of exp(i k E cos) - 1, namely i^l (2 l + 1) (j_l(k E) - delta_l0), and of
+    // exp(-kappa r12)/r12, namely kappa (2 l + 1) i_l(kappa r_<) k_l(kappa r_>).
     let kappa = a * std::f64::consts::SQRT_2;
-    const L_MAX: usize = 16;
-    let bessel: Vec<[f64; L_MAX + 1]> = phases.iter().map(|x| spherical_j::<{ L_MAX + 1 }>(*x)).collect();
-    let modified: Vec<_> = radii.iter().map(|r| modified_pair::<{ L_MAX + 1 }>(kappa * r)).collect();
+    let j: Vec<[f64; L_COUNT]> = phases.iter().map(|x| spherical_j(*x)).collect();
+    let modified: Vec<ModifiedPair<L_COUNT>> = radii.iter().map(|r| ModifiedPair::new(kappa * r)).collect();
     let mut second = 0.0;
-    for l in 0..=L_MAX {
-        let component = |i: usize| bessel[i][l] - if l == 0 { 1.0 } else { 0.0 };
-        // i_l and k_l are stored with the ratio of their powers taken out between neighbours.
-        let mut inner = 0.0;
-        let mut sum = 0.0;
-        for i in 0..radii.len() {
-            let weight = radii[i].powi(3) * step * component(i);
-            // sum over r1 < r2 twice, the diagonal cell once.
-            inner = if i == 0 { 0.0 } else { inner * modified[i].decay(l, &modified[i - 1]) };
-            let product = modified[i].product[l];
-            sum += weight * product * (2.0 * inner + weight);
+    for l in 0..L_COUNT {
+        let (mut inner, mut sum) = (0.0, 0.0);
+        for (i, r) in radii.iter().enumerate() {
+            let component = if l == 0 { j[i][0] - 1.0 } else { j[i][l] };
+            let weight = r.powi(3) * step * component;
+            // The inner integral is kept relative to i_l at the current radius; pairs count twice.
+            inner *= if i == 0 { 0.0 } else { modified[i].fall(l, &modified[i - 1]) };
+            sum += weight * modified[i].product[l] * (2.0 * inner + weight);
             inner += weight;
         }
         let sign = if l % 2 == 0 { 1.0 } else { -1.0 };
         second += f64::from(2 * l as u32 + 1) * sign * sum;
     }
     (first, -2.0 * PI * ION_DENSITY * a * a * kappa * second)
-}
-
-/// Spherical Bessel functions j_0 .. j_(N-1) by downward recurrence where needed.
-fn spherical_j<const N: usize>(x: f64) -> [f64; N] {
-    let mut j = [0.0; N];
-    if x < 1e-8 {
-        j[0] = 1.0;
-        return j;
-    }
-    let j0 = x.sin() / x;
-    if x > N as f64 {
-        j[0] = j0;
-        j[1] = x.sin() / (x * x) - x.cos() / x;
-        for l in 1..N - 1 {
-            j[l + 1] = (2 * l + 1) as f64 / x * j[l] - j[l - 1];
-        }
-        return j;
-    }
-    // Miller's method, normalised on sum (2l+1) j_l^2 = 1.
-    let (mut above, mut here) = (0.0, 1e-120_f64);
-    let start = N + 25;
-    let mut norm = 0.0;
-    for l in (0..start).rev() {
-        let below = (2 * l + 3) as f64 / x * here - above;
-        (above, here) = (here, below);
-        norm += (2 * l + 1) as f64 * here * here * 1.0;
-        if l < N {
-            j[l] = here;
-        }
-        if here.abs() > 1e100 {
-            above *= 1e-100;
-            here *= 1e-100;
-            norm *= 1e-200;
-            for value in j.iter_mut() {
-                *value *= 1e-100;
-            }
-        }
-    }
-    let scale = 1.0 / norm.sqrt();
-    let scale = if (j[0] > 0.0) == (j0 > 0.0) { scale } else { -scale };
-    j.map(|value| value * scale)
-}
-
-/// Modified spherical Bessel functions at one argument: the product i_l k_l, and ln i_l to form
-/// ratios i_l(x1)/i_l(x2) without overflow.
-struct Modified<const N: usize> {
-    product: [f64; N],
-    ln_i: [f64; N],
-}
-
-impl<const N: usize> Modified<N> {
-    /// i_l(previous)/i_l(this): turns an integral of i_l scaled to the previous radius into this one's.
-    fn decay(&self, l: usize, previous: &Self) -> f64 {
-        (previous.ln_i[l] - self.ln_i[l]).exp()
-    }
-}
-
-fn modified_pair<const N: usize>(x: f64) -> Modified<N> {
-    // Ratios i_(l+1)/i_l by the continued fraction from above; i_0 = sinh x / x.
-    let mut ratio = [0.0; N];
-    let mut r = 0.0;
-    let start = N + 20 + x as usize;
-    for l in (0..start).rev() {
-        r = 1.0 / ((2 * l + 3) as f64 / x + r);
-        if l < N {
-            ratio[l] = r;
-        }
-    }
-    let mut ln_i = [0.0; N];
-    ln_i[0] = x + (-(-2.0 * x).exp_m1() / (2.0 * x)).ln();
-    for l in 1..N {
-        ln_i[l] = ln_i[l - 1] + ratio[l - 1].ln();
-    }
-    // k_0 = exp(-x)/x; ratios upward are stable.
-    let mut ln_k = -x - x.ln();
-    let mut k_ratio = 1.0 + 1.0 / x;
-    let mut product = [0.0; N];
-    for l in 0..N {
-        product[l] = (ln_i[l] + ln_k).exp();
-        ln_k += k_ratio.ln();
-        k_ratio = (2 * l + 3) as f64 / x + 1.0 / k_ratio;
-    }
-    Modified { product, ln_i }
 }

@@ -13,5 +13,5 @@ pub mod unified;
 pub use broadened::{Broadened, StarkProfile};
 pub use self_broadening::self_broadening_hwhm_aa;
 pub use static_line::StaticLine;
-pub use unified::UnifiedLine;
 pub use table::{DENSITY_STEP, LineTable, ProfileTable, TableNodes};
+pub use unified::UnifiedLine;

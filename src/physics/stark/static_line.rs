@@ -95,6 +95,7 @@ impl StaticLine {
             ln_detuning_first: LN_FIRST + unit_aa.ln(),
             ln_detuning_step: LN_STEP,
             ln_s,
+            lorentz_hwhm: 0.0,
             centre,
         };
         // The steps at the cut fall between nodes: half a percent of the strength may go wrong there.

@@ -30,8 +30,8 @@ pub struct TableNodes {
 /// Step of the densities, dex.
 pub const DENSITY_STEP: f64 = 0.25;
 /// Alpha nodes by which F0 moves from one density to the next.
-const ALPHA_PER_DENSITY: usize = 2;
-/// Step in ln alpha: twelve nodes a decade.
+const ALPHA_PER_DENSITY: usize = 3;
+/// Step in ln alpha: eighteen nodes a decade.
 pub const LN_ALPHA_STEP: f64 = DENSITY_STEP * 2.0 / 3.0 * std::f64::consts::LN_10 / ALPHA_PER_DENSITY as f64;
 
 impl TableNodes {
@@ -113,13 +113,16 @@ impl LineTable {
         let nearest = electron_density_per_cm3
             .log10()
             .clamp(nodes.log_density[0], nodes.log_density[nodes.log_density.len() - 1]);
-        let beyond = (normal_field_esu(electron_density_per_cm3) / normal_field_esu(10f64.powf(nearest))).ln();
-        let anchor_field = normal_field_esu(10f64.powf(nodes.log_density[anchor.min(nodes.log_density.len() - 1)]));
+        let beyond =
+            (normal_field_esu(electron_density_per_cm3) / normal_field_esu(10f64.powf(nearest))).ln();
+        let anchor_field =
+            normal_field_esu(10f64.powf(nodes.log_density[anchor.min(nodes.log_density.len() - 1)]));
         ln_s.iter_mut().for_each(|value| *value -= beyond);
         let mut profile = StarkProfile {
             ln_detuning_first: nodes.ln_alpha_first + anchor_field.ln() + beyond,
             ln_detuning_step: LN_ALPHA_STEP,
             ln_s,
+            lorentz_hwhm: 0.0,
             centre: 0.0,
         };
         // Lyman alpha's core may be narrower than the first node: what is missing lies there.

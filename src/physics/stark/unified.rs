@@ -27,9 +27,9 @@ const LARGEST_FIELD: f64 = 300.0;
 const BEYOND_RESONANCE: f64 = 30.0;
 /// Scale where field nodes turn logarithmic, and nodes per unit of ln(1 + beta/scale).
 const FIELD_SCALE: f64 = 0.4;
-const BASE_NODES: f64 = 6.0;
+const BASE_NODES: f64 = 10.0;
 /// Field nodes for the strongest component.
-const COMPONENT_NODES: f64 = 12.0;
+const COMPONENT_NODES: f64 = 16.0;
 
 /// The unified-theory calculation for one line.
 #[derive(Debug, Clone)]
@@ -94,8 +94,7 @@ impl<'a> Plasma<'a> {
         let field_cut =
             if cut { microfield::critical_field(unified.line.upper, density) } else { f64::INFINITY };
         let norm = 1.0 / field.cumulative(field_cut);
-        let operator =
-            OperatorTable::new(&Electrons::new(temperature_k, density), &space.values, unit_rad_s);
+        let operator = OperatorTable::new(&Electrons::new(temperature_k, density), &space.values, unit_rad_s);
         let components = components(space, &operator);
         Plasma { space, unit_rad_s, field, field_cut, norm, operator, components }
     }
@@ -130,7 +129,11 @@ impl<'a> Plasma<'a> {
                 }
                 None => {
                     let from = detuning - f64::from(*shift) * beta;
-                    self.operator.row(from, &mut work.re[slot..slot + count], &mut work.im[slot..slot + count]);
+                    self.operator.row(
+                        from,
+                        &mut work.re[slot..slot + count],
+                        &mut work.im[slot..slot + count],
+                    );
                 }
             }
         }
@@ -159,7 +162,14 @@ impl<'a> Plasma<'a> {
         let resonances: Vec<(f64, f64, f64)> = self
             .components
             .iter()
-            .map(|c| (detuning / c.shift, c.width / c.shift, c.nodes))
+            .enumerate()
+            .map(|(i, c)| {
+                // Resonances that overlap need no more nodes together than one alone.
+                let next = self.components.get(i + 1).map_or(f64::INFINITY, |next| next.shift);
+                let (centre, width) = (detuning / c.shift, c.width / c.shift);
+                let apart = (centre - detuning / next) / (2.0 * width);
+                (centre, width, c.nodes * apart.clamp(0.05, 1.0))
+            })
             .filter(|(centre, width, _)| centre - 30.0 * width < field_max)
             .collect();
         let measure = |beta: f64| {
@@ -182,7 +192,11 @@ impl<'a> Plasma<'a> {
                 let mut beta: f64 = low;
                 for _ in 0..60 {
                     let (value, density) = measure(beta);
-                    if value < target { from = beta } else { to = beta }
+                    if value < target {
+                        from = beta
+                    } else {
+                        to = beta
+                    }
                     let next = beta - (value - target) / density;
                     let next = if next > from && next < to { next } else { 0.5 * (from + to) };
                     let done = (next - beta).abs() < 1e-9 * (next + 1e-9);
@@ -271,15 +285,15 @@ struct OperatorTable {
 }
 
 impl OperatorTable {
-    fn new(electrons: &Electrons, values: &[i32], unit_rad_s: f64) -> Self {
+    fn new(electrons: &Electrons, values: &[f64], unit_rad_s: f64) -> Self {
         // From far inside any width to beyond the largest shift of interest.
-        let (ln_first, ln_last) = (1e-5f64.ln(), 1e6f64.ln());
+        let (ln_first, ln_last) = (1e-5f64.ln(), 1e9f64.ln());
         let rows = ((ln_last - ln_first) / LN_DETUNING_STEP) as usize + 2;
         let (mut re, mut im) = (Vec::new(), Vec::new());
         for row in 0..rows {
             let detuning = (ln_first + LN_DETUNING_STEP * row as f64).exp();
             for value in values {
-                let l = electrons.operator_rad_s(1.5 * f64::from(*value), detuning * unit_rad_s) / unit_rad_s;
+                let l = electrons.operator_rad_s(1.5 * value, detuning * unit_rad_s) / unit_rad_s;
                 re.push(l.re);
                 im.push(l.im);
             }
