@@ -10,7 +10,7 @@ use crate::physics::planck::planck_per_hz;
 use crate::physics::stark::ProfileTable;
 
 /// Wavelengths whose opacities are held at once: bounds the memory of a fine spectrum.
-const BLOCK: usize = 1024;
+const BLOCK: usize = 8192;
 
 /// Surface flux F_lambda, erg s^-1 cm^-2 A^-1, at ascending vacuum wavelengths (A).
 pub fn emergent_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &ProfileTable) -> Vec<f64> {
@@ -19,7 +19,7 @@ pub fn emergent_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &Pr
 
 fn block_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &ProfileTable) -> Vec<f64> {
     let sources = Sources::new(FrequencyGrid::from_wavelengths(wave_vac_aa), ALL_LINES, profiles);
-    let extinction = sources.evaluate(&atmosphere.states, false);
+    let extinction = sources.evaluate(&atmosphere.states);
     let depths = atmosphere.states.len();
     let mut scratch = Scratch::new(depths);
     let mut interval = vec![0.0; depths - 1];

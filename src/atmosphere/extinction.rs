@@ -11,6 +11,28 @@ use crate::physics::state::State;
 /// Relative temperature step of the derivatives at constant pressure.
 const DERIVATIVE_STEP: f64 = 1e-3;
 
+/// Line cross-sections of one depth and the place they were computed for.
+struct DepthLines {
+    temperature_k: f64,
+    electrons_per_cm3: f64,
+    cross_section_cm2: [Vec<f64>; SERIES_COUNT],
+}
+
+/// Line cross-sections kept from one Newton iteration to the next: broadening costs more than all
+/// else, and settles long before the temperatures do.
+#[derive(Default)]
+pub struct LineStore(Vec<DepthLines>);
+
+/// Electron densities may drift by this many times the tolerance on temperatures.
+const DENSITY_LENIENCE: f64 = 3.0;
+
+impl DepthLines {
+    fn serves(&self, state: &State, tolerance: f64) -> bool {
+        (state.temperature_k / self.temperature_k - 1.0).abs() <= tolerance
+            && (state.electrons_per_cm3 / self.electrons_per_cm3 - 1.0).abs() <= DENSITY_LENIENCE * tolerance
+    }
+}
+
 /// Opacity sources prepared for one frequency grid.
 pub struct Sources<'t> {
     grid: FrequencyGrid,
@@ -46,8 +68,25 @@ impl<'t> Sources<'t> {
         &self.grid
     }
 
-    /// Computes the opacities of a run of states; derivatives only where asked, zero otherwise.
-    pub fn evaluate(&self, states: &[State], with_slopes: bool) -> Extinction {
+    /// Computes the opacities of a run of states, without derivatives.
+    pub fn evaluate(&self, states: &[State]) -> Extinction {
+        self.evaluate_with(states, false, &mut LineStore::default(), 0.0)
+    }
+
+    /// Computes the opacities of a run of states and their derivatives; line shapes are taken from
+    /// the store where temperature (and three times as much electron density) has moved by less than
+    /// `tolerance` since.
+    pub fn evaluate_with_slopes(&self, states: &[State], store: &mut LineStore, tolerance: f64) -> Extinction {
+        self.evaluate_with(states, true, store, tolerance)
+    }
+
+    fn evaluate_with(
+        &self,
+        states: &[State],
+        with_slopes: bool,
+        store: &mut LineStore,
+        tolerance: f64,
+    ) -> Extinction {
         let (frequencies, depths) = (self.grid.len(), states.len());
         let zeros = || Array2::zeros((frequencies, depths));
         let mut extinction = Extinction {
@@ -57,14 +96,24 @@ impl<'t> Sources<'t> {
             thermal_slope: zeros(),
             rosseland_cm2_g: Vec::with_capacity(depths),
         };
-        let mut cross_section_cm2: [Vec<f64>; SERIES_COUNT] =
-            std::array::from_fn(|_| vec![0.0; frequencies]);
+        let slots = if with_slopes { depths } else { 1 };
+        store.0.resize_with(slots, || DepthLines {
+            temperature_k: f64::INFINITY,
+            electrons_per_cm3: f64::INFINITY,
+            cross_section_cm2: std::array::from_fn(|_| vec![0.0; frequencies]),
+        });
         let column = || (vec![0.0; frequencies], vec![0.0; frequencies]);
         let (mut total, mut fraction) = column();
         let (mut shifted_total, mut shifted_fraction) = column();
         for (depth, state) in states.iter().enumerate() {
-            self.lines.evaluate(state, &mut cross_section_cm2);
-            self.combine(state, &cross_section_cm2, &mut total, &mut fraction);
+            let lines = &mut store.0[if with_slopes { depth } else { 0 }];
+            if !lines.serves(state, tolerance) {
+                self.lines.evaluate(state, &mut lines.cross_section_cm2);
+                lines.temperature_k = state.temperature_k;
+                lines.electrons_per_cm3 = state.electrons_per_cm3;
+            }
+            let cross_section_cm2 = &lines.cross_section_cm2;
+            self.combine(state, cross_section_cm2, &mut total, &mut fraction);
             extinction.rosseland_cm2_g.push(rosseland_mean(
                 &self.grid.frequency_hz,
                 &self.grid.weight_hz,
@@ -78,7 +127,7 @@ impl<'t> Sources<'t> {
                 let shifted = State::new(state.temperature_k + step_k, state.pressure_cgs);
                 // Line shapes are kept: their own temperature dependence is weak, and the Newton
                 // iteration converges to the same structure without it.
-                self.combine(&shifted, &cross_section_cm2, &mut shifted_total, &mut shifted_fraction);
+                self.combine(&shifted, cross_section_cm2, &mut shifted_total, &mut shifted_fraction);
                 for frequency in 0..frequencies {
                     extinction.total_slope[[frequency, depth]] =
                         (shifted_total[frequency] - total[frequency]) / step_k;

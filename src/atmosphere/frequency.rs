@@ -10,8 +10,12 @@ use crate::physics::opacity::{HighestLevels, LYMAN_LIMIT_HZ};
 /// The lines that shape the temperature structure, and that its frequencies resolve.
 pub const STRUCTURE_LINES: HighestLevels = [10, 13, 9, 7];
 
-/// Base points per unit of ln(nu).
+/// No lines at all.
+pub const NO_LINES: HighestLevels = [0; 4];
+
+/// Base points per unit of ln(nu), for the structure and for its starting model.
 const BASE_PER_E_FOLD: f64 = 36.0;
+const START_PER_E_FOLD: f64 = 15.0;
 
 /// Smallest detuning from a line's centre and growth from point to point; relative to wavelength.
 const FIRST_DETUNING: f64 = 8e-6;
@@ -32,10 +36,19 @@ pub struct FrequencyGrid {
 impl FrequencyGrid {
     /// Grid of a model of given effective temperature, K.
     pub fn for_structure(teff_k: f64) -> Self {
+        Self::new(teff_k, BASE_PER_E_FOLD, STRUCTURE_LINES)
+    }
+
+    /// Coarse grid without lines, for the mean opacities of the starting model.
+    pub fn for_start(teff_k: f64) -> Self {
+        Self::new(teff_k, START_PER_E_FOLD, NO_LINES)
+    }
+
+    fn new(teff_k: f64, per_e_fold: f64, followed: HighestLevels) -> Self {
         let thermal_hz = BOLTZMANN_ERG_K * teff_k / PLANCK_ERG_S;
         // The deepest layers are about four times hotter than Teff.
         let (highest_hz, lowest_hz) = (70.0 * thermal_hz, 0.02 * thermal_hz);
-        let count = ((highest_hz / lowest_hz).ln() * BASE_PER_E_FOLD).ceil() as usize;
+        let count = ((highest_hz / lowest_hz).ln() * per_e_fold).ceil() as usize;
         let mut frequency_hz: Vec<f64> = (0..=count)
             .map(|i| highest_hz * (lowest_hz / highest_hz).powf(i as f64 / count as f64))
             .collect();
@@ -43,7 +56,7 @@ impl FrequencyGrid {
             let limit_hz = LYMAN_LIMIT_HZ / f64::from(level * level);
             frequency_hz.extend([limit_hz * (1.0 + 1e-7), limit_hz * (1.0 - 1e-7)]);
         }
-        for (lower, highest) in (1..).zip(STRUCTURE_LINES) {
+        for (lower, highest) in (1..).zip(followed) {
             for upper in lower + 1..=highest {
                 let centre_hz = 1e8 * LIGHT_SPEED_CM_S / Line { lower, upper }.wave_vac_aa();
                 frequency_hz.push(centre_hz);

@@ -14,8 +14,8 @@ use nalgebra::{DMatrix, DVector};
 use ndarray::Array2;
 
 use super::convection::{Point, convective_flux};
-use super::extinction::{Extinction, Sources};
-use super::frequency::{FrequencyGrid, STRUCTURE_LINES};
+use super::extinction::{Extinction, LineStore, Sources};
+use super::frequency::{FrequencyGrid, NO_LINES, STRUCTURE_LINES};
 use super::transfer::{Field, Medium, Scratch, cell_depth};
 use crate::physics::constants::{LIGHT_SPEED_CM_S, STEFAN_BOLTZMANN_CGS};
 use crate::physics::planck::{planck_per_hz, planck_slope_per_hz};
@@ -30,6 +30,12 @@ const OPTICAL_DEPTH_RANGE: (f64, f64) = (1e-7, 300.0);
 const SWITCH_DEPTH: f64 = 0.3;
 /// Largest relative change of a temperature in one iteration.
 const LARGEST_STEP: f64 = 0.1;
+/// A line's shape is computed anew where the temperature has moved, since it was last computed, by this
+/// fraction of the last iteration's largest change ...
+const SHAPE_LENIENCE: f64 = 0.3;
+/// ... but never by less or more than this: a tenth of a per cent in temperature is a tenth of a per cent
+/// in a Doppler width.
+const SHAPE_TOLERANCE: (f64, f64) = (1e-3, 3e-2);
 /// Converged: largest relative temperature change.
 pub const TEMPERATURE_TOLERANCE: f64 = 1e-5;
 /// Converged: largest relative departure of the total flux from sigma Teff^4.
@@ -109,10 +115,10 @@ pub fn compute_atmosphere(
     profiles: &ProfileTable,
 ) -> Result<Atmosphere, NotConverged> {
     let sources = Sources::new(FrequencyGrid::for_structure(teff_k), STRUCTURE_LINES, profiles);
-    let mut iteration = Iteration::start(teff_k, log_g, &sources);
+    let mut iteration = Iteration::start(teff_k, log_g, &sources, profiles);
     let mut temperature_change = f64::INFINITY;
     for iterations in 1..=MOST_ITERATIONS {
-        let linear = iteration.linearise();
+        let linear = iteration.linearise(temperature_change);
         if temperature_change < TEMPERATURE_TOLERANCE && linear.flux_error_max < FLUX_TOLERANCE {
             return Ok(iteration.finish(Convergence {
                 iterations,
@@ -155,6 +161,7 @@ struct Iteration<'s, 't> {
     temperature_k: Vec<f64>,
     pressure_cgs: Vec<f64>,
     fields: Vec<Field>,
+    lines: LineStore,
     states: Vec<State>,
     rosseland_depth: Vec<f64>,
     rosseland_cm2_g: Vec<f64>,
@@ -194,8 +201,10 @@ struct Sums {
 
 impl<'s, 't> Iteration<'s, 't> {
     /// Grey temperature run, adiabatic where the grey gradient would be unstable.
-    fn start(teff_k: f64, log_g: f64, sources: &'s Sources<'t>) -> Self {
+    fn start(teff_k: f64, log_g: f64, sources: &'s Sources<'t>, profiles: &ProfileTable) -> Self {
         let gravity_cgs = 10f64.powf(log_g);
+        // Lines matter little to the mean opacity, and cost most of its time.
+        let continuum = Sources::new(FrequencyGrid::for_start(teff_k), NO_LINES, profiles);
         let (first, last) = OPTICAL_DEPTH_RANGE;
         let mut column_g_cm2 = Vec::with_capacity(DEPTHS);
         let mut temperature_k: Vec<f64> = Vec::with_capacity(DEPTHS);
@@ -222,7 +231,7 @@ impl<'s, 't> Iteration<'s, 't> {
                 }
                 let state = State::new(temperature, column * gravity_cgs);
                 let renewed =
-                    sources.evaluate(std::slice::from_ref(&state), false).rosseland_cm2_g[0];
+                    continuum.evaluate(std::slice::from_ref(&state)).rosseland_cm2_g[0];
                 let renewed_column = match column_g_cm2.last() {
                     None => depth / renewed,
                     Some(above) => above + 2.0 * (depth - previous_depth) / (previous_opacity + renewed),
@@ -258,6 +267,7 @@ impl<'s, 't> Iteration<'s, 't> {
             temperature_k,
             pressure_cgs,
             fields,
+            lines: LineStore::default(),
             states: Vec::new(),
             rosseland_depth: Vec::new(),
             rosseland_cm2_g: Vec::new(),
@@ -277,9 +287,11 @@ impl<'s, 't> Iteration<'s, 't> {
         STEFAN_BOLTZMANN_CGS * self.teff_k.powi(4) / (4.0 * std::f64::consts::PI)
     }
 
-    /// Solves the transfer, renews pressures, and sets up the Newton equations.
-    fn linearise(&mut self) -> Linear {
-        let extinction = self.sources.evaluate(&self.states, true);
+    /// Solves the transfer, renews pressures, and sets up the Newton equations; `temperature_change` is
+    /// the largest relative one of the last step.
+    fn linearise(&mut self, temperature_change: f64) -> Linear {
+        let tolerance = (SHAPE_LENIENCE * temperature_change).clamp(SHAPE_TOLERANCE.0, SHAPE_TOLERANCE.1);
+        let extinction = self.sources.evaluate_with_slopes(&self.states, &mut self.lines, tolerance);
         self.rosseland_depth = integrate_depth(&self.column_g_cm2, &extinction.rosseland_cm2_g);
         let sums = self.sum_frequencies(&extinction);
         let convection = self.convection(&extinction.rosseland_cm2_g);

@@ -120,8 +120,14 @@ struct NodeSpectrum {
 
 impl NodeSpectrum {
     fn compute(atmosphere: &Atmosphere, balmer_aa: &[f64], sed_aa: &[f64], profiles: &ProfileTable) -> Self {
-        let logarithm = |wave_vac_aa: &[f64]| {
-            emergent_flux(atmosphere, wave_vac_aa, profiles).iter().map(|flux| flux.ln() as f32).collect()
+        // One pass over both axes: broadening the lines is most of the work.
+        let mut wave_vac_aa: Vec<f64> = balmer_aa.iter().chain(sed_aa).copied().collect();
+        wave_vac_aa.sort_by(f64::total_cmp);
+        wave_vac_aa.dedup();
+        let flux = emergent_flux(atmosphere, &wave_vac_aa, profiles);
+        let pick = |wanted: &[f64]| {
+            let at = |wave: &f64| wave_vac_aa.partition_point(|have| have < wave);
+            wanted.iter().map(|wave| flux[at(wave)].ln() as f32).collect()
         };
         let convergence = &atmosphere.convergence;
         NodeSpectrum {
@@ -134,8 +140,8 @@ impl NodeSpectrum {
                 temperature_change: convergence.temperature_change,
                 convective_flux_max_fraction: convergence.convective_fraction_max,
             },
-            ln_flux: logarithm(balmer_aa),
-            ln_sed: logarithm(sed_aa),
+            ln_flux: pick(balmer_aa),
+            ln_sed: pick(sed_aa),
         }
     }
 
