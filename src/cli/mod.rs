@@ -1,8 +1,89 @@
 //! The command line: one file per command.
+//!
+//! Results go to stdout, everything else to stderr. Exit codes: 0 all done, 2 wrong use or
+//! configuration, 3 some input failed (its report says why).
 
+mod codes;
+mod schema;
+
+use std::error::Error;
+use std::io::{self, Write};
 use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+/// Exit code for wrong use or configuration.
+pub const EXIT_WRONG_USE: u8 = 2;
+/// Exit code when some input failed; its report says why.
+pub const EXIT_INPUT_FAILED: u8 = 3;
+
+/// Fits spectra of DA white dwarfs: temperature, gravity, velocity, mass, radius, age.
+#[derive(Debug, Parser)]
+#[command(name = "emberline", version, arg_required_else_help = true)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// List the stable codes of faults and flags with their meaning and remedy.
+    Codes(codes::CodesArguments),
+    /// Print the JSON schema of the report.
+    Schema,
+}
+
+/// What a command ends with when it could not do its work.
+pub type CommandResult = Result<ExitCode, Box<dyn Error>>;
 
 /// Parses the arguments, runs the command, returns the exit code.
 pub fn run() -> ExitCode {
-    ExitCode::from(2)
+    let arguments = match Arguments::try_parse() {
+        Ok(arguments) => arguments,
+        Err(refusal) => return print_refusal(&refusal),
+    };
+    start_log();
+    let outcome = match arguments.command {
+        Command::Codes(arguments) => codes::run(&arguments),
+        Command::Schema => schema::run(),
+    };
+    match outcome {
+        Ok(exit) => exit,
+        Err(fault) if is_broken_pipe(fault.as_ref()) => ExitCode::SUCCESS,
+        Err(fault) => {
+            // The last words: if stderr is gone as well, the exit code remains.
+            let _ = writeln!(io::stderr(), "emberline: {}", error_chain(fault.as_ref()));
+            ExitCode::from(EXIT_WRONG_USE)
+        }
+    }
+}
+
+fn print_refusal(refusal: &clap::Error) -> ExitCode {
+    let _ = refusal.print();
+    if refusal.use_stderr() { ExitCode::from(EXIT_WRONG_USE) } else { ExitCode::SUCCESS }
+}
+
+/// Logs to stderr; `EMBERLINE_LOG` sets what is shown (default: warnings).
+fn start_log() {
+    use tracing_subscriber::EnvFilter;
+    let filter = EnvFilter::try_from_env("EMBERLINE_LOG").unwrap_or_else(|_| EnvFilter::new("warn"));
+    // A second start (tests calling `run` twice) keeps the first logger.
+    let _ = tracing_subscriber::fmt().with_env_filter(filter).with_writer(io::stderr).try_init();
+}
+
+/// A fault and all its causes in one line.
+pub fn error_chain(fault: &dyn Error) -> String {
+    let mut words = fault.to_string();
+    let mut cause = fault.source();
+    while let Some(inner) = cause {
+        words.push_str(": ");
+        words.push_str(&inner.to_string());
+        cause = inner.source();
+    }
+    words
+}
+
+/// Whether the reader of our stdout went away (`emberline codes | head`): not a failure.
+fn is_broken_pipe(fault: &(dyn Error + 'static)) -> bool {
+    fault.downcast_ref::<io::Error>().is_some_and(|error| error.kind() == io::ErrorKind::BrokenPipe)
 }
