@@ -123,13 +123,20 @@ codes! {
     FRAME_UNKNOWN = "spectrum.velocity-frame-unknown", Note,
         "the file does not say whether the Earth's motion is taken out of the wavelengths",
         "read the radial velocity as relative to the telescope, or set velocity_frame";
-    SETTING_OVERRULES_FILE = "spectrum.setting-overrules-file", Note,
-        "the configuration gives a value that differs from what the file states; the configuration was used",
-        "remove the setting if the file is right";
+    SETTING_DIFFERS_FROM_FILE = "spectrum.setting-differs-from-file", Note,
+        "the configuration and the file state different things; the detail says which was used",
+        "remove the setting if the file is right; set overrule_file if it is not";
+    ERRORS_ASSUMED = "spectrum.errors-assumed", Note,
+        "the file has no errors; they were made from assume_snr", "do not read absolute values of chi-square";
+    ARMS_JOINED = "spectrum.arms-joined", Note,
+        "several arms or orders of one object were joined, each up to the middle of their overlap", "none needed";
+    HEADER_CONTRADICTS_ITSELF = "spectrum.header-contradicts-itself", Note,
+        "two header entries about the same thing differ; the detail says which was used",
+        "check the recorded decision";
     RESOLUTION_COLUMN_IMPLAUSIBLE = "spectrum.resolution-column-implausible", Note,
         "the file's column of widths cannot be widths; it was not used", "check the recorded resolution";
     PADDING_TRIMMED = "spectrum.padding-trimmed", Note,
-        "pixels without data at the ends were cut off", "none needed";
+        "pixels without wavelength or flux at the ends were cut off", "none needed";
 
     // spectrum: the values
     UNEQUAL_LENGTHS = "spectrum.unequal-lengths", Reject,

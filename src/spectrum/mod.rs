@@ -2,19 +2,27 @@
 //!
 //! In goes a FITS file that nobody checked; out comes a [`Spectrum`], which can only be made from
 //! values that the fit may trust, or a fault that says in one line what was found, what was expected
-//! and what to do. Wavelengths are vacuum angstroms from here on. `fits` opens files so that the C
+//! and what to do. Wavelengths are vacuum angstroms from here on. [`fits`] opens files so that the C
 //! library never sees a name to parse or a size to believe, [`readers`] knows one file layout per
-//! file, `settle` decides what the file leaves open (unit, medium, error kind, resolution, velocity
+//! file, [`settle`] decides what the file leaves open (unit, medium, error kind, resolution, velocity
 //! frame) from the configuration and records how, and never guesses.
 
 mod axis;
+pub mod fits;
 mod observation;
+mod read;
 pub mod readers;
 mod resolution;
+mod settings;
+mod settle;
+mod units;
 
 pub use axis::{Medium, VelocityFrame};
 pub use observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
+pub use read::{ReadFault, read_file};
 pub use resolution::{FWHM_PER_SIGMA, Resolution};
+pub use settings::{ErrorKind, ReadSettings};
+pub use units::{FluxScale, WaveUnit};
 
 use serde::{Deserialize, Serialize};
 
@@ -158,11 +166,7 @@ fn check_wavelengths(wave_vac_aa: &[f64]) -> Result<(), SpectrumFault> {
     for (pixel, pair) in wave_vac_aa.windows(2).enumerate() {
         if pair[1] <= pair[0] {
             let pixel = pixel + 1;
-            return Err(SpectrumFault::WavelengthNotAscending {
-                pixel,
-                before_aa: pair[0],
-                found_aa: pair[1],
-            });
+            return Err(SpectrumFault::WavelengthNotAscending { pixel, before_aa: pair[0], found_aa: pair[1] });
         }
     }
     for &found_aa in [wave_vac_aa.first(), wave_vac_aa.last()].into_iter().flatten() {
@@ -274,6 +278,3 @@ impl SpectrumFault {
         }
     }
 }
-
-/// Placeholder until the readers are in.
-pub type ReadFault = SpectrumFault;
