@@ -4,10 +4,11 @@
 //! configuration, 3 some input failed (its report says why).
 
 mod codes;
+pub mod fit;
 mod schema;
 
 use std::error::Error;
-use std::io::{self, Write};
+use std::io::{self, IsTerminal, Write};
 use std::process::ExitCode;
 
 use clap::{Parser, Subcommand};
@@ -27,6 +28,8 @@ struct Arguments {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    /// Fit spectra and print one JSON report per object.
+    Fit(fit::FitArguments),
     /// List the stable codes of faults and flags with their meaning and remedy.
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
@@ -44,6 +47,7 @@ pub fn run() -> ExitCode {
     };
     start_log();
     let outcome = match arguments.command {
+        Command::Fit(arguments) => fit::run(&arguments, &NoPipeline),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
     };
@@ -58,6 +62,19 @@ pub fn run() -> ExitCode {
     }
 }
 
+/// Stands where the fit will be: reads and checks, fits nothing, and says so in every report.
+struct NoPipeline;
+
+impl fit::Analyse for NoPipeline {
+    fn analyse(&self, _observation: &crate::spectrum::Observation) -> crate::report::Findings {
+        crate::report::Findings {
+            flags: vec![crate::codes::Flag::new(&crate::codes::NO_PARAMETERS, "this build does not fit")],
+            provenance: crate::report::Provenance::of_this_program(),
+            ..Default::default()
+        }
+    }
+}
+
 fn print_refusal(refusal: &clap::Error) -> ExitCode {
     let _ = refusal.print();
     if refusal.use_stderr() { ExitCode::from(EXIT_WRONG_USE) } else { ExitCode::SUCCESS }
@@ -68,7 +85,8 @@ fn start_log() {
     use tracing_subscriber::EnvFilter;
     let filter = EnvFilter::try_from_env("EMBERLINE_LOG").unwrap_or_else(|_| EnvFilter::new("warn"));
     // A second start (tests calling `run` twice) keeps the first logger.
-    let _ = tracing_subscriber::fmt().with_env_filter(filter).with_writer(io::stderr).try_init();
+    let log = tracing_subscriber::fmt().with_env_filter(filter).with_writer(io::stderr);
+    let _ = log.with_ansi(io::stderr().is_terminal()).try_init();
 }
 
 /// A fault and all its causes in one line.

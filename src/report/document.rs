@@ -174,3 +174,14 @@ pub struct Provenance {
     /// When, UTC, RFC 3339.
     pub fitted_at: Option<String>,
 }
+
+impl Provenance {
+    /// Name and version of this program; the rest is filled by those who know it.
+    pub fn of_this_program() -> Self {
+        Provenance {
+            software: env!("CARGO_PKG_NAME").to_owned(),
+            version: env!("CARGO_PKG_VERSION").to_owned(),
+            ..Provenance::default()
+        }
+    }
+}

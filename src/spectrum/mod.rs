@@ -166,7 +166,11 @@ fn check_wavelengths(wave_vac_aa: &[f64]) -> Result<(), SpectrumFault> {
     for (pixel, pair) in wave_vac_aa.windows(2).enumerate() {
         if pair[1] <= pair[0] {
             let pixel = pixel + 1;
-            return Err(SpectrumFault::WavelengthNotAscending { pixel, before_aa: pair[0], found_aa: pair[1] });
+            return Err(SpectrumFault::WavelengthNotAscending {
+                pixel,
+                before_aa: pair[0],
+                found_aa: pair[1],
+            });
         }
     }
     for &found_aa in [wave_vac_aa.first(), wave_vac_aa.last()].into_iter().flatten() {

@@ -84,7 +84,9 @@ pub enum ReadFault {
         detail: String,
     },
     /// A selected row that is not there.
-    #[error("cannot select row {row}: found {found} objects that can be used (their rows are in the reports without --row)")]
+    #[error(
+        "cannot select row {row}: found {found} objects that can be used (their rows are in the reports without --row)"
+    )]
     NoSuchRow {
         /// The row asked for.
         row: usize,
@@ -92,19 +94,26 @@ pub enum ReadFault {
         found: usize,
     },
     /// No unit of the wavelengths.
-    #[error("cannot tell the unit of the wavelengths: found {}, need a unit of length (set wave_unit)", or_nothing(found))]
+    #[error(
+        "cannot tell the unit of the wavelengths: found {}, need a unit of length (set wave_unit)",
+        or_nothing(found)
+    )]
     WaveUnitUnknown {
         /// What the file says.
         found: Option<String>,
     },
     /// No usable unit of the fluxes.
-    #[error("cannot use the unit of the fluxes: found {found}, need a flux per wavelength interval or counts (set flux_scale)")]
+    #[error(
+        "cannot use the unit of the fluxes: found {found}, need a flux per wavelength interval or counts (set flux_scale)"
+    )]
     FluxUnitUnknown {
         /// What the file says.
         found: String,
     },
     /// Air or vacuum.
-    #[error("cannot tell whether the wavelengths are in air or in vacuum: found nothing in the file (set medium)")]
+    #[error(
+        "cannot tell whether the wavelengths are in air or in vacuum: found nothing in the file (set medium)"
+    )]
     MediumUnknown,
     /// No errors.
     #[error("cannot weigh the fluxes: found no errors in the file (set assume_snr)")]
@@ -113,7 +122,9 @@ pub enum ReadFault {
     #[error("cannot tell what the errors are: found no statement in the file (set error_kind)")]
     ErrorKindUnknown,
     /// No resolution.
-    #[error("cannot broaden models to the instrument: found no believable resolution in the file (set resolution_fwhm_aa or resolving_power)")]
+    #[error(
+        "cannot broaden models to the instrument: found no believable resolution in the file (set resolution_fwhm_aa or resolving_power)"
+    )]
     ResolutionUnknown,
     /// Values that the fit may not trust.
     #[error(transparent)]

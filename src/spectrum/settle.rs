@@ -159,11 +159,12 @@ fn settle_values(
     let sigma = sigma(&mut raw, &flux, flux_unit.factor, flags, &mut decided, settings)?;
 
     let resolution = resolution(raw.resolution.take(), &wave_vac_aa, flags, &mut decided, settings)?;
-    let frame = settle_one("velocity_frame", raw.velocity_frame.take(), settings.velocity_frame, flags, settings)
-        .unwrap_or_else(|| {
-            flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
-            Stated::new(VelocityFrame::Unknown, "not stated")
-        });
+    let frame =
+        settle_one("velocity_frame", raw.velocity_frame.take(), settings.velocity_frame, flags, settings)
+            .unwrap_or_else(|| {
+                flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
+                Stated::new(VelocityFrame::Unknown, "not stated")
+            });
     source.velocity_frame = Some(frame.value);
     decided.velocity_frame = Some(frame.by);
     source.decided_by = decided;

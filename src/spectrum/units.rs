@@ -83,8 +83,22 @@ impl FluxUnit {
     pub fn parse(words: &str) -> Option<Self> {
         let word = words.trim().to_ascii_lowercase();
         const COUNTS: [&str; 16] = [
-            "adu", "du", "du/pixel", "adu/pixel", "count", "counts", "count/s", "counts/s", "counts s-1", "electron",
-            "electrons", "electron/s", "electrons/s", "relative flux", "relative", "normalized",
+            "adu",
+            "du",
+            "du/pixel",
+            "adu/pixel",
+            "count",
+            "counts",
+            "count/s",
+            "counts/s",
+            "counts s-1",
+            "electron",
+            "electrons",
+            "electron/s",
+            "electrons/s",
+            "relative flux",
+            "relative",
+            "normalized",
         ];
         if COUNTS.contains(&word.as_str()) {
             return Some(FluxUnit { scale: FluxScale::Relative, factor: 1.0 });

@@ -14,13 +14,14 @@ const GZIP_START: [u8; 2] = [0x1f, 0x8b];
 /// Reads an ordinary file; never waits for a pipe, never reads a device.
 pub fn read_regular_file(path: &Path, largest_bytes: u64) -> Result<Vec<u8>, FileFault> {
     // Without O_NONBLOCK, opening a pipe that nobody writes to would wait for ever.
-    let file = OpenOptions::new().read(true).custom_flags(libc::O_NONBLOCK).open(path).map_err(|error| {
-        match error.kind() {
-            io::ErrorKind::NotFound | io::ErrorKind::NotADirectory => FileFault::Missing,
-            _ if error.raw_os_error() == Some(libc::ENXIO) => FileFault::NotRegular { found: "a socket" },
-            _ => FileFault::Unreadable(error),
-        }
-    })?;
+    let file =
+        OpenOptions::new().read(true).custom_flags(libc::O_NONBLOCK).open(path).map_err(
+            |error| match error.kind() {
+                io::ErrorKind::NotFound | io::ErrorKind::NotADirectory => FileFault::Missing,
+                _ if error.raw_os_error() == Some(libc::ENXIO) => FileFault::NotRegular { found: "a socket" },
+                _ => FileFault::Unreadable(error),
+            },
+        )?;
     // Asked of the open file, not of the path: the path may have changed meanwhile.
     let kind = file.metadata().map_err(FileFault::Unreadable)?.file_type();
     if !kind.is_file() {
@@ -43,12 +44,12 @@ pub fn unpack(packed: Vec<u8>, largest_bytes: u64) -> Result<Vec<u8>, FileFault>
     if !packed.starts_with(&GZIP_START) {
         return Ok(packed);
     }
-    read_bounded(MultiGzDecoder::new(packed.as_slice()), largest_bytes, "after unpacking").map_err(
-        |fault| match fault {
+    read_bounded(MultiGzDecoder::new(packed.as_slice()), largest_bytes, "after unpacking").map_err(|fault| {
+        match fault {
             BoundedFault::TooLarge(fault) => fault,
             BoundedFault::Io(error) => FileFault::BadGzip(error),
-        },
-    )
+        }
+    })
 }
 
 enum BoundedFault {
@@ -64,4 +65,3 @@ fn read_bounded(source: impl Read, largest_bytes: u64, when: &'static str) -> Re
     }
     Ok(bytes)
 }
-

@@ -66,7 +66,15 @@ impl Handle {
             // against the header, which states the true length of the data.
             unsafe {
                 fitsio_sys::ffgcvd(
-                    file, number, first_row, 1, wanted, f64::NAN, values, &mut any_null, status,
+                    file,
+                    number,
+                    first_row,
+                    1,
+                    wanted,
+                    f64::NAN,
+                    values,
+                    &mut any_null,
+                    status,
                 )
             };
         })
@@ -111,7 +119,12 @@ fn seal(header: &str, data: &[u8]) -> Result<Memfd, Box<dyn std::error::Error>> 
     let memory = MemfdOptions::default().allow_sealing(true).close_on_exec(true).create("emberline-fits")?;
     let mut file = memory.as_file();
     if header.starts_with("XTENSION") {
-        let primary = ["SIMPLE  =                    T", "BITPIX  =                    8", "NAXIS   =                    0", "END"];
+        let primary = [
+            "SIMPLE  =                    T",
+            "BITPIX  =                    8",
+            "NAXIS   =                    0",
+            "END",
+        ];
         let cards: String = primary.iter().map(|card| format!("{card:80}")).collect();
         file.write_all(format!("{cards:BLOCK_BYTES$}").as_bytes())?;
     }

@@ -132,20 +132,15 @@ impl FitsFile {
         let Kind::Image(image) = &hdu.kind else {
             return Err(bad_data(hdu, "found no image, need one".to_owned()));
         };
-        let last = first.checked_add(count).ok_or_else(|| bad_data(hdu, "pixel index overflows".to_owned()))?;
+        let last =
+            first.checked_add(count).ok_or_else(|| bad_data(hdu, "pixel index overflows".to_owned()))?;
         if last > image.pixels() {
             return Err(bad_data(hdu, format!("found {} pixels, need {last}", image.pixels())));
         }
         self.decode(hdu, count, |handle| handle.pixels(first, count))
     }
 
-    fn column_values(
-        &self,
-        hdu: &Hdu,
-        column: &Column,
-        row: u64,
-        rows: u64,
-    ) -> Result<Vec<f64>, FileFault> {
+    fn column_values(&self, hdu: &Hdu, column: &Column, row: u64, rows: u64) -> Result<Vec<f64>, FileFault> {
         let name = &column.name;
         let Some(number) = column.number.filter(|_| column.is_numeric()) else {
             return Err(bad_data(hdu, format!("column {name} does not hold numbers")));

@@ -302,7 +302,9 @@ fn shape(header: &Header, hdu: usize) -> Result<(Kind, u64), FileFault> {
     for axis in 1..=naxis {
         let key = format!("NAXIS{axis}");
         let length = need(&key)?;
-        axes.push(u64::try_from(length).map_err(|_| fault(format!("found {key} = {length}, need 0 or more")))?);
+        axes.push(
+            u64::try_from(length).map_err(|_| fault(format!("found {key} = {length}, need 0 or more")))?,
+        );
     }
     let count = |key: &str, default: i64| {
         let value = header.integer(key).unwrap_or(default);

@@ -61,7 +61,8 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
 
 /// The history of these files has a sentence about the medium.
 fn medium(primary: &Header) -> Option<Stated<Medium>> {
-    let line = primary.comments().iter().find(|line| line.to_ascii_lowercase().contains("all wavelengths are"))?;
+    let line =
+        primary.comments().iter().find(|line| line.to_ascii_lowercase().contains("all wavelengths are"))?;
     let words = line.to_ascii_lowercase();
     let medium = match (words.contains("vacuum"), words.contains(" air")) {
         (true, false) => Medium::Vacuum,

@@ -59,7 +59,9 @@ fn identify(fits: &FitsFile) -> bool {
     flux_hdu(fits).is_some_and(|hdu| {
         let has_axis = hdu.header.real("CRVAL1").is_some() && step(&hdu.header).is_some();
         let is_sky = hdu.header.text("CTYPE1").is_some_and(|words| {
-            ["RA--", "DEC-", "GLON", "GLAT", "ELON", "ELAT"].iter().any(|sky| words.to_ascii_uppercase().starts_with(sky))
+            ["RA--", "DEC-", "GLON", "GLAT", "ELON", "ELAT"]
+                .iter()
+                .any(|sky| words.to_ascii_uppercase().starts_with(sky))
         });
         has_axis && !is_sky && hdu.image().is_some_and(|image| image.axes.len() <= 3)
     })
@@ -105,7 +107,8 @@ pub fn read_lines(
     let bands = Bands::of(&hdu.header, image).map_err(|detail| super::broken(layout, detail))?;
     let primary = &fits.hdus()[0].header;
     let headers = [&hdu.header, primary];
-    let error_hdu = ERROR_NAMES.iter().find_map(|(name, kind)| same_shape(fits, hdu, name).map(|hdu| (hdu, *kind)));
+    let error_hdu =
+        ERROR_NAMES.iter().find_map(|(name, kind)| same_shape(fits, hdu, name).map(|hdu| (hdu, *kind)));
     let mask_hdu = MASK_NAMES.iter().find_map(|name| same_shape(fits, hdu, name));
     let mut raws = Vec::new();
     for line in 0..image.lines() {
@@ -153,7 +156,9 @@ pub fn read_lines(
 
 fn same_shape<'a>(fits: &'a FitsFile, hdu: &Hdu, name: &str) -> Option<&'a Hdu> {
     let axes = &hdu.image()?.axes;
-    fits.hdus().iter().find(|other| other.is_named(name) && other.image().is_some_and(|image| image.axes == *axes))
+    fits.hdus()
+        .iter()
+        .find(|other| other.is_named(name) && other.image().is_some_and(|image| image.axes == *axes))
 }
 
 /// Which bands of the third axis hold what.
@@ -214,8 +219,7 @@ impl Axis {
             Some("WAVE") => Some(Stated::new(Medium::Vacuum, format!("CTYPE1 = '{kind}'"))),
             _ => None,
         };
-        let mut axis =
-            Axis { first, reference_pixel, step, form, unit: UnitWords::Absent, medium, flags };
+        let mut axis = Axis { first, reference_pixel, step, form, unit: UnitWords::Absent, medium, flags };
         axis.unit = axis.find_unit(header, &kind);
         Some(axis)
     }
@@ -273,7 +277,10 @@ impl Axis {
 /// Without CUNIT1, the standard's own axis types are in metres; some pipelines put a unit in CTYPE1.
 fn unit_of_kind(kind: &str) -> UnitWords<WaveUnit> {
     if kind.starts_with("WAVE-") || kind == "WAVE" || kind.starts_with("AWAV") {
-        return UnitWords::Known(Stated::new(WaveUnit::M, format!("CTYPE1 = '{kind}' without CUNIT1 (standard: m)")));
+        return UnitWords::Known(Stated::new(
+            WaveUnit::M,
+            format!("CTYPE1 = '{kind}' without CUNIT1 (standard: m)"),
+        ));
     }
     let word = kind.trim_start_matches("WAVELENGTH").trim_start_matches("LAMBDA").trim();
     match WaveUnit::parse(word) {

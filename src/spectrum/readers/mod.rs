@@ -57,8 +57,7 @@ fn describe_hdu(hdu: &Hdu) -> String {
             format!("an image of {}", axes.join(" x "))
         }
         Kind::Table(table) => {
-            let names: Vec<&str> =
-                table.columns.iter().take(8).map(|column| column.name.as_str()).collect();
+            let names: Vec<&str> = table.columns.iter().take(8).map(|column| column.name.as_str()).collect();
             format!("a table of {} rows ({})", table.rows, names.join(" "))
         }
         Kind::Unsupported(reason) => reason.clone(),
@@ -112,8 +111,7 @@ fn stated_frame(headers: &[&Header]) -> Option<Stated<VelocityFrame>> {
             };
             return Some(Stated::new(frame, format!("SPECSYS = '{words}'")));
         }
-        (header.logical("HELIO") == Some(true))
-            .then(|| Stated::new(VelocityFrame::Heliocentric, "HELIO = T"))
+        (header.logical("HELIO") == Some(true)).then(|| Stated::new(VelocityFrame::Heliocentric, "HELIO = T"))
     })
 }
 

@@ -110,6 +110,9 @@ mod tests {
     fn impossible_values_are_not_reported() {
         let odd = header(&["RA      =  1e9", "DEC     = 'n/a'", "AIRMASS =  0.0", "MJD     = 2965661"]);
         let record = from_headers(&[&odd]);
-        assert_eq!((record.ra_deg, record.dec_deg, record.airmass, record.observed_at), (None, None, None, None));
+        assert_eq!(
+            (record.ra_deg, record.dec_deg, record.airmass, record.observed_at),
+            (None, None, None, None)
+        );
     }
 }

@@ -20,13 +20,38 @@ pub const LAYOUT: Layout = Layout {
 };
 
 const WAVE_NAMES: &[&str] = &[
-    "wavelength", "wave", "lambda", "lam", "wl", "loglam", "wave_vac", "wave_air", "lambda_vac", "lambda_air",
-    "wavelength_vac", "wavelength_air", "awav",
+    "wavelength",
+    "wave",
+    "lambda",
+    "lam",
+    "wl",
+    "loglam",
+    "wave_vac",
+    "wave_air",
+    "lambda_vac",
+    "lambda_air",
+    "wavelength_vac",
+    "wavelength_air",
+    "awav",
 ];
 const FLUX_NAMES: &[&str] = &["flux", "flam", "f_lambda", "flux_lambda", "spec", "spectrum", "counts"];
 const SIGMA_NAMES: &[&str] = &[
-    "err", "error", "sigma", "unc", "uncertainty", "stdev", "std", "noise", "flux_err", "flux_error", "err_flux",
-    "error_flux", "e_flux", "flux_unc", "flux_sigma", "fluxerr",
+    "err",
+    "error",
+    "sigma",
+    "unc",
+    "uncertainty",
+    "stdev",
+    "std",
+    "noise",
+    "flux_err",
+    "flux_error",
+    "err_flux",
+    "error_flux",
+    "e_flux",
+    "flux_unc",
+    "flux_sigma",
+    "fluxerr",
 ];
 const VARIANCE_NAMES: &[&str] = &["var", "variance", "flux_var"];
 const IVAR_NAMES: &[&str] = &["ivar", "invvar", "inverse_variance", "flux_ivar"];
@@ -103,7 +128,10 @@ fn read_one(
     };
     let (wave_place, wave_words) = super::column_unit(hdu, &columns.wave.name);
     let wave_unit = if is_log && wave_words.is_none_or(|words| WaveUnit::parse(words).is_none()) {
-        UnitWords::Known(Stated::new(WaveUnit::Angstrom, format!("column {} holds log10 of angstroms", columns.wave.name)))
+        UnitWords::Known(Stated::new(
+            WaveUnit::Angstrom,
+            format!("column {} holds log10 of angstroms", columns.wave.name),
+        ))
     } else {
         UnitWords::of_wavelength(&wave_place, wave_words)
     };
