@@ -91,6 +91,9 @@ codes! {
         "write the file with a standard library";
     FILE_TRUNCATED = "file.truncated", Reject,
         "the file ends before the data that its headers declare", "copy the file again";
+    EXTENSIONS_MISSING = "file.extensions-missing", Note,
+        "the first header announces more extensions than the file has",
+        "copy the file again, unless the keyword NEXTEND is left over from the file's origin";
     FILE_BAD_DATA = "file.bad-data", Reject,
         "the FITS library could not read the data of an extension", "write the file with a standard library";
 
@@ -130,6 +133,8 @@ codes! {
         "the file has no errors; they were made from assume_snr", "do not read absolute values of chi-square";
     ARMS_JOINED = "spectrum.arms-joined", Note,
         "several arms or orders of one object were joined, each up to the middle of their overlap", "none needed";
+    FIBRE_WARNING = "spectrum.fibre-warning", Review,
+        "the survey raised a warning for this fibre", "look the status up in the survey's documentation";
     HEADER_CONTRADICTS_ITSELF = "spectrum.header-contradicts-itself", Note,
         "two header entries about the same thing differ; the detail says which was used",
         "check the recorded decision";

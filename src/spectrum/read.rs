@@ -7,8 +7,8 @@ use super::fits::{FileFault, FitsFile};
 use super::observation::{ObjectRecord, Observation, Refusal, SourceRecord};
 use super::readers;
 use super::settings::ReadSettings;
-use super::settle::settle;
-use crate::codes::{self, Code, Disposition};
+use super::settle::{RawSpectrum, settle};
+use crate::codes::{self, Code, Disposition, Flag};
 
 /// Reads every object of a file. Never empty: a file that cannot be read at all is one refusal.
 pub fn read_file(path: &Path, settings: &ReadSettings) -> Vec<Result<Observation, Box<Refusal>>> {
@@ -35,9 +35,16 @@ pub fn read_fits(
     mut source: SourceRecord,
     settings: &ReadSettings,
 ) -> Result<Outcomes, (SourceRecord, ReadFault)> {
+    let missing = fits.missing_extensions();
     let Some(layout) = readers::recognise(fits) else {
-        let found = readers::describe(fits);
-        return Err((source, ReadFault::LayoutUnknown { found }));
+        let fault = if missing > 0 {
+            let found = fits.hdus().len() as u64 - 1;
+            FileFault::Truncated { hdu: 0, what: "announced extensions", found, needed: found + missing }
+                .into()
+        } else {
+            ReadFault::LayoutUnknown { found: readers::describe(fits) }
+        };
+        return Err((source, fault));
     };
     source.layout = Some(layout.name.to_owned());
     let mut raws = match (layout.read)(fits) {
@@ -56,7 +63,10 @@ pub fn read_fits(
         let detail = "found no object in it, need one".to_owned();
         return Err((source, ReadFault::LayoutBroken { layout: layout.name, detail }));
     }
-    let settle = |raw| {
+    let settle = |mut raw: RawSpectrum| {
+        if missing > 0 {
+            raw.flags.push(Flag::new(&codes::EXTENSIONS_MISSING, format!("{missing} missing")));
+        }
         settle(raw, source.clone(), settings)
             .map_err(|(object, source, fault)| Box::new(Refusal { object, source, fault }))
     };

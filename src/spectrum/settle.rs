@@ -34,6 +34,11 @@ pub struct Stated<T> {
 }
 
 impl<T> Stated<T> {
+    /// Who said so, for the record: the file's own words, or the rule of its layout.
+    fn origin(&self) -> String {
+        if self.by.starts_with("layout") { self.by.clone() } else { format!("file: {}", self.by) }
+    }
+
     /// States a value.
     pub fn new(value: T, by: impl Into<String>) -> Self {
         Stated { value, by: by.into() }
@@ -254,10 +259,14 @@ fn settle_one<T: PartialEq + std::fmt::Debug>(
 ) -> Option<Stated<T>> {
     match (stated, setting) {
         (None, None) => None,
-        (Some(stated), None) => Some(Stated::new(stated.value, format!("file: {}", stated.by))),
+        (Some(stated), None) => {
+            let by = stated.origin();
+            Some(Stated::new(stated.value, by))
+        }
         (None, Some(value)) => Some(Stated::new(value, format!("configuration: {key}"))),
         (Some(stated), Some(value)) if stated.value == value => {
-            Some(Stated::new(value, format!("file: {}", stated.by)))
+            let by = stated.origin();
+            Some(Stated::new(value, by))
         }
         (Some(stated), Some(value)) => {
             let used = if settings.overrule_file { "configuration" } else { "file" };
@@ -269,7 +278,8 @@ fn settle_one<T: PartialEq + std::fmt::Debug>(
             Some(if settings.overrule_file {
                 Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))
             } else {
-                Stated::new(stated.value, format!("file: {}", stated.by))
+                let by = stated.origin();
+                Stated::new(stated.value, by)
             })
         }
     }
@@ -388,7 +398,10 @@ fn resolution(
             flags.push(Flag::new(&codes::SETTING_DIFFERS_FROM_FILE, detail));
             Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))
         }
-        (Some(stated), _) => Stated::new(stated.value, format!("file: {}", stated.by)),
+        (Some(stated), _) => {
+            let by = stated.origin();
+            Stated::new(stated.value, by)
+        }
         (None, Some(value)) => Stated::new(value, format!("configuration: {key}")),
         (None, None) => return Err(ReadFault::ResolutionUnknown),
     };

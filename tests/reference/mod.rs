@@ -1,1 +1,4 @@
+//! Truth from outside: each number with its source beside it.
 
+mod constants;
+mod wavelength;

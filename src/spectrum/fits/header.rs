@@ -86,6 +86,14 @@ impl Header {
         }
     }
 
+    /// Text with its leading blanks and also where empty (trailing blanks are gone).
+    pub fn text_as_written(&self, key: &str) -> Option<&str> {
+        match self.value(key)? {
+            Value::Text(text) => Some(text),
+            Value::Integer(_) | Value::Real(_) | Value::Logical(_) | Value::Other(_) => None,
+        }
+    }
+
     /// A finite number, also one written as text.
     pub fn real(&self, key: &str) -> Option<f64> {
         let number = match self.value(key)? {

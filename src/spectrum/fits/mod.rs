@@ -17,6 +17,8 @@ pub use header::{Header, Value};
 pub use walk::{Column, Hdu, Image, Kind, Table};
 
 use std::cell::RefCell;
+use std::collections::BTreeMap;
+use std::collections::btree_map::Entry;
 use std::io;
 use std::path::Path;
 
@@ -32,8 +34,8 @@ pub struct FitsFile {
     hdus: Vec<Hdu>,
     bytes: Vec<u8>,
     blake3: String,
-    /// The extension that the C library has open.
-    open: RefCell<Option<(usize, Handle)>>,
+    /// The units that the C library has open, by index: readers go back and forth between them.
+    open: RefCell<BTreeMap<usize, Handle>>,
 }
 
 impl FitsFile {
@@ -54,12 +56,19 @@ impl FitsFile {
         let blake3 = blake3::hash(&packed).to_hex().to_string();
         let bytes = bytes::unpack(packed, largest_bytes)?;
         let hdus = walk::walk(&bytes)?;
-        Ok(FitsFile { hdus, bytes, blake3, open: RefCell::new(None) })
+        Ok(FitsFile { hdus, bytes, blake3, open: RefCell::default() })
     }
 
     /// All header-data units, the primary first.
     pub fn hdus(&self) -> &[Hdu] {
         &self.hdus
+    }
+
+    /// How many extensions the first header announces beyond those that are there: the file may have
+    /// been cut between two of them, or the keyword is left over from its origin.
+    pub fn missing_extensions(&self) -> u64 {
+        let announced = self.hdus[0].header.integer("NEXTEND").unwrap_or(0);
+        u64::try_from(announced).unwrap_or(0).saturating_sub(self.hdus.len() as u64 - 1)
     }
 
     /// BLAKE3 of the bytes on disk (before unpacking), hexadecimal.
@@ -72,7 +81,8 @@ impl FitsFile {
         self.hdus.iter().find(|hdu| hdu.is_named(name))
     }
 
-    /// All values of a numeric column, row after row; scaled, with undefined values as NaN.
+    /// All values of a column of numbers, row after row; scaled, with undefined values as NaN. Truth
+    /// values are 1 and 0.
     ///
     /// # Errors
     /// [`FileFault::BadData`], also when there is no such column.
@@ -142,13 +152,17 @@ impl FitsFile {
 
     fn column_values(&self, hdu: &Hdu, column: &Column, row: u64, rows: u64) -> Result<Vec<f64>, FileFault> {
         let name = &column.name;
-        let Some(number) = column.number.filter(|_| column.is_numeric()) else {
+        let Some(number) = column.number.filter(|_| column.is_numeric() || column.is_logical()) else {
             return Err(bad_data(hdu, format!("column {name} does not hold numbers")));
         };
         let count = rows
             .checked_mul(column.repeat)
             .ok_or_else(|| bad_data(hdu, format!("column {name} is too large")))?;
-        self.decode(hdu, count, |handle| handle.column(number, row, count))
+        let mut values = self.decode(hdu, count, |handle| handle.column(number, row, count))?;
+        if column.is_logical() {
+            values.iter_mut().for_each(|value| *value = truth(*value));
+        }
+        Ok(values)
     }
 
     fn cell_bytes(&self, hdu: &Hdu, table: &Table, column: &Column, row: u64) -> Result<&[u8], FileFault> {
@@ -171,12 +185,12 @@ impl FitsFile {
             return Err(bad_data(hdu, format!("found {count} values, need at most {MOST_VALUES}")));
         }
         let mut open = self.open.borrow_mut();
-        let handle = match &mut *open {
-            Some((index, handle)) if *index == hdu.index => handle,
-            other => {
+        let handle = match open.entry(hdu.index) {
+            Entry::Occupied(entry) => entry.into_mut(),
+            Entry::Vacant(entry) => {
                 let data = self.bytes.get(hdu.plain_data()).unwrap_or_default();
                 let handle = Handle::open(&hdu.plain_header(), data).map_err(|why| bad_data(hdu, why))?;
-                &mut other.insert((hdu.index, handle)).1
+                entry.insert(handle)
             }
         };
         read(handle).map_err(|why| bad_data(hdu, why))
@@ -190,6 +204,15 @@ fn find_column<'a>(hdu: &'a Hdu, name: &str) -> Result<(&'a Table, &'a Column), 
     let column =
         table.column(name).ok_or_else(|| bad_data(hdu, format!("found no column {name}, need one")))?;
     Ok((table, column))
+}
+
+/// A logical cell holds the letter T or F, or zero where undefined.
+fn truth(letter: f64) -> f64 {
+    match letter as u8 {
+        b'T' => 1.0,
+        b'F' => 0.0,
+        _ => f64::NAN,
+    }
 }
 
 fn bad_data(hdu: &Hdu, detail: String) -> FileFault {
@@ -240,15 +263,15 @@ pub enum FileFault {
         detail: String,
     },
     /// The file ends too early.
-    #[error("cannot use HDU {hdu}: found {found} bytes of {what}, need {needed} (copy the file again)")]
+    #[error("cannot use HDU {hdu}: found {found} of {needed} {what} (copy the file again)")]
     Truncated {
         /// From 0.
         hdu: usize,
-        /// Header or data.
+        /// Of what.
         what: &'static str,
-        /// Bytes that are there.
+        /// How much is there.
         found: u64,
-        /// Bytes that are declared.
+        /// How much is declared.
         needed: u64,
     },
     /// Data that are not what the reader needs or that the C library refuses.

@@ -13,6 +13,9 @@ const MOST_AXES: i64 = 8;
 /// Most columns of a table, as the standard says.
 const MOST_COLUMNS: i64 = 999;
 
+/// First bytes of every extension.
+const EXTENSION_START: &[u8] = b"XTENSION";
+
 /// One header-data unit.
 #[derive(Debug, Clone)]
 pub struct Hdu {
@@ -113,6 +116,11 @@ impl Column {
     /// Whether cells hold numbers that can be read as floats.
     pub fn is_numeric(&self) -> bool {
         matches!(self.letter, 'B' | 'I' | 'J' | 'K' | 'E' | 'D')
+    }
+
+    /// Whether cells hold truth values.
+    pub fn is_logical(&self) -> bool {
+        self.letter == 'L'
     }
 }
 
@@ -240,7 +248,9 @@ pub fn walk(bytes: &[u8]) -> Result<Vec<Hdu>, FileFault> {
     while at < bytes.len() {
         let index = hdus.len();
         // After the last unit, anything that does not start an extension is padding or a special record.
-        if index > 0 && !bytes[at..].starts_with(b"XTENSION") {
+        // The first bytes of the word alone are an extension cut off right there.
+        let start = &bytes[at..bytes.len().min(at + EXTENSION_START.len())];
+        if index > 0 && !EXTENSION_START.starts_with(start) {
             break;
         }
         let header_bytes = header_length(&bytes[at..], index)?;
@@ -249,7 +259,12 @@ pub fn walk(bytes: &[u8]) -> Result<Vec<Hdu>, FileFault> {
         let (kind, length) = shape(&header, index)?;
         let available = (bytes.len().saturating_sub(start)) as u64;
         if length > available {
-            return Err(FileFault::Truncated { hdu: index, what: "data", found: available, needed: length });
+            return Err(FileFault::Truncated {
+                hdu: index,
+                what: "bytes of data",
+                found: available,
+                needed: length,
+            });
         }
         // Fits in memory, as it is not longer than the bytes that are there.
         let length = length as usize;
@@ -257,19 +272,7 @@ pub fn walk(bytes: &[u8]) -> Result<Vec<Hdu>, FileFault> {
         hdus.push(Hdu { index, header, kind, data: start..start + length });
         at = start + length.next_multiple_of(BLOCK_BYTES);
     }
-    check_announced_extensions(&hdus)?;
     Ok(hdus)
-}
-
-/// A file cut between two units looks whole, unless its first header says how many there should be.
-fn check_announced_extensions(hdus: &[Hdu]) -> Result<(), FileFault> {
-    let announced = hdus.first().and_then(|primary| primary.header.integer("NEXTEND")).unwrap_or(0);
-    let found = hdus.len() as i64 - 1;
-    if announced > found {
-        let (found, needed) = (found as u64, announced as u64);
-        return Err(FileFault::Truncated { hdu: hdus.len(), what: "announced extensions", found, needed });
-    }
-    Ok(())
 }
 
 /// Bytes up to and with the END card.
@@ -279,7 +282,7 @@ fn header_length(bytes: &[u8], hdu: usize) -> Result<usize, FileFault> {
         Some(cards_before) => Ok((cards_before + 1) * CARD_BYTES),
         None => {
             let found = bytes.len() as u64;
-            Err(FileFault::Truncated { hdu, what: "header without END", found, needed: found + 1 })
+            Err(FileFault::Truncated { hdu, what: "bytes of header before END", found, needed: found + 1 })
         }
     }
 }

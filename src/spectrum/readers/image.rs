@@ -17,7 +17,7 @@ use crate::codes::{self, Flag};
 use crate::spectrum::fits::{FitsFile, Hdu, Header, Image};
 use crate::spectrum::read::ReadFault;
 use crate::spectrum::settle::{RawSpectrum, Stated, UnitWords};
-use crate::spectrum::{ErrorKind, Medium, WaveUnit};
+use crate::spectrum::{ErrorKind, Medium, VelocityFrame, WaveUnit};
 
 /// The layout.
 pub const LAYOUT: Layout = Layout {
@@ -28,6 +28,8 @@ pub const LAYOUT: Layout = Layout {
     read,
 };
 
+/// Most lines of an image: the fibres of the largest multi-object spectrographs; a raw frame has more.
+const MOST_LINES: u64 = 1000;
 /// Extensions that may hold the fluxes when the primary unit is empty.
 const FLUX_NAMES: &[&str] = &["FLUX", "SCI", "DATA", "SPECTRUM"];
 /// Extensions that may hold the errors.
@@ -104,6 +106,13 @@ pub fn read_lines(
     axis: impl Fn(usize, usize) -> Result<LineAxis, ReadFault>,
 ) -> Result<Vec<RawSpectrum>, ReadFault> {
     let image = hdu.image().ok_or_else(|| super::broken(layout, "found no image"))?;
+    if image.lines() > MOST_LINES {
+        let detail = format!(
+            "found {} lines, need at most {MOST_LINES} (not reduced to one dimension?)",
+            image.lines()
+        );
+        return Err(super::broken(layout, detail));
+    }
     let bands = Bands::of(&hdu.header, image).map_err(|detail| super::broken(layout, detail))?;
     let primary = &fits.hdus()[0].header;
     let headers = [&hdu.header, primary];
@@ -145,13 +154,37 @@ pub fn read_lines(
             wave_unit,
             flux_unit: UnitWords::of_flux("BUNIT", headers.iter().find_map(|header| header.text("BUNIT"))),
             error_kind,
-            medium: medium.or_else(|| super::stated_medium(&headers)),
+            medium: medium.or_else(|| super::stated_medium(&headers)).or_else(|| eso_medium(primary)),
             resolution: super::stated_power(&headers),
-            velocity_frame: super::stated_frame(&headers),
+            velocity_frame: super::stated_frame(&headers).or_else(|| eso_frame(primary)),
             flags,
         });
     }
     Ok(raws)
+}
+
+/// Pipeline products of these ESO instruments are in air.
+const ESO_AIR: &[&str] = &["UVES", "FORS1", "FORS2", "HARPS"];
+
+fn eso_medium(primary: &Header) -> Option<Stated<Medium>> {
+    let instrument = eso_instrument(primary)?;
+    ESO_AIR.contains(&instrument).then(|| Stated::new(Medium::Air, format!("pipeline of {instrument}")))
+}
+
+/// HARPS spectra are corrected for the Earth's motion; UVES and FORS pipeline products are not.
+fn eso_frame(primary: &Header) -> Option<Stated<VelocityFrame>> {
+    let instrument = eso_instrument(primary)?;
+    if primary.has("ESO DRS BERV") {
+        return Some(Stated::new(VelocityFrame::Barycentric, "ESO DRS BERV is applied by the pipeline"));
+    }
+    ["UVES", "FORS1", "FORS2"]
+        .contains(&instrument)
+        .then(|| Stated::new(VelocityFrame::Topocentric, format!("pipeline of {instrument}")))
+}
+
+fn eso_instrument(primary: &Header) -> Option<&str> {
+    primary.text("ORIGIN").filter(|origin| origin.starts_with("ESO"))?;
+    primary.text("INSTRUME")
 }
 
 fn same_shape<'a>(fits: &'a FitsFile, hdu: &Hdu, name: &str) -> Option<&'a Hdu> {

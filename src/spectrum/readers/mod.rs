@@ -6,9 +6,17 @@
 //! general ones, and primary images before tables, because an SDSS image file also carries line lists
 //! that look like spectra in tables.
 
+mod arms;
 mod calspec;
+mod desi;
+mod eso_sdp;
+mod hst_x1d;
 mod image;
+mod iraf_multispec;
+mod lamost;
 mod object;
+mod sdss_image;
+mod sdss_table;
 mod table;
 
 use super::axis::{Medium, VelocityFrame};
@@ -32,7 +40,18 @@ pub struct Layout {
 }
 
 /// All layouts in the order in which they are tried.
-pub static LAYOUTS: &[Layout] = &[calspec::LAYOUT, image::LAYOUT, table::LAYOUT];
+pub static LAYOUTS: &[Layout] = &[
+    eso_sdp::LAYOUT,
+    desi::LAYOUT,
+    sdss_table::LAYOUT,
+    sdss_image::LAYOUT,
+    lamost::LAYOUT,
+    hst_x1d::LAYOUT,
+    calspec::LAYOUT,
+    iraf_multispec::LAYOUT,
+    image::LAYOUT,
+    table::LAYOUT,
+];
 
 /// The layout of a file, if it is a known one.
 pub fn recognise(fits: &FitsFile) -> Option<&'static Layout> {

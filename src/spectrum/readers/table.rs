@@ -118,7 +118,9 @@ fn read_one(
     let mask = named(table, GOOD_NAMES)
         .map(|column| (column, true))
         .or_else(|| named(table, BAD_NAMES).map(|column| (column, false)))
-        .filter(|(column, _)| column.is_numeric() && column.repeat == columns.flux.repeat);
+        .filter(|(column, _)| {
+            (column.is_numeric() || column.is_logical()) && column.repeat == columns.flux.repeat
+        });
     let is_good = match mask {
         Some((column, good_is_one)) => {
             let good_value = if good_is_one { 1.0 } else { 0.0 };
