@@ -158,3 +158,20 @@ fn the_main_function_stays_small() {
     let main = &files.iter().find(|(path, _)| path == Path::new("main.rs")).unwrap().1;
     assert!(main.lines().count() < 60);
 }
+
+#[test]
+fn every_data_file_has_a_source() {
+    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data");
+    let sources = fs::read_to_string(folder.join("SOURCES.md")).unwrap();
+    let mut bytes = 0;
+    for part in ["calspec", "models", "layouts"] {
+        for entry in fs::read_dir(folder.join(part)).unwrap() {
+            let path = entry.unwrap().path();
+            let name = path.file_name().unwrap().to_string_lossy().into_owned();
+            let stem = name.trim_end_matches(".fits.gz");
+            assert!(sources.contains(stem), "{part}/{name} is not in SOURCES.md");
+            bytes += fs::metadata(&path).unwrap().len();
+        }
+    }
+    assert!(bytes < 6_000_000, "test data take {bytes} bytes");
+}

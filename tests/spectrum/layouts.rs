@@ -207,3 +207,76 @@ fn compare(spectrum: &Spectrum, expected: &Expected, what: &str) {
         }
     }
 }
+
+/// Files of real surveys that may not be committed: `EMBERLINE_SAMPLES=FOLDER cargo test -- --ignored real_samples`.
+/// Each must be recognised as what it is, and read, or be refused for the right reason.
+#[test]
+#[ignore = "seconds, needs a folder of survey files; run: EMBERLINE_SAMPLES=FOLDER cargo test -- --ignored real_samples"]
+fn real_samples_read_or_are_refused_for_the_right_reason() {
+    let folder =
+        std::env::var("EMBERLINE_SAMPLES").expect("EMBERLINE_SAMPLES names a folder of survey files");
+    let layouts = [
+        ("BINTABLE2col", "table"),
+        ("BOSSspeclite", "sdss-spec"),
+        ("DESI__coadd", "desi"),
+        ("ESO-SDP", "eso-sdp"),
+        ("ESO-UVESpipe", "image"),
+        ("HST-STIS", "hst-x1d"),
+        ("IRAF-4band", "image"),
+        ("IRAF-badcard", "image"),
+        ("IRAF-linear", "image"),
+        ("IRAF-loglinear", "image"),
+        ("IRAF-multispec", "iraf-multispec"),
+        ("LAMOST", "lamost"),
+        ("SDSSspSpec", "sdss-spspec"),
+        ("SDSSspecfull", "sdss-spec"),
+        ("SDSSspeclite", "sdss-spec"),
+    ];
+    let silent = ReadSettings::default();
+    let told = ReadSettings {
+        medium: Some(Medium::Air),
+        resolution_fwhm_aa: Some(3.0),
+        assume_snr: Some(30.0),
+        ..ReadSettings::default()
+    };
+    let mut counts: BTreeMap<&str, usize> = BTreeMap::new();
+    for entry in std::fs::read_dir(folder).unwrap() {
+        let path = entry.unwrap().path();
+        let name = path.file_name().unwrap().to_string_lossy().into_owned();
+        let Some((start, layout)) = layouts.iter().find(|(start, _)| name.starts_with(start)) else {
+            continue;
+        };
+        let outcomes = read_file(&path, &told);
+        let read = outcomes.iter().filter(|outcome| outcome.is_ok()).count();
+        *counts.entry(start).or_default() += 1;
+        for outcome in &outcomes {
+            let found = match outcome {
+                Ok(observation) => &observation.source.layout,
+                Err(refusal) => &refusal.source.layout,
+            };
+            assert_eq!(found.as_deref(), Some(*layout), "{name}");
+        }
+        // One order of one echelle file has a dispersion that leads below zero.
+        let expected = if name.contains("legendre") { outcomes.len() - 1 } else { outcomes.len() };
+        assert_eq!(read, expected, "{name}");
+        // Without settings, what the file leaves open is refused, never assumed.
+        let states_all = ["BOSS", "DESI", "ESO-SDP", "LAMOST", "SDSSspec", "SDSSspSpec__"]
+            .iter()
+            .any(|s| name.starts_with(s));
+        for outcome in read_file(&path, &silent) {
+            match outcome {
+                Ok(_) => assert!(states_all, "{name} was read without settings"),
+                Err(refusal) => {
+                    assert!(!states_all, "{name}: {}", refusal.fault);
+                    let code = refusal.fault.code().id;
+                    let is_open = ["medium-unknown", "errors-missing", "resolution-unknown"]
+                        .iter()
+                        .any(|words| code == format!("spectrum.{words}"));
+                    assert!(is_open, "{name}: {code}");
+                }
+            }
+        }
+    }
+    println!("{counts:?}");
+    assert_eq!(counts.len(), layouts.len(), "{counts:?}");
+}
