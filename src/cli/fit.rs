@@ -15,8 +15,8 @@ use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, error_chain};
 use crate::codes::{self, Flag};
 use crate::report::{Findings, Provenance, Report, Verdict};
 use crate::spectrum::{
-    ErrorKind, FluxScale, Medium, ObjectRecord, Observation, ReadSettings, Refusal, SourceRecord,
-    VelocityFrame, WaveUnit, read_file,
+    Assumptions, ErrorKind, FluxScale, Medium, ObjectRecord, Observation, ReadSettings, Refusal,
+    SourceRecord, VelocityFrame, WaveUnit, read_file,
 };
 
 /// Files read and fitted at once before their reports are printed, so that output streams.
@@ -80,17 +80,20 @@ pub struct FitArguments {
 impl FitArguments {
     fn settings(&self) -> ReadSettings {
         ReadSettings {
-            medium: self.medium,
-            wave_unit: self.wave_unit,
-            flux_scale: self.flux_scale,
-            error_kind: self.error_kind,
-            assume_snr: self.assume_snr,
-            resolution_fwhm_aa: self.resolution_fwhm_aa,
-            resolving_power: self.resolving_power,
-            velocity_frame: self.velocity_frame,
-            overrule_file: self.overrule_file,
+            assume: Assumptions {
+                medium: self.medium,
+                wave_unit: self.wave_unit,
+                flux_scale: self.flux_scale,
+                error_kind: self.error_kind,
+                assume_snr: self.assume_snr,
+                resolution_fwhm_aa: self.resolution_fwhm_aa,
+                resolving_power: self.resolving_power,
+                velocity_frame: self.velocity_frame,
+                overrule_file: self.overrule_file,
+            },
             row: self.row,
             largest_file_mb: self.largest_file_mb,
+            ..ReadSettings::default()
         }
     }
 }

@@ -21,7 +21,7 @@ pub use axis::{Medium, VelocityFrame};
 pub use observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
 pub use read::{ReadFault, read_file, read_fits};
 pub use resolution::{FWHM_PER_SIGMA, Resolution};
-pub use settings::{ErrorKind, ReadSettings};
+pub use settings::{Assumptions, ErrorKind, ReadSettings};
 pub use units::{FluxScale, WaveUnit};
 
 use serde::{Deserialize, Serialize};

@@ -13,15 +13,16 @@ use crate::codes::{self, Code, Disposition, Flag};
 /// Reads every object of a file. Never empty: a file that cannot be read at all is one refusal.
 pub fn read_file(path: &Path, settings: &ReadSettings) -> Vec<Result<Observation, Box<Refusal>>> {
     let mut source = SourceRecord { path: path.display().to_string(), ..SourceRecord::default() };
-    let refuse = |source: &SourceRecord, fault: ReadFault| {
-        vec![Err(Box::new(Refusal { object: ObjectRecord::default(), source: source.clone(), fault }))]
-    };
     let fits = match FitsFile::read(path, settings.largest_bytes()) {
         Ok(fits) => fits,
-        Err(fault) => return refuse(&source, fault.into()),
+        Err(fault) => return vec![Err(refuse(source, fault.into()))],
     };
     source.blake3 = Some(fits.blake3().to_owned());
-    read_fits(&fits, source, settings).unwrap_or_else(|(source, fault)| refuse(&source, fault))
+    read_fits(&fits, source, settings).unwrap_or_else(|refusal| vec![Err(refusal)])
+}
+
+fn refuse(source: SourceRecord, fault: ReadFault) -> Box<Refusal> {
+    Box::new(Refusal { object: ObjectRecord::default(), source, fault })
 }
 
 type Outcomes = Vec<Result<Observation, Box<Refusal>>>;
@@ -34,7 +35,7 @@ pub fn read_fits(
     fits: &FitsFile,
     mut source: SourceRecord,
     settings: &ReadSettings,
-) -> Result<Outcomes, (SourceRecord, ReadFault)> {
+) -> Result<Outcomes, Box<Refusal>> {
     let missing = fits.missing_extensions();
     let Some(layout) = readers::recognise(fits) else {
         let fault = if missing > 0 {
@@ -44,31 +45,30 @@ pub fn read_fits(
         } else {
             ReadFault::LayoutUnknown { found: readers::describe(fits) }
         };
-        return Err((source, fault));
+        return Err(refuse(source, fault));
     };
     source.layout = Some(layout.name.to_owned());
     let mut raws = match (layout.read)(fits) {
         Ok(raws) => raws,
-        Err(fault) => return Err((source, fault)),
+        Err(fault) => return Err(refuse(source, fault)),
     };
     let found = raws.len();
     if let Some(row) = settings.row {
         // A file with one object and no row number is its own row 0.
         raws.retain(|raw| raw.row.unwrap_or(0) == row);
         if raws.is_empty() {
-            return Err((source, ReadFault::NoSuchRow { row, found }));
+            return Err(refuse(source, ReadFault::NoSuchRow { row, found }));
         }
     }
     if raws.is_empty() {
         let detail = "found no object in it, need one".to_owned();
-        return Err((source, ReadFault::LayoutBroken { layout: layout.name, detail }));
+        return Err(refuse(source, ReadFault::LayoutBroken { layout: layout.name, detail }));
     }
     let settle = |mut raw: RawSpectrum| {
         if missing > 0 {
             raw.flags.push(Flag::new(&codes::EXTENSIONS_MISSING, format!("{missing} missing")));
         }
         settle(raw, source.clone(), settings)
-            .map_err(|(object, source, fault)| Box::new(Refusal { object, source, fault }))
     };
     Ok(raws.into_iter().map(settle).collect())
 }

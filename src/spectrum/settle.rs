@@ -5,10 +5,10 @@
 //! [`Decisions`], and every departure from the file's own words is a flag.
 
 use super::axis::{Medium, VelocityFrame};
-use super::observation::{Decisions, ObjectRecord, Observation, SourceRecord};
+use super::observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
 use super::read::ReadFault;
 use super::resolution::Resolution;
-use super::settings::{ErrorKind, ReadSettings};
+use super::settings::{Assumptions, ErrorKind, ReadSettings};
 use super::units::{FluxScale, FluxUnit, WaveUnit};
 use super::{LARGEST_VALUE, Spectrum, SpectrumFault};
 use crate::codes::{self, Flag};
@@ -121,14 +121,15 @@ pub fn settle(
     raw: RawSpectrum,
     mut source: SourceRecord,
     settings: &ReadSettings,
-) -> Result<Observation, (ObjectRecord, SourceRecord, ReadFault)> {
+) -> Result<Observation, Box<Refusal>> {
     source.hdu = Some(raw.hdu);
     source.row = raw.row;
     let object = raw.object.clone();
     let mut flags = raw.flags.clone();
-    match settle_values(raw, &mut source, &mut flags, settings) {
+    let assume = settings.assumptions(object.instrument.as_deref());
+    match settle_values(raw, &mut source, &mut flags, &assume) {
         Ok(spectrum) => Ok(Observation { spectrum, object, source, flags }),
-        Err(fault) => Err((object, source, fault)),
+        Err(fault) => Err(Box::new(Refusal { object, source, fault })),
     }
 }
 
@@ -136,7 +137,7 @@ fn settle_values(
     mut raw: RawSpectrum,
     source: &mut SourceRecord,
     flags: &mut Vec<Flag>,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Result<Spectrum, ReadFault> {
     check_lengths(&raw)?;
     trim_padding(&mut raw, flags);
@@ -145,8 +146,8 @@ fn settle_values(
     }
     let mut decided = Decisions::default();
 
-    let wave_unit = wave_unit(&raw, flags, &mut decided, settings)?;
-    let medium = settle_one("medium", raw.medium.take(), settings.medium, flags, settings)
+    let wave_unit = wave_unit(&raw, flags, &mut decided, assume)?;
+    let medium = settle_one("medium", raw.medium.take(), assume.medium, flags, assume)
         .ok_or(ReadFault::MediumUnknown)?;
     source.medium = Some(medium.value);
     decided.medium = Some(medium.by);
@@ -159,17 +160,16 @@ fn settle_values(
     };
     let wave_vac_aa: Vec<f64> = raw.wave.iter().map(|wave| to_vacuum_aa(*wave)).collect();
 
-    let flux_unit = flux_unit(&raw, flags, &mut decided, settings)?;
+    let flux_unit = flux_unit(&raw, flags, &mut decided, assume)?;
     let flux: Vec<f64> = raw.flux.iter().map(|flux| scale(*flux, flux_unit.factor)).collect();
-    let sigma = sigma(&mut raw, &flux, flux_unit.factor, flags, &mut decided, settings)?;
+    let sigma = sigma(&mut raw, &flux, flux_unit.factor, flags, &mut decided, assume)?;
 
-    let resolution = resolution(raw.resolution.take(), &wave_vac_aa, flags, &mut decided, settings)?;
-    let frame =
-        settle_one("velocity_frame", raw.velocity_frame.take(), settings.velocity_frame, flags, settings)
-            .unwrap_or_else(|| {
-                flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
-                Stated::new(VelocityFrame::Unknown, "not stated")
-            });
+    let resolution = resolution(raw.resolution.take(), &wave_vac_aa, flags, &mut decided, assume)?;
+    let frame = settle_one("velocity_frame", raw.velocity_frame.take(), assume.velocity_frame, flags, assume)
+        .unwrap_or_else(|| {
+            flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
+            Stated::new(VelocityFrame::Unknown, "not stated")
+        });
     source.velocity_frame = Some(frame.value);
     decided.velocity_frame = Some(frame.by);
     source.decided_by = decided;
@@ -211,7 +211,7 @@ fn check_lengths(raw: &RawSpectrum) -> Result<(), ReadFault> {
 fn trim_padding(raw: &mut RawSpectrum, flags: &mut Vec<Flag>) {
     let is_padding = |pixel: &usize| {
         let (wave, flux) = (raw.wave[*pixel], raw.flux[*pixel]);
-        !(wave.is_finite() && wave > 0.0) && !(flux.is_finite() && flux != 0.0)
+        !(wave.is_finite() && wave > 0.0 || flux.is_finite() && flux != 0.0)
     };
     let pixels = raw.wave.len();
     let front = (0..pixels).take_while(is_padding).count();
@@ -255,7 +255,7 @@ fn settle_one<T: PartialEq + std::fmt::Debug>(
     stated: Option<Stated<T>>,
     setting: Option<T>,
     flags: &mut Vec<Flag>,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Option<Stated<T>> {
     match (stated, setting) {
         (None, None) => None,
@@ -269,13 +269,13 @@ fn settle_one<T: PartialEq + std::fmt::Debug>(
             Some(Stated::new(value, by))
         }
         (Some(stated), Some(value)) => {
-            let used = if settings.overrule_file { "configuration" } else { "file" };
+            let used = if assume.overrule_file { "configuration" } else { "file" };
             let detail = format!(
                 "{key}: the file says {:?} ({}), the configuration {value:?}; used the {used}",
                 stated.value, stated.by
             );
             flags.push(Flag::new(&codes::SETTING_DIFFERS_FROM_FILE, detail));
-            Some(if settings.overrule_file {
+            Some(if assume.overrule_file {
                 Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))
             } else {
                 let by = stated.origin();
@@ -289,14 +289,14 @@ fn wave_unit(
     raw: &RawSpectrum,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Result<WaveUnit, ReadFault> {
     let (stated, not_understood) = match &raw.wave_unit {
         UnitWords::Known(stated) => (Some(stated.clone()), None),
         UnitWords::NotUnderstood(words) => (None, Some(words.clone())),
         UnitWords::Absent => (None, None),
     };
-    if let Some(unit) = settle_one("wave_unit", stated, settings.wave_unit, flags, settings) {
+    if let Some(unit) = settle_one("wave_unit", stated, assume.wave_unit, flags, assume) {
         decided.wave_unit = Some(unit.by);
         return Ok(unit.value);
     }
@@ -317,7 +317,7 @@ fn flux_unit(
     raw: &RawSpectrum,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Result<FluxUnit, ReadFault> {
     let factor = match &raw.flux_unit {
         UnitWords::Known(stated) => stated.value.factor,
@@ -327,7 +327,7 @@ fn flux_unit(
         UnitWords::Known(stated) => Some(Stated::new(stated.value.scale, stated.by.clone())),
         UnitWords::NotUnderstood(_) | UnitWords::Absent => None,
     };
-    let scale = match settle_one("flux_scale", stated, settings.flux_scale, flags, settings) {
+    let scale = match settle_one("flux_scale", stated, assume.flux_scale, flags, assume) {
         Some(scale) => scale,
         None => match &raw.flux_unit {
             UnitWords::NotUnderstood(found) => {
@@ -354,17 +354,17 @@ fn sigma(
     factor: f64,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Result<Vec<f64>, ReadFault> {
     let Some(errors) = raw.errors.take() else {
-        let snr = settings.assume_snr.ok_or(ReadFault::ErrorsMissing)?;
+        let snr = assume.assume_snr.ok_or(ReadFault::ErrorsMissing)?;
         let detail = format!("signal-to-noise ratio {snr} per pixel");
         decided.error_kind = Some(format!("configuration: assume_snr = {snr}"));
         flags.push(Flag::new(&codes::ERRORS_ASSUMED, detail));
         let smallest = SMALLEST_ASSUMED_ERROR * median(flux.iter().map(|value| value.abs()));
         return Ok(flux.iter().map(|value| value.abs().max(smallest) / snr).collect());
     };
-    let kind = settle_one("error_kind", raw.error_kind.take(), settings.error_kind, flags, settings)
+    let kind = settle_one("error_kind", raw.error_kind.take(), assume.error_kind, flags, assume)
         .ok_or(ReadFault::ErrorKindUnknown)?;
     decided.error_kind = Some(kind.by);
     // Zero, negative and fill values come out as NaN or zero, which Spectrum::new counts as bad.
@@ -382,10 +382,10 @@ fn resolution(
     wave_vac_aa: &[f64],
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    settings: &ReadSettings,
+    assume: &Assumptions,
 ) -> Result<Resolution, ReadFault> {
     let stated = stated.and_then(|stated| believable(stated, wave_vac_aa, flags));
-    let (key, setting) = match (settings.resolution_fwhm_aa, settings.resolving_power) {
+    let (key, setting) = match (assume.resolution_fwhm_aa, assume.resolving_power) {
         (Some(fwhm_aa), _) => ("resolution_fwhm_aa", Some(Resolution::FwhmAa(fwhm_aa))),
         (None, Some(power)) => ("resolving_power", Some(Resolution::ResolvingPower(power))),
         (None, None) => ("resolution_fwhm_aa", None),
@@ -393,7 +393,7 @@ fn resolution(
     // A setting for files without a resolution is the ordinary case, so a difference from the file's
     // own widths is not worth a flag; only overruling is.
     let chosen = match (stated, setting) {
-        (Some(stated), Some(value)) if settings.overrule_file => {
+        (Some(stated), Some(value)) if assume.overrule_file => {
             let detail = format!("{key}: used the configuration instead of {}", stated.by);
             flags.push(Flag::new(&codes::SETTING_DIFFERS_FROM_FILE, detail));
             Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))

@@ -165,6 +165,7 @@ fn split_scale(word: &str) -> Option<(i32, &str)> {
 }
 
 #[cfg(test)]
+#[allow(clippy::unwrap_used)]
 mod tests {
     use super::*;
 

@@ -322,8 +322,58 @@ def table():
            t["good"], None)
 
 
+def pypeit():
+    mask = np.ones(PIXELS, "i4")
+    mask[5] = 0
+    columns = [
+        fits.Column("wave", "D", array=4000.0 + 1.5 * np.arange(PIXELS)),
+        fits.Column("wave_grid_mid", "D", array=4000.0 + 1.5 * np.arange(PIXELS)),
+        fits.Column("flux", "D", array=flux_like().astype("f8")),
+        fits.Column("ivar", "D", array=np.full(PIXELS, 100.0)),
+        fits.Column("mask", "J", array=mask),
+    ]
+    table = fits.BinTableHDU.from_columns(columns, name="SPECTRUM")
+    for key, value in [("DMODCLS", "OneSpec"), ("EXT_MODE", "OPT"), ("FLUXED", True)]:
+        table.header[key] = value
+    primary = fits.PrimaryHDU()
+    primary.header["TARGET"] = "KF J0007"
+    t = write("pypeit_coadd", [primary, table])[1].data
+    expect("pypeit_coadd", "pypeit", None, "KF J0007", t["wave"], t["flux"] * 1e-17, ivar_sigma(t["ivar"]) * 1e-17,
+           t["mask"] == 1, None)
+
+    objects = []
+    for number in range(2):
+        columns = [
+            fits.Column("OPT_WAVE", "D", array=4000.0 + 2.0 * np.arange(PIXELS)),
+            fits.Column("OPT_COUNTS", "D", array=flux_like(scale=800.0).astype("f8")),
+            fits.Column("OPT_COUNTS_IVAR", "D", array=np.full(PIXELS, 0.01)),
+            fits.Column("OPT_MASK", "L", array=mask == 1),
+            fits.Column("OPT_FWHM", "D", array=np.full(PIXELS, 4.5)),
+        ]
+        table = fits.BinTableHDU.from_columns(columns, name=f"SPAT{number:04d}-SLIT0001-DET01")
+        table.header["DMODCLS"] = "SpecObj"
+        objects.append(table)
+    hdus = write("pypeit_spec1d", [primary, *objects])
+    for number in range(2):
+        t = hdus[number + 1].data
+        expect("pypeit_spec1d", "pypeit", number, "KF J0007", t["OPT_WAVE"], t["OPT_COUNTS"],
+               ivar_sigma(t["OPT_COUNTS_IVAR"]), t["OPT_MASK"], t["OPT_FWHM"])
+
+
+def image_set():
+    primary = fits.PrimaryHDU(flux_like().astype("f8"))
+    primary.header["EXTNAME"] = "FLUX"
+    primary.header["OBJECT"] = "KF J0008"
+    primary.header["VACUUM"] = True
+    error = fits.ImageHDU(np.full(PIXELS, 0.1), name="ERROR")
+    wave = fits.ImageHDU(4000.0 + np.cumsum(np.full(PIXELS, 1.25)), name="WAVELENGTH")
+    hdus = write("image_set", [primary, error, wave])
+    expect("image_set", "image-set", None, "KF J0008", hdus[2].data, hdus[0].data, hdus[1].data,
+           np.ones(PIXELS, bool), None)
+
+
 FOLDER.mkdir(exist_ok=True)
-for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table):
+for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table, pypeit, image_set):
     make()
 with open(FOLDER / "expected.json", "w") as file:
     json.dump(expected, file, indent=None, separators=(",", ":"), allow_nan=False)

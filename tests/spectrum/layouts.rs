@@ -6,6 +6,7 @@ use emberline::physics::wavelength::air_to_vacuum_aa;
 use emberline::spectrum::readers::LAYOUTS;
 use emberline::spectrum::{Medium, ReadSettings, Resolution, Spectrum, read_file};
 
+use super::assuming;
 use crate::support::folder;
 
 /// The eleven DA standards, with values that astropy 8 reads (command in tests/data/SOURCES.md): pixels, and wavelength,
@@ -114,8 +115,10 @@ fn the_standards_read_as_astropy_reads_them() {
 
 #[test]
 fn published_models_read_in_their_own_medium() {
-    let settings =
-        ReadSettings { assume_snr: Some(1000.0), resolution_fwhm_aa: Some(1.0), ..ReadSettings::default() };
+    let settings = assuming(|assume| {
+        assume.assume_snr = Some(1000.0);
+        assume.resolution_fwhm_aa = Some(1.0);
+    });
     let mut read = 0;
     for entry in std::fs::read_dir(folder::data("models")).unwrap() {
         let path = entry.unwrap().path();
@@ -159,13 +162,11 @@ fn assert_close(found: f64, expected: f64, tolerance: f64, what: &str) {
 fn every_layout_reads_as_astropy_reads_it() {
     let text = std::fs::read_to_string(folder::data("layouts/expected.json")).unwrap();
     let files: BTreeMap<String, Vec<Expected>> = serde_json::from_str(&text).unwrap();
-    let settings = ReadSettings { resolution_fwhm_aa: Some(5.0), medium: None, ..ReadSettings::default() };
+    let settings = assuming(|assume| assume.resolution_fwhm_aa = Some(5.0));
     let mut seen: BTreeSet<String> = BTreeSet::new();
     for (file, stars) in &files {
-        let settings = match file.as_str() {
-            "iraf_multispec" => ReadSettings { medium: Some(Medium::Vacuum), ..settings.clone() },
-            _ => settings.clone(),
-        };
+        let mut settings = settings.clone();
+        settings.assume.medium = (file == "iraf_multispec").then_some(Medium::Vacuum);
         let outcomes = read_file(&folder::data(&format!("layouts/{file}.fits.gz")), &settings);
         assert_eq!(outcomes.len(), stars.len(), "{file}");
         for (outcome, expected) in outcomes.into_iter().zip(stars) {
@@ -233,12 +234,11 @@ fn real_samples_read_or_are_refused_for_the_right_reason() {
         ("SDSSspeclite", "sdss-spec"),
     ];
     let silent = ReadSettings::default();
-    let told = ReadSettings {
-        medium: Some(Medium::Air),
-        resolution_fwhm_aa: Some(3.0),
-        assume_snr: Some(30.0),
-        ..ReadSettings::default()
-    };
+    let told = assuming(|assume| {
+        assume.medium = Some(Medium::Air);
+        assume.resolution_fwhm_aa = Some(3.0);
+        assume.assume_snr = Some(30.0);
+    });
     let mut counts: BTreeMap<&str, usize> = BTreeMap::new();
     for entry in std::fs::read_dir(folder).unwrap() {
         let path = entry.unwrap().path();

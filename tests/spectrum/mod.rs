@@ -6,18 +6,24 @@ mod refusals;
 mod values;
 
 use emberline::spectrum::fits::FitsFile;
-use emberline::spectrum::{Observation, ReadSettings, SourceRecord, read_fits};
+use emberline::spectrum::{Assumptions, Observation, ReadSettings, SourceRecord, read_fits};
 
 use crate::support::fits_bytes::{Column, FitsBytes};
 
 /// Settings that supply whatever a small test file leaves open.
 pub fn lenient() -> ReadSettings {
-    ReadSettings {
-        medium: Some(emberline::spectrum::Medium::Vacuum),
-        resolution_fwhm_aa: Some(5.0),
-        assume_snr: Some(50.0),
-        ..ReadSettings::default()
-    }
+    assuming(|assume| {
+        assume.medium = Some(emberline::spectrum::Medium::Vacuum);
+        assume.resolution_fwhm_aa = Some(5.0);
+        assume.assume_snr = Some(50.0);
+    })
+}
+
+/// Settings with these assumptions and nothing else.
+pub fn assuming(change: impl FnOnce(&mut Assumptions)) -> ReadSettings {
+    let mut settings = ReadSettings::default();
+    change(&mut settings.assume);
+    settings
 }
 
 /// Reads bytes as if they were a file.
@@ -30,7 +36,7 @@ pub fn read_bytes(bytes: Vec<u8>, settings: &ReadSettings) -> Vec<Result<Observa
         Ok(outcomes) => {
             outcomes.into_iter().map(|outcome| outcome.map_err(|refusal| refusal.fault.code().id)).collect()
         }
-        Err((_, fault)) => vec![Err(fault.code().id)],
+        Err(refusal) => vec![Err(refusal.fault.code().id)],
     }
 }
 

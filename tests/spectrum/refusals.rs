@@ -6,7 +6,7 @@ use std::path::Path;
 use emberline::codes::Disposition;
 use emberline::spectrum::{ReadSettings, read_file};
 
-use super::{lenient, ramp, read_bytes, table_file};
+use super::{assuming, lenient, ramp, read_bytes, table_file};
 use crate::support::fits_bytes::{Column, FitsBytes, gzip};
 use crate::support::folder;
 
@@ -209,24 +209,22 @@ fn what_a_file_leaves_open_is_refused_with_the_key_to_set() {
     assert_eq!(code(&all, &columns("um", "FLAM", "err"), &none), "spectrum.wavelength-implausible");
 
     use emberline::spectrum::{ErrorKind, FluxScale, Medium, WaveUnit};
-    let set = |change: &dyn Fn(&mut ReadSettings)| {
-        let mut settings = ReadSettings::default();
-        change(&mut settings);
-        settings
-    };
-    assert_eq!(code(&all[1..], &good, &set(&|s| s.medium = Some(Medium::Air))), "read");
-    assert_eq!(code(&all[..1], &good, &set(&|s| s.resolution_fwhm_aa = Some(3.0))), "read");
-    assert_eq!(code(&all[..1], &good, &set(&|s| s.resolving_power = Some(1800.0))), "read");
+    assert_eq!(code(&all[1..], &good, &assuming(|s| s.medium = Some(Medium::Air))), "read");
+    assert_eq!(code(&all[..1], &good, &assuming(|s| s.resolution_fwhm_aa = Some(3.0))), "read");
+    assert_eq!(code(&all[..1], &good, &assuming(|s| s.resolving_power = Some(1800.0))), "read");
     let in_hz = columns("Hz", "FLAM", "err");
-    assert_eq!(code(&all, &in_hz, &set(&|s| s.wave_unit = Some(WaveUnit::Angstrom))), "read");
+    assert_eq!(code(&all, &in_hz, &assuming(|s| s.wave_unit = Some(WaveUnit::Angstrom))), "read");
     let in_kelvin = columns("Angstrom", "K", "err");
-    assert_eq!(code(&all, &in_kelvin, &set(&|s| s.flux_scale = Some(FluxScale::Relative))), "read");
+    assert_eq!(code(&all, &in_kelvin, &assuming(|s| s.flux_scale = Some(FluxScale::Relative))), "read");
     let no_errors = columns("Angstrom", "FLAM", "other");
-    assert_eq!(code(&all, &no_errors, &set(&|s| s.assume_snr = Some(30.0))), "read");
+    assert_eq!(code(&all, &no_errors, &assuming(|s| s.assume_snr = Some(30.0))), "read");
     let weights = columns("Angstrom", "FLAM", "weight");
-    assert_eq!(code(&all, &weights, &set(&|s| s.error_kind = Some(ErrorKind::InverseVariance))), "read");
-    assert_eq!(code(&all, &good, &set(&|s| s.row = Some(1))), "spectrum.no-such-row");
-    assert_eq!(code(&all, &good, &set(&|s| s.row = Some(0))), "read");
+    assert_eq!(code(&all, &weights, &assuming(|s| s.error_kind = Some(ErrorKind::InverseVariance))), "read");
+    assert_eq!(
+        code(&all, &good, &ReadSettings { row: Some(1), ..ReadSettings::default() }),
+        "spectrum.no-such-row"
+    );
+    assert_eq!(code(&all, &good, &ReadSettings { row: Some(0), ..ReadSettings::default() }), "read");
 }
 
 #[test]

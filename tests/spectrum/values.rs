@@ -1,10 +1,12 @@
 //! Values come out as they went in, and decisions are on record.
 
 use emberline::physics::wavelength::air_to_vacuum_aa;
-use emberline::spectrum::{BadPixels, Medium, ReadSettings, Resolution, Spectrum, VelocityFrame};
+use emberline::spectrum::{
+    Assumptions, BadPixels, Medium, ReadSettings, Resolution, Spectrum, VelocityFrame,
+};
 use proptest::prelude::*;
 
-use super::{lenient, ramp, read_bytes, table_file};
+use super::{assuming, lenient, ramp, read_bytes, table_file};
 use crate::support::fits_bytes::{Column, FitsBytes, gzip};
 
 fn one(bytes: Vec<u8>, settings: &ReadSettings) -> emberline::spectrum::Observation {
@@ -130,14 +132,38 @@ fn a_column_of_widths_that_are_fluxes_is_not_used() {
 fn a_setting_that_contradicts_the_file_is_told_and_overrules_only_when_asked() {
     let (wave, flux, sigma) = ramp();
     let bytes = table_file(&wave, &flux, &sigma).bytes();
-    let mut settings = ReadSettings { medium: Some(Medium::Air), ..ReadSettings::default() };
+    let mut settings = assuming(|assume| assume.medium = Some(Medium::Air));
     let observation = one(bytes.clone(), &settings);
     assert_eq!(observation.source.medium, Some(Medium::Vacuum));
     assert!(flag_codes(&observation).contains(&"spectrum.setting-differs-from-file"));
-    settings.overrule_file = true;
+    settings.assume.overrule_file = true;
     let observation = one(bytes, &settings);
     assert_eq!(observation.source.medium, Some(Medium::Air));
     assert!(flag_codes(&observation).contains(&"spectrum.setting-differs-from-file"));
+}
+
+#[test]
+fn an_instrument_has_its_own_assumptions() {
+    let (wave, flux, sigma) = ramp();
+    let file = |instrument: &str| {
+        let card = format!("INSTRUME= '{instrument}'");
+        let columns = [Column::f64("wave", &wave), Column::f64("flux", &flux), Column::f64("err", &sigma)];
+        FitsBytes::empty_primary(&["TELESCOP= 'Fell'", &card]).and_table(&[], &columns).bytes()
+    };
+    let mut settings = assuming(|assume| {
+        assume.medium = Some(Medium::Vacuum);
+        assume.resolving_power = Some(1000.0);
+    });
+    for (name, fwhm_aa) in [("kes", 4.0), ("KES-2", 3.0)] {
+        let assume = Assumptions { resolution_fwhm_aa: Some(fwhm_aa), ..Assumptions::default() };
+        settings.instruments.insert(name.to_owned(), assume);
+    }
+    let resolution = |instrument: &str| one(file(instrument), &settings).spectrum.resolution().clone();
+    assert_eq!(resolution("KES"), Resolution::FwhmAa(4.0));
+    assert_eq!(resolution("Kes-2 blue"), Resolution::FwhmAa(3.0));
+    assert_eq!(resolution("other"), Resolution::ResolvingPower(1000.0));
+    settings.instruments.entry("KES-2".to_owned()).or_default().resolving_power = Some(900.0);
+    assert!(settings.check().unwrap_err().contains("instruments.KES-2"));
 }
 
 #[test]
@@ -148,7 +174,7 @@ fn image_axes_follow_their_marks() {
         all.extend_from_slice(cards);
         let bytes =
             FitsBytes::image(&all, &[200], &flux).and_image(&["EXTNAME = 'ERR'"], &[200], &sigma).bytes();
-        one(bytes, &ReadSettings { medium: Some(Medium::Vacuum), ..ReadSettings::default() })
+        one(bytes, &assuming(|assume| assume.medium = Some(Medium::Vacuum)))
     };
     let close =
         |found: f64, expected: f64| assert!((found - expected).abs() < 1e-6, "{found} is not {expected}");

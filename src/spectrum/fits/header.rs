@@ -6,6 +6,8 @@
 //! # Reference
 //! FITS Standard 4.0 (2016), chapter 4; the CONTINUE and HIERARCH conventions.
 
+use std::collections::HashMap;
+
 /// Bytes of one card.
 pub const CARD_BYTES: usize = 80;
 /// Bytes of one block.
@@ -30,6 +32,8 @@ pub enum Value {
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Header {
     cards: Vec<(String, Value)>,
+    /// Where the first card of each key (in capitals) is: wide tables have a thousand cards.
+    places: HashMap<String, usize>,
     comments: Vec<String>,
 }
 
@@ -44,6 +48,11 @@ impl Header {
         header
     }
 
+    fn add(&mut self, key: &str, value: Value) {
+        self.places.entry(key.to_ascii_uppercase()).or_insert(self.cards.len());
+        self.cards.push((key.to_owned(), value));
+    }
+
     fn add_card(&mut self, card: &str) {
         let key = card.get(..8).unwrap_or(card).trim_end();
         let rest = card.get(8..).unwrap_or_default();
@@ -52,12 +61,12 @@ impl Header {
             "CONTINUE" => self.continue_text(rest),
             "HIERARCH" => {
                 if let Some((name, value)) = rest.split_once('=') {
-                    self.cards.push((name.trim().to_owned(), parse_value(value)));
+                    self.add(name.trim(), parse_value(value));
                 }
             }
             _ => {
                 if let Some(value) = rest.strip_prefix("= ").or_else(|| rest.strip_prefix('=')) {
-                    self.cards.push((key.to_owned(), parse_value(value)));
+                    self.add(key, parse_value(value));
                 }
             }
         }
@@ -75,7 +84,8 @@ impl Header {
 
     /// The first card with this key, letter case aside.
     pub fn value(&self, key: &str) -> Option<&Value> {
-        self.cards.iter().find(|(name, _)| name.eq_ignore_ascii_case(key)).map(|(_, value)| value)
+        let place = self.places.get(&key.to_ascii_uppercase())?;
+        self.cards.get(*place).map(|(_, value)| value)
     }
 
     /// Text that is not empty.
@@ -180,10 +190,8 @@ fn parse_quoted(quoted: &str) -> String {
     let mut text = String::new();
     let mut characters = quoted.chars().peekable();
     while let Some(character) = characters.next() {
-        if character == '\'' {
-            if characters.next_if_eq(&'\'').is_none() {
-                break;
-            }
+        if character == '\'' && characters.next_if_eq(&'\'').is_none() {
+            break;
         }
         text.push(character);
     }
@@ -191,6 +199,7 @@ fn parse_quoted(quoted: &str) -> String {
 }
 
 #[cfg(test)]
+#[allow(clippy::unwrap_used)]
 mod tests {
     use super::*;
 

@@ -48,13 +48,20 @@ const ERROR_NAMES: &[(&str, ErrorKind)] = &[
 /// Extensions that may hold a mask, 0 = good.
 const MASK_NAMES: &[&str] = &["MASK", "DQ", "QUAL"];
 
-/// The unit of the fluxes: the primary image, else a named extension.
+/// The unit of the fluxes: the primary image, else a named extension. A named extension of one line
+/// goes before a primary image of many, which is then the frame that it was extracted from.
 fn flux_hdu(fits: &FitsFile) -> Option<&Hdu> {
     let primary = &fits.hdus()[0];
-    if primary.image().is_some() {
-        return Some(primary);
+    let named = FLUX_NAMES.iter().find_map(|name| fits.hdu_named(name)).filter(|hdu| hdu.image().is_some());
+    match (primary.image(), named) {
+        (Some(frame), Some(named))
+            if frame.lines() > 1 && named.image().is_some_and(|image| image.lines() == 1) =>
+        {
+            Some(named)
+        }
+        (Some(_), _) => Some(primary),
+        (None, named) => named,
     }
-    FLUX_NAMES.iter().find_map(|name| fits.hdu_named(name)).filter(|hdu| hdu.image().is_some())
 }
 
 fn identify(fits: &FitsFile) -> bool {

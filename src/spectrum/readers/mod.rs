@@ -12,9 +12,11 @@ mod desi;
 mod eso_sdp;
 mod hst_x1d;
 mod image;
+mod image_set;
 mod iraf_multispec;
 mod lamost;
 mod object;
+mod pypeit;
 mod sdss_image;
 mod sdss_table;
 mod table;
@@ -47,8 +49,10 @@ pub static LAYOUTS: &[Layout] = &[
     sdss_image::LAYOUT,
     lamost::LAYOUT,
     hst_x1d::LAYOUT,
+    pypeit::LAYOUT,
     calspec::LAYOUT,
     iraf_multispec::LAYOUT,
+    image_set::LAYOUT,
     image::LAYOUT,
     table::LAYOUT,
 ];

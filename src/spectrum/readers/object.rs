@@ -86,6 +86,7 @@ fn join(parts: &[Option<String>], separator: &str) -> Option<String> {
 }
 
 #[cfg(test)]
+#[allow(clippy::unwrap_used)]
 mod tests {
     use super::*;
 

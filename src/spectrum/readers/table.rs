@@ -83,7 +83,10 @@ fn find(fits: &FitsFile) -> Option<(&Hdu, &Table, Columns<'_>)> {
 }
 
 fn identify(fits: &FitsFile) -> bool {
-    find(fits).is_some()
+    // These tables of SDSS-V hold spectra shifted to the star's rest frame; read as an ordinary table
+    // they would give a velocity near zero without a warning.
+    let is_at_rest = fits.hdus()[0].header.has("V_ASTRA");
+    !is_at_rest && find(fits).is_some()
 }
 
 fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
