@@ -135,6 +135,8 @@ codes! {
         "several arms or orders of one object were joined, each up to the middle of their overlap", "none needed";
     FIBRE_WARNING = "spectrum.fibre-warning", Review,
         "the survey raised a warning for this fibre", "look the status up in the survey's documentation";
+    MASK_NOT_READ = "spectrum.mask-not-read", Note,
+        "the file has a mask in a form that is not read here", "none needed where errors mark bad pixels as well";
     HEADER_CONTRADICTS_ITSELF = "spectrum.header-contradicts-itself", Note,
         "two header entries about the same thing differ; the detail says which was used",
         "check the recorded decision";

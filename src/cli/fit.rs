@@ -220,7 +220,8 @@ impl Tally {
         let objects = self.accepted + self.review + self.rejected;
         writeln!(
             io::stderr(),
-            "{objects} objects in {seconds:.1} s: {} accepted, {} for review, {} rejected",
+            "{objects} object{} in {seconds:.1} s: {} accepted, {} for review, {} rejected",
+            if objects == 1 { "" } else { "s" },
             self.accepted,
             self.review,
             self.rejected

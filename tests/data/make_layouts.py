@@ -372,8 +372,52 @@ def image_set():
            np.ones(PIXELS, bool), None)
 
 
+def sdss_spplate():
+    fibres = 6
+    ivar = np.full((fibres, PIXELS), 16.0, "f4")
+    ivar[1, :3] = 0
+    mask = np.zeros((fibres, PIXELS), "i4")
+    mask[1, 9] = 4
+    primary = fits.PrimaryHDU(np.stack([flux_like(scale=9.0) for _ in range(fibres)]))
+    for key, value in [("TELESCOP", "SDSS 2.5-M"), ("PLATEID", 777), ("MJD", 52000), ("COEFF0", 3.6), ("COEFF1", 1e-4),
+                       ("BUNIT", "1E-17 erg/cm^2/s/Ang")]:
+        primary.header[key] = value
+    plugs = fits.BinTableHDU.from_columns([
+        fits.Column("OBJTYPE", "16A", array=["SKY"] + ["GALAXY"] * (fibres - 1)),
+        fits.Column("RA", "D", array=np.linspace(10.0, 11.0, fibres)), fits.Column("DEC", "D", array=np.zeros(fibres)),
+        fits.Column("FIBERID", "J", array=np.arange(fibres) + 1),
+    ])
+    width = np.full((fibres, PIXELS), 0.95, "f4")
+    hdus = write("sdss_spplate", [primary, fits.ImageHDU(ivar), fits.ImageHDU(mask), fits.ImageHDU(mask),
+                                  fits.ImageHDU(width), plugs])
+    wave = 10.0 ** (3.6 + 1e-4 * np.arange(PIXELS))
+    for row in range(1, fibres):
+        fwhm = FWHM_PER_SIGMA * hdus[4].data[row].astype("f8") * 1e-4 * np.log(10.0) * wave
+        expect("sdss_spplate", "sdss-spplate", row, f"SDSS 777-52000-{row + 1}", wave, hdus[0].data[row] * 1e-17,
+               ivar_sigma(hdus[1].data[row]) * 1e-17, hdus[2].data[row] == 0, fwhm)
+
+
+def two_df():
+    types = ["P", "S", "P"]
+    primary = fits.PrimaryHDU(np.stack([flux_like(scale=300.0) for _ in types]))
+    for key, value in [("INSTRUME", "AAOMEGA-2dF"), ("CRVAL1", 4500.0), ("CRPIX1", 60.0), ("CDELT1", 1.03),
+                       ("CUNIT1", "Angstroms"), ("CTYPE1", "Wavelength")]:
+        primary.header[key] = value
+    primary.data[0, 3] = np.nan
+    variance = fits.ImageHDU(np.full((3, PIXELS), 9.0, "f4"), name="VARIANCE")
+    table = fits.BinTableHDU.from_columns([
+        fits.Column("NAME", "20A", array=["KF J0009", "sky", "KF J0010"]), fits.Column("TYPE", "1A", array=types),
+        fits.Column("RA", "D", array=[0.1, 0.2, 0.3]), fits.Column("DEC", "D", array=[0.0, 0.1, -0.1]),
+    ], name="FIBRES")
+    hdus = write("two_df", [primary, variance, table])
+    wave = 4500.0 + 1.03 * (np.arange(PIXELS) + 1 - 60.0)
+    for row in (0, 2):
+        expect("two_df", "two-df", row, hdus["FIBRES"].data["NAME"][row], wave, hdus[0].data[row],
+               np.sqrt(hdus["VARIANCE"].data[row]), np.ones(PIXELS, bool), None, "air")
+
+
 FOLDER.mkdir(exist_ok=True)
-for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table, pypeit, image_set):
+for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table, pypeit, image_set, sdss_spplate, two_df):
     make()
 with open(FOLDER / "expected.json", "w") as file:
     json.dump(expected, file, indent=None, separators=(",", ":"), allow_nan=False)

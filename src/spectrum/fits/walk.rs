@@ -13,6 +13,10 @@ const MOST_AXES: i64 = 8;
 /// Most columns of a table, as the standard says.
 const MOST_COLUMNS: i64 = 999;
 
+/// Most cards of one header (8 MB); the widest tables have some thousands.
+const MOST_CARDS: usize = 100_000;
+/// Most units of one file; multi-exposure files have some hundreds.
+const MOST_UNITS: usize = 10_000;
 /// First bytes of every extension.
 const EXTENSION_START: &[u8] = b"XTENSION";
 
@@ -253,6 +257,10 @@ pub fn walk(bytes: &[u8]) -> Result<Vec<Hdu>, FileFault> {
         if index > 0 && !EXTENSION_START.starts_with(start) {
             break;
         }
+        if index >= MOST_UNITS {
+            let detail = format!("found more units than {MOST_UNITS}");
+            return Err(FileFault::BadHeader { hdu: index, detail });
+        }
         let header_bytes = header_length(&bytes[at..], index)?;
         let header = Header::parse(&bytes[at..at + header_bytes]);
         let start = at + header_bytes.next_multiple_of(BLOCK_BYTES);
@@ -279,6 +287,10 @@ pub fn walk(bytes: &[u8]) -> Result<Vec<Hdu>, FileFault> {
 fn header_length(bytes: &[u8], hdu: usize) -> Result<usize, FileFault> {
     let mut cards = bytes.chunks_exact(CARD_BYTES);
     match cards.position(|card| card.starts_with(b"END") && card[3..].iter().all(|byte| *byte == b' ')) {
+        Some(cards_before) if cards_before >= MOST_CARDS => {
+            let detail = format!("found {cards_before} cards, need at most {MOST_CARDS}");
+            Err(FileFault::BadHeader { hdu, detail })
+        }
         Some(cards_before) => Ok((cards_before + 1) * CARD_BYTES),
         None => {
             let found = bytes.len() as u64;

@@ -32,6 +32,8 @@ struct ArmHdus<'a> {
     flux: &'a Hdu,
     ivar: &'a Hdu,
     mask: Option<&'a Hdu>,
+    /// There is a mask, but not one that can be read (a compressed image).
+    is_mask_unread: bool,
     resolution: Option<&'a Hdu>,
 }
 
@@ -82,7 +84,8 @@ fn find_arm<'a>(fits: &'a FitsFile, arm: &str, rows: u64) -> Result<Option<ArmHd
         hdu.image()
             .is_some_and(|image| image.axes.len() == 3 && image.axes[0] == pixels && image.axes[2] == rows)
     });
-    Ok(Some(ArmHdus { wave: fits.pixels(wave, 0, pixels)?, flux, ivar, mask, resolution }))
+    let is_mask_unread = mask.is_none() && named("MASK").is_some();
+    Ok(Some(ArmHdus { wave: fits.pixels(wave, 0, pixels)?, flux, ivar, mask, is_mask_unread, resolution }))
 }
 
 fn is_target(fits: &FitsFile, map: &Hdu, row: u64) -> bool {
@@ -129,6 +132,10 @@ fn read_row(fits: &FitsFile, map: &Hdu, arms: &[ArmHdus<'_>], row: u64) -> Resul
         ..RawSpectrum::default()
     };
     join(parts, "extension RESOLUTION", &mut raw);
+    if arms.iter().any(|arm| arm.is_mask_unread) {
+        let detail = "masks are compressed images; inverse variances of zero still mark bad pixels";
+        raw.flags.push(Flag::new(&codes::MASK_NOT_READ, detail));
+    }
     let status = ["COADD_FIBERSTATUS", "FIBERSTATUS"]
         .iter()
         .find_map(|name| fits.integer_cell(map, name, row).ok().map(|status| (name, status)));

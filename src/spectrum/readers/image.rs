@@ -82,18 +82,24 @@ fn step(header: &Header) -> Option<f64> {
 
 fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
     let hdu = flux_hdu(fits).ok_or_else(|| super::broken(LAYOUT.name, "found no image"))?;
-    let axis = Axis::of(&hdu.header).ok_or_else(|| super::broken(LAYOUT.name, "found no wavelength axis"))?;
     read_lines(fits, hdu, LAYOUT.name, |_, length| {
-        Ok(LineAxis {
-            wave: axis.wavelengths(length),
-            wave_unit: axis.unit.clone(),
-            medium: axis.medium.clone(),
-            flags: axis.flags.clone(),
-        })
+        header_axis(&hdu.header, length).ok_or_else(|| super::broken(LAYOUT.name, "found no wavelength axis"))
+    })
+}
+
+/// The axis that a header tells for lines of this length, if it tells one.
+pub fn header_axis(header: &Header, length: usize) -> Option<LineAxis> {
+    let axis = Axis::of(header)?;
+    Some(LineAxis {
+        wave: axis.wavelengths(length),
+        wave_unit: axis.unit,
+        medium: axis.medium,
+        flags: axis.flags,
     })
 }
 
 /// The wavelengths of one line of an image.
+#[derive(Debug, Clone, Default)]
 pub struct LineAxis {
     /// One per pixel; may be shorter than the line.
     pub wave: Vec<f64>,

@@ -18,8 +18,10 @@ mod lamost;
 mod object;
 mod pypeit;
 mod sdss_image;
+mod sdss_plate;
 mod sdss_table;
 mod table;
+mod two_df;
 
 use super::axis::{Medium, VelocityFrame};
 use super::fits::{FitsFile, Hdu, Header, Kind};
@@ -47,9 +49,11 @@ pub static LAYOUTS: &[Layout] = &[
     desi::LAYOUT,
     sdss_table::LAYOUT,
     sdss_image::LAYOUT,
+    sdss_plate::LAYOUT,
     lamost::LAYOUT,
     hst_x1d::LAYOUT,
     pypeit::LAYOUT,
+    two_df::LAYOUT,
     calspec::LAYOUT,
     iraf_multispec::LAYOUT,
     image_set::LAYOUT,
