@@ -1,8 +1,7 @@
 //! `emberline fit FILE...`: one report per object, one line each, on stdout.
 
 use std::io::{self, IsTerminal, Write};
-use std::panic::{AssertUnwindSafe, catch_unwind};
-use std::path::{Path, PathBuf};
+use std::path::PathBuf;
 use std::process::ExitCode;
 use std::time::Instant;
 
@@ -11,13 +10,9 @@ use indicatif::{ProgressBar, ProgressStyle};
 use rayon::prelude::*;
 use serde::de::DeserializeOwned;
 
-use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, error_chain};
-use crate::codes::{self, Flag};
-use crate::report::{Findings, Provenance, Report, Verdict};
-use crate::spectrum::{
-    Assumptions, ErrorKind, FluxScale, Medium, ObjectRecord, Observation, ReadSettings, Refusal,
-    SourceRecord, VelocityFrame, WaveUnit, read_file,
-};
+use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE};
+use crate::report::{Analyse, Report, Verdict, report_file};
+use crate::spectrum::{Assumptions, ErrorKind, FluxScale, Medium, ReadSettings, VelocityFrame, WaveUnit};
 
 /// Files read and fitted at once before their reports are printed, so that output streams.
 const FILES_PER_BATCH: usize = 64;
@@ -103,12 +98,6 @@ fn word<T: DeserializeOwned>(words: &str) -> Result<T, String> {
     serde_json::from_value(serde_json::Value::String(words.to_owned())).map_err(|fault| fault.to_string())
 }
 
-/// What is done with one observation between reading and reporting.
-pub trait Analyse: Sync {
-    /// Fits one spectrum and derives what follows for the star.
-    fn analyse(&self, observation: &Observation) -> Findings;
-}
-
 /// Reads, analyses and reports every object of every file.
 pub fn run(arguments: &FitArguments, pipeline: &dyn Analyse) -> CommandResult {
     let settings = arguments.settings();
@@ -139,55 +128,6 @@ pub fn run(arguments: &FitArguments, pipeline: &dyn Analyse) -> CommandResult {
     bar.finish_and_clear();
     tally.print(started.elapsed().as_secs_f64())?;
     Ok(if tally.rejected == 0 { ExitCode::SUCCESS } else { ExitCode::from(EXIT_INPUT_FAILED) })
-}
-
-/// One report per object of a file; a file that cannot be read is one rejected report.
-pub fn report_file(path: &Path, settings: &ReadSettings, pipeline: &dyn Analyse) -> Vec<Report> {
-    let started = Instant::now();
-    let Ok(outcomes) = catch_unwind(AssertUnwindSafe(|| read_file(path, settings))) else {
-        let source = SourceRecord { path: path.display().to_string(), ..SourceRecord::default() };
-        return vec![report_panic("reading", ObjectRecord::default(), source)];
-    };
-    let read_ms = started.elapsed().as_secs_f64() * 1e3;
-    let report_one = |outcome: Result<Observation, Box<Refusal>>| match outcome {
-        Ok(observation) => report_observation(observation, read_ms, pipeline),
-        Err(refusal) => report_refusal(*refusal, read_ms),
-    };
-    outcomes.into_iter().map(report_one).collect()
-}
-
-fn report_observation(observation: Observation, read_ms: f64, pipeline: &dyn Analyse) -> Report {
-    let Ok(mut findings) = catch_unwind(AssertUnwindSafe(|| pipeline.analyse(&observation))) else {
-        return report_panic("fitting", observation.object, observation.source);
-    };
-    findings.flags.splice(0..0, observation.flags);
-    findings.timing_ms.insert("read".to_owned(), read_ms);
-    Report::assemble(observation.object, observation.source, findings)
-}
-
-/// The report about an object, or a file, that could not be read.
-fn report_refusal(refusal: Refusal, read_ms: f64) -> Report {
-    let Refusal { object, source, fault } = refusal;
-    let detail = error_chain(&fault);
-    tracing::warn!(path = source.path, code = fault.code().id, "{detail}");
-    let findings = Findings {
-        flags: vec![Flag::new(fault.code(), detail)],
-        provenance: Provenance::of_this_program(),
-        timing_ms: [("read".to_owned(), read_ms)].into(),
-        ..Findings::default()
-    };
-    Report::assemble(object, source, findings)
-}
-
-/// A broken invariant costs one object, not the run.
-fn report_panic(step: &str, object: ObjectRecord, source: SourceRecord) -> Report {
-    tracing::error!(path = source.path, "panic while {step}");
-    let findings = Findings {
-        flags: vec![Flag::new(&codes::INTERNAL, format!("while {step}"))],
-        provenance: Provenance::of_this_program(),
-        ..Findings::default()
-    };
-    Report::assemble(object, source, findings)
 }
 
 fn progress_bar(files: usize) -> ProgressBar {

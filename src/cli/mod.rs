@@ -13,6 +13,10 @@ use std::process::ExitCode;
 
 use clap::{Parser, Subcommand};
 
+use crate::codes::{Flag, NO_PARAMETERS};
+use crate::report::{Analyse, Findings, Provenance, error_chain};
+use crate::spectrum::Observation;
+
 /// Exit code for wrong use or configuration.
 pub const EXIT_WRONG_USE: u8 = 2;
 /// Exit code when some input failed; its report says why.
@@ -65,12 +69,12 @@ pub fn run() -> ExitCode {
 /// Stands where the fit will be: reads and checks, fits nothing, and says so in every report.
 struct NoPipeline;
 
-impl fit::Analyse for NoPipeline {
-    fn analyse(&self, _observation: &crate::spectrum::Observation) -> crate::report::Findings {
-        crate::report::Findings {
-            flags: vec![crate::codes::Flag::new(&crate::codes::NO_PARAMETERS, "this build does not fit")],
-            provenance: crate::report::Provenance::of_this_program(),
-            ..Default::default()
+impl Analyse for NoPipeline {
+    fn analyse(&self, _observation: &Observation) -> Findings {
+        Findings {
+            flags: vec![Flag::new(&NO_PARAMETERS, "this build does not fit")],
+            provenance: Provenance::of_this_program(),
+            ..Findings::default()
         }
     }
 }
@@ -87,18 +91,6 @@ fn start_log() {
     // A second start (tests calling `run` twice) keeps the first logger.
     let log = tracing_subscriber::fmt().with_env_filter(filter).with_writer(io::stderr);
     let _ = log.with_ansi(io::stderr().is_terminal()).try_init();
-}
-
-/// A fault and all its causes in one line.
-pub fn error_chain(fault: &dyn Error) -> String {
-    let mut words = fault.to_string();
-    let mut cause = fault.source();
-    while let Some(inner) = cause {
-        words.push_str(": ");
-        words.push_str(&inner.to_string());
-        cause = inner.source();
-    }
-    words
 }
 
 /// Whether the reader of our stdout went away (`emberline codes | head`): not a failure.

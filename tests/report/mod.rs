@@ -4,10 +4,10 @@ use std::fs;
 
 use emberline::codes::{self, Effect, Flag};
 use emberline::report::{
-    Findings, FittedParameters, LineRow, Provenance, Report, SCHEMA_VERSION, SolutionRow, Star, StarValue,
-    Verdict, schema, write_atomically,
+    Analyse, Findings, FittedParameters, LineRow, Provenance, Report, SCHEMA_VERSION, SolutionRow, Star,
+    StarValue, Verdict, report_file, schema, write_atomically,
 };
-use emberline::spectrum::{ObjectRecord, SourceRecord};
+use emberline::spectrum::{ObjectRecord, Observation, ReadSettings, SourceRecord};
 
 use crate::support::folder;
 
@@ -185,4 +185,36 @@ fn files_are_written_whole_or_not_at_all() {
     assert!(write_atomically(&nowhere, b"fifth").is_err());
     // Full disks look like this everywhere on Linux.
     assert!(write_atomically(std::path::Path::new("/dev/full/report.json"), b"sixth").is_err());
+}
+
+/// An analysis that breaks on every object but those with this many pixels.
+struct Fragile {
+    pixels: usize,
+}
+
+impl Analyse for Fragile {
+    fn analyse(&self, observation: &Observation) -> Findings {
+        assert_eq!(observation.spectrum.wave_vac_aa().len(), self.pixels, "a broken invariant");
+        findings()
+    }
+}
+
+#[test]
+fn a_panic_costs_one_object_and_reading_faults_become_reports() {
+    let settings = ReadSettings::default();
+    let star = folder::data("calspec/gd71_stisnic_002.fits.gz");
+    let good = report_file(&star, &settings, &Fragile { pixels: 4105 });
+    assert_eq!(good.len(), 1);
+    // Nothing in this file says who the observer is; a note, and no reason to reject.
+    assert_eq!(good[0].flags[0].code, "spectrum.velocity-frame-unknown");
+    assert_eq!(good[0].verdict, Verdict::Accepted);
+    assert_eq!(good[0].object.name.as_deref(), Some("GD71"));
+    assert!(good[0].timing_ms["read"] > 0.0);
+
+    let broken = report_file(&star, &settings, &Fragile { pixels: 1 });
+    assert_eq!((broken[0].verdict, broken[0].flags[0].code.as_str()), (Verdict::Rejected, "internal.panic"));
+    assert_eq!(broken[0].object.name.as_deref(), Some("GD71"));
+
+    let missing = report_file(&star.with_extension("absent"), &settings, &Fragile { pixels: 1 });
+    assert_eq!((missing[0].verdict, missing[0].flags[0].code.as_str()), (Verdict::Rejected, "file.missing"));
 }
