@@ -15,6 +15,17 @@ pub enum Effect {
     Reject,
 }
 
+/// What a person or the daemon does about a fault.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Disposition {
+    /// May go away by itself: try again, a bounded number of times.
+    Retry,
+    /// Will never work for this input: report it with its code, go on with the next.
+    Reject,
+    /// Will fail for every input: stop with a non-zero exit code.
+    Stop,
+}
+
 /// One row of the table of codes.
 #[derive(Debug)]
 pub struct Code {
@@ -58,6 +69,107 @@ codes! {
     INTERNAL = "internal.panic", Reject,
         "the program broke one of its own invariants while working on this object",
         "report it with the input file";
+
+    // spectrum: opening
+    FILE_MISSING = "file.missing", Reject,
+        "the file does not exist", "check the name";
+    FILE_NOT_REGULAR = "file.not-regular", Reject,
+        "the path is a folder, a pipe, a socket or a device", "give the path of an ordinary file";
+    FILE_UNREADABLE = "file.unreadable", Reject,
+        "the operating system refused to read the file", "check permissions and the disk";
+    FILE_EMPTY = "file.empty", Reject,
+        "the file holds no bytes", "write the file again; it may have been picked up before it was whole";
+    FILE_TOO_LARGE = "file.too-large", Reject,
+        "the file, or what it unpacks to, is larger than the limit",
+        "raise largest_file_mb if the file is meant to be this large";
+    FILE_BAD_GZIP = "file.bad-gzip", Reject,
+        "the file starts like gzip but does not unpack", "compress the file again";
+    FILE_NOT_FITS = "file.not-fits", Reject,
+        "the file does not start like FITS", "give a FITS file, plain or compressed with gzip";
+    FILE_BAD_HEADER = "file.bad-header", Reject,
+        "a FITS header breaks the standard in a way that makes the data unsafe to read",
+        "write the file with a standard library";
+    FILE_TRUNCATED = "file.truncated", Reject,
+        "the file ends before the data that its headers declare", "copy the file again";
+    EXTENSIONS_MISSING = "file.extensions-missing", Note,
+        "the first header announces more extensions than the file has",
+        "copy the file again, unless the keyword NEXTEND is left over from the file's origin";
+    FILE_BAD_DATA = "file.bad-data", Reject,
+        "the FITS library could not read the data of an extension", "write the file with a standard library";
+
+    // spectrum: what the file means
+    LAYOUT_UNKNOWN = "spectrum.layout-unknown", Reject,
+        "no known layout of a reduced one-dimensional spectrum fits the file",
+        "reduce the data to one dimension, or convert the file to a table with wavelength, flux and error";
+    NO_SUCH_ROW = "spectrum.no-such-row", Reject,
+        "the selected row, aperture or object is not in the file", "choose another row, or none for all";
+    LAYOUT_BROKEN = "spectrum.layout-broken", Reject,
+        "the file announces a layout but lacks a part of it", "write the file again with the pipeline that makes this layout";
+    WAVELENGTH_UNIT_UNKNOWN = "spectrum.wavelength-unit-unknown", Reject,
+        "the unit of the wavelengths is missing, not a unit of length, or not known here",
+        "set wave_unit to angstrom, nm or um";
+    FLUX_UNIT_UNKNOWN = "spectrum.flux-unit-unknown", Reject,
+        "the unit of the fluxes is not a flux per wavelength interval, not counts, or not known here",
+        "convert to flux per angstrom, or set flux_scale to calibrated or relative";
+    MEDIUM_UNKNOWN = "spectrum.medium-unknown", Reject,
+        "the file does not say whether its wavelengths are in air or in vacuum",
+        "set medium to air or vacuum";
+    ERRORS_MISSING = "spectrum.errors-missing", Reject,
+        "the file has no errors of the fluxes", "set assume_snr, or give a file with errors";
+    ERROR_KIND_UNKNOWN = "spectrum.error-kind-unknown", Reject,
+        "the file has a column of errors but does not say of which kind",
+        "set error_kind to sigma, variance or inverse_variance";
+    RESOLUTION_UNKNOWN = "spectrum.resolution-unknown", Reject,
+        "the file does not give its spectral resolution", "set resolution_fwhm_aa or resolving_power";
+    UNIT_INFERRED = "spectrum.unit-inferred", Note,
+        "the unit of the wavelengths was inferred from their range", "set wave_unit to make it certain";
+    FRAME_UNKNOWN = "spectrum.velocity-frame-unknown", Note,
+        "the file does not say whether the Earth's motion is taken out of the wavelengths",
+        "read the radial velocity as relative to the telescope, or set velocity_frame";
+    SETTING_DIFFERS_FROM_FILE = "spectrum.setting-differs-from-file", Note,
+        "the configuration and the file state different things; the detail says which was used",
+        "remove the setting if the file is right; set overrule_file if it is not";
+    ERRORS_ASSUMED = "spectrum.errors-assumed", Note,
+        "the file has no errors; they were made from assume_snr", "do not read absolute values of chi-square";
+    ARMS_JOINED = "spectrum.arms-joined", Note,
+        "several arms or orders of one object were joined, each up to the middle of their overlap", "none needed";
+    FIBRE_WARNING = "spectrum.fibre-warning", Review,
+        "the survey raised a warning for this fibre", "look the status up in the survey's documentation";
+    MASK_NOT_READ = "spectrum.mask-not-read", Note,
+        "the file has a mask in a form that is not read here", "none needed where errors mark bad pixels as well";
+    HEADER_CONTRADICTS_ITSELF = "spectrum.header-contradicts-itself", Note,
+        "two header entries about the same thing differ; the detail says which was used",
+        "check the recorded decision";
+    RESOLUTION_COLUMN_IMPLAUSIBLE = "spectrum.resolution-column-implausible", Note,
+        "the file's column of widths cannot be widths; it was not used", "check the recorded resolution";
+    PADDING_TRIMMED = "spectrum.padding-trimmed", Note,
+        "pixels without wavelength or flux at the ends were cut off", "none needed";
+
+    // spectrum: the values
+    UNEQUAL_LENGTHS = "spectrum.unequal-lengths", Reject,
+        "wavelengths, fluxes, errors and mask differ in length", "write the file again";
+    TOO_SHORT = "spectrum.too-short", Reject,
+        "too few pixels to hold Balmer lines", "give the whole spectrum";
+    WAVELENGTH_NOT_FINITE = "spectrum.wavelength-not-finite", Reject,
+        "a wavelength is not a number", "write the file again";
+    WAVELENGTH_NOT_ASCENDING = "spectrum.wavelength-not-ascending", Reject,
+        "wavelengths repeat or turn back", "sort or rebin the spectrum";
+    WAVELENGTH_IMPLAUSIBLE = "spectrum.wavelength-implausible", Reject,
+        "wavelengths are outside 100 A to 100 micrometres", "check the unit of the wavelengths";
+    TOO_FEW_GOOD_PIXELS = "spectrum.too-few-good-pixels", Reject,
+        "masks, missing fluxes and missing errors leave too few pixels", "check the reduction of this object";
+    FLUX_ALL_ZERO = "spectrum.flux-all-zero", Reject,
+        "every flux is exactly zero", "check the reduction of this object";
+    BAD_RESOLUTION = "spectrum.bad-resolution", Reject,
+        "the spectral resolution is not positive or not believable", "check resolution_fwhm_aa or resolving_power";
+
+    // report
+    NO_PARAMETERS = "report.no-parameters", Reject,
+        "the fit gave no temperature or no gravity", "see the other flags of this report";
+    VALUES_MISSING = "report.values-missing", Review,
+        "some values could not be had and are null", "see the other flags of this report";
+    REPORT_NOT_WRITTEN = "report.not-written", Reject,
+        "a report could not be written to disk", "check that the output folder exists, is writable and has space";
 }
 
 /// Finds a code by its identifier.

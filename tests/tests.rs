@@ -5,3 +5,11 @@
 mod architecture;
 // Truth from outside: each number with its source.
 mod reference;
+// Exit codes, messages, output of the program itself.
+mod cli;
+// Reading: values, decisions, refusals, mutated files.
+mod spectrum;
+// The report document.
+mod report;
+// FITS byte writer, folders.
+mod support;

@@ -1,8 +1,99 @@
 //! The command line: one file per command.
+//!
+//! Results go to stdout, everything else to stderr. Exit codes: 0 all done, 2 wrong use or
+//! configuration, 3 some input failed (its report says why).
 
+mod codes;
+pub mod fit;
+mod schema;
+
+use std::error::Error;
+use std::io::{self, IsTerminal, Write};
 use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+use crate::codes::{Flag, NO_PARAMETERS};
+use crate::report::{Analyse, Findings, Provenance, error_chain};
+use crate::spectrum::Observation;
+
+/// Exit code for wrong use or configuration.
+pub const EXIT_WRONG_USE: u8 = 2;
+/// Exit code when some input failed; its report says why.
+pub const EXIT_INPUT_FAILED: u8 = 3;
+
+/// Fits spectra of DA white dwarfs: temperature, gravity, velocity, mass, radius, age.
+#[derive(Debug, Parser)]
+#[command(name = "emberline", version, arg_required_else_help = true)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// Fit spectra and print one JSON report per object.
+    Fit(fit::FitArguments),
+    /// List the stable codes of faults and flags with their meaning and remedy.
+    Codes(codes::CodesArguments),
+    /// Print the JSON schema of the report.
+    Schema,
+}
+
+/// What a command ends with when it could not do its work.
+pub type CommandResult = Result<ExitCode, Box<dyn Error>>;
 
 /// Parses the arguments, runs the command, returns the exit code.
 pub fn run() -> ExitCode {
-    ExitCode::from(2)
+    let arguments = match Arguments::try_parse() {
+        Ok(arguments) => arguments,
+        Err(refusal) => return print_refusal(&refusal),
+    };
+    start_log();
+    let outcome = match arguments.command {
+        Command::Fit(arguments) => fit::run(&arguments, &NoPipeline),
+        Command::Codes(arguments) => codes::run(&arguments),
+        Command::Schema => schema::run(),
+    };
+    match outcome {
+        Ok(exit) => exit,
+        Err(fault) if is_broken_pipe(fault.as_ref()) => ExitCode::SUCCESS,
+        Err(fault) => {
+            // The last words: if stderr is gone as well, the exit code remains.
+            let _ = writeln!(io::stderr(), "emberline: {}", error_chain(fault.as_ref()));
+            ExitCode::from(EXIT_WRONG_USE)
+        }
+    }
+}
+
+/// Stands where the fit will be: reads and checks, fits nothing, and says so in every report.
+struct NoPipeline;
+
+impl Analyse for NoPipeline {
+    fn analyse(&self, _observation: &Observation) -> Findings {
+        Findings {
+            flags: vec![Flag::new(&NO_PARAMETERS, "this build does not fit")],
+            provenance: Provenance::of_this_program(),
+            ..Findings::default()
+        }
+    }
+}
+
+fn print_refusal(refusal: &clap::Error) -> ExitCode {
+    let _ = refusal.print();
+    if refusal.use_stderr() { ExitCode::from(EXIT_WRONG_USE) } else { ExitCode::SUCCESS }
+}
+
+/// Logs to stderr; `EMBERLINE_LOG` sets what is shown (default: warnings).
+fn start_log() {
+    use tracing_subscriber::EnvFilter;
+    let filter = EnvFilter::try_from_env("EMBERLINE_LOG").unwrap_or_else(|_| EnvFilter::new("warn"));
+    // A second start (tests calling `run` twice) keeps the first logger.
+    let log = tracing_subscriber::fmt().with_env_filter(filter).with_writer(io::stderr);
+    let _ = log.with_ansi(io::stderr().is_terminal()).try_init();
+}
+
+/// Whether the reader of our stdout went away (`emberline codes | head`): not a failure.
+fn is_broken_pipe(fault: &(dyn Error + 'static)) -> bool {
+    fault.downcast_ref::<io::Error>().is_some_and(|error| error.kind() == io::ErrorKind::BrokenPipe)
 }

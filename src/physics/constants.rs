@@ -12,7 +12,7 @@ pub const BOLTZMANN_ERG_K: f64 = 1.380_649e-16;
 /// Elementary charge, statcoulomb (exact in SI: 1.602176634e-19 C).
 pub const ELEMENTARY_CHARGE_ESU: f64 = 4.803_204_712_570_263e-10;
 /// Electron mass, g.
-pub const ELECTRON_MASS_G: f64 = 9.109_383_7015e-28;
+pub const ELECTRON_MASS_G: f64 = 9.109_383_701_5e-28;
 /// Proton mass, g.
 pub const PROTON_MASS_G: f64 = 1.672_621_923_69e-24;
 /// Unified atomic mass unit, g.
@@ -28,7 +28,7 @@ pub const RYDBERG_INF_PER_CM: f64 = 109_737.315_681_60;
 /// Rydberg constant of hydrogen-1, 1/cm: the infinite-mass value reduced by the proton's motion.
 pub const RYDBERG_H_PER_CM: f64 = RYDBERG_INF_PER_CM / (1.0 + ELECTRON_MASS_G / PROTON_MASS_G);
 /// Thomson cross-section, cm^2.
-pub const THOMSON_CM2: f64 = 6.652_458_7321e-25;
+pub const THOMSON_CM2: f64 = 6.652_458_732_1e-25;
 /// Stefan-Boltzmann constant, erg cm^-2 s^-1 K^-4.
 pub const STEFAN_BOLTZMANN_CGS: f64 = 5.670_374_419e-5;
 /// Radiation density constant 4 sigma / c, erg cm^-3 K^-4.

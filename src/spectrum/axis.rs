@@ -12,3 +12,17 @@ pub enum Medium {
     /// Wavelengths in standard air.
     Air,
 }
+
+/// The observer to whom the wavelengths of a file refer.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum VelocityFrame {
+    /// The telescope: the Earth's motion is still in the velocity.
+    Topocentric,
+    /// The Sun.
+    Heliocentric,
+    /// The barycentre of the solar system.
+    Barycentric,
+    /// The file does not say.
+    Unknown,
+}

@@ -1,0 +1,67 @@
+//! A path to bytes in memory: an ordinary file, of bounded size, unpacked with a bound.
+
+use std::fs::OpenOptions;
+use std::io::{self, Read};
+use std::os::unix::fs::{FileTypeExt, OpenOptionsExt};
+use std::path::Path;
+
+use flate2::read::MultiGzDecoder;
+
+use super::FileFault;
+
+const GZIP_START: [u8; 2] = [0x1f, 0x8b];
+
+/// Reads an ordinary file; never waits for a pipe, never reads a device.
+pub fn read_regular_file(path: &Path, largest_bytes: u64) -> Result<Vec<u8>, FileFault> {
+    // Without O_NONBLOCK, opening a pipe that nobody writes to would wait for ever.
+    let file =
+        OpenOptions::new().read(true).custom_flags(libc::O_NONBLOCK).open(path).map_err(
+            |error| match error.kind() {
+                io::ErrorKind::NotFound | io::ErrorKind::NotADirectory => FileFault::Missing,
+                _ if error.raw_os_error() == Some(libc::ENXIO) => FileFault::NotRegular { found: "a socket" },
+                _ => FileFault::Unreadable(error),
+            },
+        )?;
+    // Asked of the open file, not of the path: the path may have changed meanwhile.
+    let kind = file.metadata().map_err(FileFault::Unreadable)?.file_type();
+    if !kind.is_file() {
+        let found = match () {
+            () if kind.is_dir() => "a folder",
+            () if kind.is_fifo() => "a pipe",
+            () if kind.is_socket() => "a socket",
+            () => "a device",
+        };
+        return Err(FileFault::NotRegular { found });
+    }
+    read_bounded(file, largest_bytes, "on disk").map_err(|fault| match fault {
+        BoundedFault::TooLarge(fault) => fault,
+        BoundedFault::Io(error) => FileFault::Unreadable(error),
+    })
+}
+
+/// Unpacks gzip (also several members in a row); other bytes are returned as they are.
+pub fn unpack(packed: Vec<u8>, largest_bytes: u64) -> Result<Vec<u8>, FileFault> {
+    if !packed.starts_with(&GZIP_START) {
+        return Ok(packed);
+    }
+    read_bounded(MultiGzDecoder::new(packed.as_slice()), largest_bytes, "after unpacking").map_err(|fault| {
+        match fault {
+            BoundedFault::TooLarge(fault) => fault,
+            BoundedFault::Io(error) => FileFault::BadGzip(error),
+        }
+    })
+}
+
+enum BoundedFault {
+    TooLarge(FileFault),
+    Io(io::Error),
+}
+
+fn read_bounded(source: impl Read, largest_bytes: u64, when: &'static str) -> Result<Vec<u8>, BoundedFault> {
+    let mut bytes = Vec::new();
+    source.take(largest_bytes.saturating_add(1)).read_to_end(&mut bytes).map_err(BoundedFault::Io)?;
+    if bytes.len() as u64 > largest_bytes {
+        return Err(BoundedFault::TooLarge(FileFault::TooLarge { largest_bytes, when }));
+    }
+    Ok(bytes)
+}

@@ -1,0 +1,4 @@
+//! What several tests share.
+
+pub mod fits_bytes;
+pub mod folder;
