@@ -8,7 +8,7 @@
 //! biquintic Hermite interpolation (the method of Timmes & Swesty 2000, ApJS 126, 501), which keeps
 //! Maxwell's relations exact.
 //!
-//! Domain: log10 n_e 8 .. 36, log10 T 3 .. 9.4; outside it values are NaN. No positrons: below
+//! Domain: log10 n_e 0 .. 36, log10 T 3 .. 9.4; outside it values are NaN. No positrons: below
 //! 5e8 K pairs are fewer than exp(-2 mc^2 / kT) = 5e-11 of kT-like scales.
 //! Accuracy 2e-5 in thermal pressure and energy (test `verif_electron_table_matches_quadrature`);
 //! limits in `validate_electron_gas_limits`.
@@ -36,7 +36,7 @@ pub const COMPTON_DENSITY_PER_CM3: f64 = {
 /// Above this degeneracy parameter the leading Sommerfeld term is used: the next one is smaller by
 /// about 1 / eta^2 = 1e-5.
 const SOMMERFELD_ETA: f64 = 300.0;
-const LOG_DENSITY: Axis = Axis { low: 8.0, high: 36.0, count: 169 };
+const LOG_DENSITY: Axis = Axis { low: 0.0, high: 36.0, count: 217 };
 const LOG_TEMPERATURE: Axis = Axis { low: 3.0, high: 9.4, count: 41 };
 /// Step of the central differences that give the third and fourth derivatives of the table.
 const MIXED_STEP: f64 = 0.02;

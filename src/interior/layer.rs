@@ -75,10 +75,24 @@ impl Layer {
         }
     }
 
-    /// Volume that nuclei around a bound stage must leave free, cm^3: a sphere of twice its radius.
-    fn excluded_volume_cm3(stage: &Stage) -> f64 {
-        4.0 * PI / 3.0 * (2.0 * stage.radius_bohr * BOHR_RADIUS_CM).powi(3)
-    }
+}
+
+/// Share of a bound stage's energy that it has lost where the volumes of neighbours fill space.
+///
+/// A tenth makes cold hydrogen ionise near 1 g/cm3, where atoms touch (0.3 - 1 g/cm3 in the
+/// literature, e.g. Saumon, Chabrier & van Horn 1995, ApJS 99, 713), and helium near 20 g/cm3.
+const OVERLAP_ENERGY: f64 = 0.1;
+
+/// Free energy over kT that a bound stage costs among other nuclei.
+///
+/// First the excluded volume, a sphere of twice the radius (entropy, dilute), then the rise of the
+/// bound electrons' energy by overlap (dense; without it cold matter would stay neutral at any density,
+/// because free electrons are degenerate and excluded volume only counts as kT).
+fn crowding(stage: &Stage, nuclei: f64, temperature_k: f64) -> Jet {
+    let volume = 4.0 * PI / 3.0 * (2.0 * stage.radius_bohr * BOHR_RADIUS_CM).powi(3);
+    let filling = Jet::power_law(nuclei * volume, 1.0, 0.0);
+    let bound = -stage.energy_ev * ELECTRON_VOLT_ERG / (BOLTZMANN_ERG_K * temperature_k);
+    filling + filling * filling * Jet::power_law(OVERLAP_ENERGY * bound, 0.0, -1.0)
 }
 
 /// State and populations of a layer.
@@ -92,8 +106,16 @@ pub struct LayerState {
     pub stages_per_cm3: [f64; 3],
     /// Electron degeneracy parameter, chemical potential over kT.
     pub degeneracy: f64,
-    /// Dissolution exponent of a neutral ground state: its occupation probability is exp(-this).
-    pub dissolution: f64,
+}
+
+impl LayerState {
+    /// State of a layer known to be fully ionised, from the simpler equation of state.
+    pub fn fully_ionised(layer: Layer, matter: MatterState, electrons_per_cm3: f64) -> Self {
+        let gas = ElectronGas::shared().free_energy(electrons_per_cm3, matter.temperature_k);
+        let mut stages_per_cm3 = [0.0; 3];
+        stages_per_cm3[layer.stages().len() - 1] = electrons_per_cm3 / layer.charge();
+        LayerState { matter, electrons_per_cm3, stages_per_cm3, degeneracy: gas.v + gas.x }
+    }
 }
 
 /// Fractions of the nuclei in each stage if the free electrons had density `electrons`.
@@ -107,18 +129,17 @@ fn fractions(layer: Layer, nuclei: f64, electrons: f64, temperature_k: f64, prev
     let excess = |charge: f64| {
         if charge > 0.0 { ions::liquid_excess(coupling * charge.powf(5.0 / 3.0)) } else { (0.0, 0.0) }
     };
-    // Every free electron shares in the Coulomb energy of all ions.
-    let shared: f64 = stages
-        .iter()
-        .zip(previous)
-        .map(|(stage, share)| share * nuclei / electrons * excess(stage.charge).1 / 3.0)
-        .sum();
+    // Every free electron shares in the Coulomb energy of all ions; `previous` weighs their charges.
+    let (energy, charge) = stages.iter().zip(previous).fold((0.0, 1e-300), |(energy, charge), (stage, share)| {
+        (energy + share * excess(stage.charge).1 / 3.0, charge + share * stage.charge)
+    });
+    let shared = energy / charge;
     let mut logs = [f64::NEG_INFINITY; 3];
     for (log, stage) in logs.iter_mut().zip(stages) {
         let potential = stage.energy_ev * ELECTRON_VOLT_ERG / kt - stage.statistical_weight.ln()
             + stage.charge * (chemical + shared)
             + excess(stage.charge).0
-            + nuclei * Layer::excluded_volume_cm3(stage);
+            + crowding(stage, nuclei, temperature_k).v;
         *log = -potential;
     }
     let top = logs.iter().copied().fold(f64::NEG_INFINITY, f64::max);
@@ -128,27 +149,69 @@ fn fractions(layer: Layer, nuclei: f64, electrons: f64, temperature_k: f64, prev
     shares
 }
 
-/// Shares of the stages at equilibrium: one root in the free electron density.
+/// Shares of the stages at equilibrium: a root in the free electron density; where pressure
+/// ionisation makes several, that of lowest free energy.
 fn equilibrium(layer: Layer, nuclei: f64, temperature_k: f64) -> [f64; 3] {
+    const SCAN: usize = 12;
     let stages = layer.stages();
-    let mean_charge = |shares: &[f64; 3]| -> f64 {
-        stages.iter().zip(shares).map(|(stage, share)| stage.charge * share).sum()
-    };
-    let full = layer.charge();
-    let mut shares = [0.0; 3];
-    shares[stages.len() - 1] = 1.0;
-    // Bisection in ln(n_e), from the ionised side: the root of highest ionisation is the stable one
-    // where pressure ionisation makes several.
-    let (mut low, mut high) = ((1e-14 * nuclei).ln(), (full * nuclei).ln());
-    for _ in 0..48 {
-        let middle = 0.5 * (low + high);
-        let guess = fractions(layer, nuclei, middle.exp(), temperature_k, &shares);
+    let at = |ln_electrons: f64| {
+        let electrons = ln_electrons.exp();
         // The Coulomb term needs the shares it changes: they enter weakly, two passes settle them.
-        shares = fractions(layer, nuclei, middle.exp(), temperature_k, &guess);
-        if mean_charge(&shares) * nuclei > middle.exp() {
-            low = middle;
+        let mut shares = [0.0; 3];
+        shares[stages.len() - 1] = 1.0;
+        for _ in 0..2 {
+            shares = fractions(layer, nuclei, electrons, temperature_k, &shares);
+        }
+        let charge: f64 = stages.iter().zip(&shares).map(|(stage, share)| stage.charge * share).sum();
+        ((charge.max(1e-300) * nuclei).ln() - ln_electrons, shares)
+    };
+    let (low, high) = ((1e-13 * nuclei).max(2.0).ln(), (layer.charge() * nuclei).ln() + 1e-9);
+    // Scan points crowd towards full ionisation, where several roots can be.
+    let point = |i: usize| high - (high - low) * (1.0 - i as f64 / SCAN as f64).powi(3);
+    let mut best: Option<(f64, [f64; 3])> = None;
+    let mut left = (point(0), at(point(0)));
+    for i in 1..=SCAN {
+        let right = (point(i), at(point(i)));
+        if left.1.0 > 0.0 && right.1.0 <= 0.0 {
+            let shares = root(&at, (left.0, left.1.0), (right.0, right.1.0));
+            let free = free_energy(layer, nuclei, &shares, temperature_k).0.v;
+            if best.is_none_or(|(lowest, _)| free < lowest) {
+                best = Some((free, shares));
+            }
+        }
+        left = right;
+    }
+    // No root within the range: as good as neutral.
+    best.map_or_else(|| at(low).1, |(_, shares)| shares)
+}
+
+/// Illinois variant of the rule of false position: bracketed and superlinear.
+fn root(
+    at: &impl Fn(f64) -> (f64, [f64; 3]),
+    mut left: (f64, f64),
+    mut right: (f64, f64),
+) -> [f64; 3] {
+    let mut shares = [0.0; 3];
+    let mut side = 0;
+    for _ in 0..60 {
+        let x = (left.0 * right.1 - right.0 * left.1) / (right.1 - left.1);
+        let (value, now) = at(x);
+        shares = now;
+        if value.abs() < 1e-11 || (right.0 - left.0).abs() < 1e-12 {
+            break;
+        }
+        if value > 0.0 {
+            left = (x, value);
+            if side == 1 {
+                right.1 *= 0.5;
+            }
+            side = 1;
         } else {
-            high = middle;
+            right = (x, value);
+            if side == -1 {
+                left.1 *= 0.5;
+            }
+            side = -1;
         }
     }
     shares
@@ -177,7 +240,7 @@ fn free_energy(layer: Layer, nuclei: f64, shares: &[f64; 3], temperature_k: f64)
             let zero = Jet::constant(1e-6);
             one = one + ions::liquid_interaction(Jet::power_law(gamma, 1.0 / 3.0, -1.0), zero);
         }
-        one = one + Jet::power_law(nuclei * Layer::excluded_volume_cm3(stage), 1.0, 0.0);
+        one = one + crowding(stage, nuclei, temperature_k);
         free = free + one * share;
     }
     (free, electrons)
@@ -211,6 +274,5 @@ pub fn layer_state(layer: Layer, density_g_cm3: f64, temperature_k: f64) -> Laye
         electrons_per_cm3: electrons,
         stages_per_cm3: shares.map(|share| share * nuclei),
         degeneracy: gas.v + gas.x,
-        dissolution: nuclei * Layer::excluded_volume_cm3(&layer.stages()[0]),
     }
 }

@@ -2,9 +2,15 @@
 
 pub mod cold;
 pub mod conduction;
+pub mod convection;
+pub mod cooling;
 pub mod electrons;
+pub mod envelope;
 pub mod ions;
 pub mod jet;
 pub mod layer;
+pub mod material;
 pub mod matter;
+pub mod neutrinos;
 pub mod opacity;
+pub mod structure;

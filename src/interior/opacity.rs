@@ -14,7 +14,7 @@ use std::f64::consts::PI;
 
 use super::layer::{Layer, LayerState, layer_state};
 use crate::physics::constants::{
-    BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_VOLT_ERG, LIGHT_SPEED_CM_S, PLANCK_ERG_S, THOMSON_CM2,
+    BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, LIGHT_SPEED_CM_S, PLANCK_ERG_S, THOMSON_CM2,
 };
 
 const RYDBERG_EV: f64 = 13.598;
@@ -174,6 +174,9 @@ pub fn rosseland_of_state_cm2_g(layer: Layer, state: &LayerState) -> f64 {
     let [neutral, once, twice] = state.stages_per_cm3;
     let rho = state.matter.density_g_cm3;
 
+    let wave2 = PLANCK_ERG_S * PLANCK_ERG_S / (2.0 * PI * ELECTRON_MASS_G * kt);
+    // What e^eta would be in a Maxwellian gas of the same density.
+    let maxwell = 0.5 * electrons * wave2 * wave2.sqrt();
     let scattering = THOMSON_CM2 * electrons
         / ((1.0 + 2.7e11 * rho / (t * t)) * (1.0 + (t / 4.5e8).powf(0.86)));
     let bound: Vec<BoundLevels> = match layer {
@@ -191,13 +194,7 @@ pub fn rosseland_of_state_cm2_g(layer: Layer, state: &LayerState) -> f64 {
         let frequency = u * kt / PLANCK_ERG_S;
         let stimulated = -(-u).exp_m1();
         // Pauli blocking of the initial and final states of the scattered electron.
-        let eta = state.degeneracy;
-        let blocking = if eta > -6.0 {
-            ((eta.exp().ln_1p() - (eta - u).exp().ln_1p()) / (eta.exp() * stimulated)).min(1.0)
-        } else {
-            1.0
-        };
-        let blocking = blocking * blocking_normalisation(state);
+        let blocking = (softplus(state.degeneracy) - softplus(state.degeneracy - u)) / (stimulated * maxwell);
         let mut free = once * free_free_gaunt(u, RYDBERG_EV / kt_ev);
         if twice > 0.0 {
             free += 4.0 * twice * free_free_gaunt(u, 4.0 * RYDBERG_EV / kt_ev);
@@ -223,17 +220,9 @@ pub fn rosseland_of_state_cm2_g(layer: Layer, state: &LayerState) -> f64 {
     weights / transparency / rho
 }
 
-/// Ratio of e^eta to its Maxwellian value at the same density, so that blocking counts from the
-/// Maxwellian formula for the true number of electrons.
-fn blocking_normalisation(state: &LayerState) -> f64 {
-    let t = state.matter.temperature_k;
-    if state.degeneracy < -6.0 {
-        return 1.0;
-    }
-    let wave2 = PLANCK_ERG_S * PLANCK_ERG_S
-        / (2.0 * PI * crate::physics::constants::ELECTRON_MASS_G * BOLTZMANN_ERG_K * t);
-    let maxwell = 0.5 * state.electrons_per_cm3 * wave2 * wave2.sqrt();
-    state.degeneracy.exp() / maxwell
+/// ln(1 + e^x).
+fn softplus(x: f64) -> f64 {
+    if x > 30.0 { x } else { x.exp().ln_1p() }
 }
 
 /// Rosseland mean opacity of a layer, cm2/g.
