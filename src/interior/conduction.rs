@@ -17,6 +17,7 @@ use std::sync::LazyLock;
 
 use gauss_quad::GaussLegendre;
 
+use super::matter::electron_coupling;
 use super::electrons::{ELECTRON_REST_ENERGY_ERG, ElectronGas, relativity_parameter};
 use crate::physics::constants::{
     ATOMIC_MASS_UNIT_G, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S,
@@ -88,7 +89,10 @@ pub fn thermal_conductivity_cgs(
     let kt = BOLTZMANN_ERG_K * temperature_k;
     let ions = electron_density_per_cm3 / charge;
     let e2 = ELEMENTARY_CHARGE_ESU * ELEMENTARY_CHARGE_ESU;
-    let screen_ions = 4.0 * PI * charge * charge * e2 * ions / kt;
+    let debye = 4.0 * PI * charge * charge * e2 * ions / kt;
+    let coupling = electron_coupling(electron_density_per_cm3, temperature_k) * charge.powf(5.0 / 3.0);
+    // Strongly coupled ions do not screen each other: their order is in `w` instead.
+    let screen_ions = debye * (1.0 + 0.06 * coupling) * (-coupling.sqrt()).exp();
     let screen_electrons = 4.0 * PI * e2 * electron_density_per_cm3 / (kt * stiffness);
     let x_fermi = relativity_parameter(electron_density_per_cm3);
     let plasma = |density: f64, mass: f64| HBAR_ERG_S * (4.0 * PI * e2 * density / mass).sqrt() / BOLTZMANN_ERG_K;
@@ -106,7 +110,7 @@ pub fn thermal_conductivity_cgs(
         let double_wave = 2.0 * momentum * ELECTRON_MASS_G * LIGHT_SPEED_CM_S / HBAR_ERG_S;
         let born = PI * FINE_STRUCTURE * charge * beta;
         let s = (screen_ions + screen_electrons) * (-born).exp() / (double_wave * double_wave);
-        let w = U_MINUS_2 * double_wave * double_wave / screen_ions * (1.0 + born / 3.0);
+        let w = U_MINUS_2 * double_wave * double_wave / debye * (1.0 + born / 3.0);
         let freeze = quantum / (quantum * quantum + 0.19 * 0.19 / charge.cbrt()).sqrt()
             * (1.0 + 0.122 * born * born)
             + 0.0105 * (1.0 - 1.0 / charge) * (1.0 + beta.powi(3) * born) * quantum

@@ -11,7 +11,8 @@
 //! than 0.5 Myr.
 
 use super::envelope::EnvelopePoint;
-use super::structure::{Core, Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, solve_star};
+use super::core::Core;
+use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, solve_star};
 use crate::physics::constants::SOLAR_MASS_G;
 
 /// Effective temperature at which ages begin, K.
@@ -43,12 +44,14 @@ fn envelope_at(points: &[EnvelopePoint], ln_fraction: f64) -> Option<(f64, f64)>
 
 /// Heat given up between two models, erg (positive when the second has less entropy).
 fn heat_between(hot: &StarModel, cool: &StarModel) -> Option<f64> {
-    let temperature_k = 0.5 * (hot.core_temperature_k + cool.core_temperature_k);
     let mut heat = 0.0;
     for (h, c) in hot.core.windows(2).zip(cool.core.windows(2)) {
         let shell_g = h[1].mass_g - h[0].mass_g;
-        let loss = |k: usize| h[k].matter.entropy_erg_g_k - c[k].matter.entropy_erg_g_k;
-        heat += temperature_k * 0.5 * (loss(0) + loss(1)) * shell_g;
+        let loss = |k: usize| {
+            0.5 * (h[k].matter.temperature_k + c[k].matter.temperature_k)
+                * (h[k].matter.entropy_erg_g_k - c[k].matter.entropy_erg_g_k)
+        };
+        heat += 0.5 * (loss(0) + loss(1)) * shell_g;
     }
     let (first, last) = (HELIUM_FRACTION.ln(), SHALLOWEST_FRACTION.ln());
     let mass_g = hot.mass_msun * SOLAR_MASS_G;
@@ -101,7 +104,7 @@ pub fn cooling_track(
             }
             break;
         };
-        if models.last().is_some_and(|cooler| model.core_temperature_k <= cooler.core_temperature_k) {
+        if models.last().is_some_and(|cooler| model.central_temperature_k <= cooler.central_temperature_k) {
             break;
         }
         models.push(model);

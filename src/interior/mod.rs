@@ -4,6 +4,7 @@ pub mod cold;
 pub mod conduction;
 pub mod convection;
 pub mod cooling;
+pub mod core;
 pub mod electrons;
 pub mod envelope;
 pub mod ions;

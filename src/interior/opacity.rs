@@ -12,12 +12,15 @@
 
 use std::f64::consts::PI;
 
+use super::electrons::ElectronGas;
 use super::layer::{Layer, LayerState, layer_state};
 use crate::physics::constants::{
     BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, LIGHT_SPEED_CM_S, PLANCK_ERG_S, THOMSON_CM2,
 };
 
 const RYDBERG_EV: f64 = 13.598;
+/// Above this H- is a trace and its fits are not meant for use.
+const H_MINUS_BELOW_K: f64 = 2.5e4;
 const LEVELS: usize = 10;
 /// Photon energies over kT: logarithmic, from 0.05 to 40; the weight outside is below 1e-5.
 const PHOTONS: usize = 72;
@@ -165,20 +168,55 @@ impl BoundLevels {
     }
 }
 
+/// Free electrons among ions: what every mixture shares.
+struct Plasma {
+    electrons_per_cm3: f64,
+    density_g_cm3: f64,
+    temperature_k: f64,
+    degeneracy: f64,
+}
+
+impl Plasma {
+    /// Rosseland mean of free-free absorption, scattering by electrons, and `other(u)`, the absorption and
+    /// scattering (1/cm) of all else at photon energy u kT.
+    fn rosseland_cm2_g(&self, ions: &[(f64, f64)], other: impl Fn(f64) -> f64) -> f64 {
+        let (t, rho, electrons) = (self.temperature_k, self.density_g_cm3, self.electrons_per_cm3);
+        let kt = BOLTZMANN_ERG_K * t;
+        let kt_ev = kt / ELECTRON_VOLT_ERG;
+        let wave2 = PLANCK_ERG_S * PLANCK_ERG_S / (2.0 * PI * ELECTRON_MASS_G * kt);
+        // What e^eta would be in a Maxwellian gas of the same density.
+        let maxwell = 0.5 * electrons * wave2 * wave2.sqrt();
+        let scattering =
+            THOMSON_CM2 * electrons / ((1.0 + 2.7e11 * rho / (t * t)) * (1.0 + (t / 4.5e8).powf(0.86)));
+        let step = (HIGHEST_PHOTON / LOWEST_PHOTON).ln() / (PHOTONS - 1) as f64;
+        let (mut weights, mut transparency) = (0.0, 0.0);
+        for k in 0..PHOTONS {
+            let u = LOWEST_PHOTON * (k as f64 * step).exp();
+            let frequency = u * kt / PLANCK_ERG_S;
+            let stimulated = -(-u).exp_m1();
+            // Pauli blocking of the initial and final states of the scattered electron.
+            let blocking =
+                (softplus(self.degeneracy) - softplus(self.degeneracy - u)) / (stimulated * maxwell);
+            let free: f64 = ions
+                .iter()
+                .map(|(z, n)| z * z * n * free_free_gaunt(u, z * z * RYDBERG_EV / kt_ev))
+                .sum();
+            // Kramers: 3.692e8 cgs (Rybicki & Lightman 1979, eq. 5.18a).
+            let absorption =
+                3.692e8 * electrons * free / (t.sqrt() * frequency.powi(3)) * stimulated * blocking;
+            let weight = u.powi(5) * (-u).exp() / (stimulated * stimulated);
+            weights += weight;
+            transparency += weight / (absorption + scattering + other(u));
+        }
+        weights / transparency / rho
+    }
+}
+
 /// Rosseland mean of an already known state, cm2/g.
 pub fn rosseland_of_state_cm2_g(layer: Layer, state: &LayerState) -> f64 {
     let t = state.matter.temperature_k;
     let kt = BOLTZMANN_ERG_K * t;
-    let kt_ev = kt / ELECTRON_VOLT_ERG;
-    let electrons = state.electrons_per_cm3;
     let [neutral, once, twice] = state.stages_per_cm3;
-    let rho = state.matter.density_g_cm3;
-
-    let wave2 = PLANCK_ERG_S * PLANCK_ERG_S / (2.0 * PI * ELECTRON_MASS_G * kt);
-    // What e^eta would be in a Maxwellian gas of the same density.
-    let maxwell = 0.5 * electrons * wave2 * wave2.sqrt();
-    let scattering = THOMSON_CM2 * electrons
-        / ((1.0 + 2.7e11 * rho / (t * t)) * (1.0 + (t / 4.5e8).powf(0.86)));
     let bound: Vec<BoundLevels> = match layer {
         Layer::Hydrogen => vec![BoundLevels::new(state, neutral, 1.0, RYDBERG_EV, 2.0)],
         Layer::Helium => vec![
@@ -186,43 +224,49 @@ pub fn rosseland_of_state_cm2_g(layer: Layer, state: &LayerState) -> f64 {
             BoundLevels::new(state, once, 2.0, 54.418, 2.0),
         ],
     };
-    let step = (HIGHEST_PHOTON / LOWEST_PHOTON).ln() / (PHOTONS - 1) as f64;
-    let (mut weights, mut transparency) = (0.0, 0.0);
-    for k in 0..PHOTONS {
-        let u = LOWEST_PHOTON * (k as f64 * step).exp();
-        let photon_ev = u * kt_ev;
+    let other = |u: f64| {
         let frequency = u * kt / PLANCK_ERG_S;
-        let stimulated = -(-u).exp_m1();
-        // Pauli blocking of the initial and final states of the scattered electron.
-        let blocking = (softplus(state.degeneracy) - softplus(state.degeneracy - u)) / (stimulated * maxwell);
-        let mut free = once * free_free_gaunt(u, RYDBERG_EV / kt_ev);
-        if twice > 0.0 {
-            free += 4.0 * twice * free_free_gaunt(u, 4.0 * RYDBERG_EV / kt_ev);
-        }
-        // Kramers: 3.692e8 cgs (Rybicki & Lightman 1979, eq. 5.18a).
-        let mut alpha = 3.692e8 * electrons * free / (t.sqrt() * frequency.powi(3)) * stimulated * blocking;
-        alpha += bound.iter().map(|b| b.absorption(photon_ev)).sum::<f64>() * stimulated;
-        let wave_um = 1e4 * LIGHT_SPEED_CM_S / frequency;
-        if layer == Layer::Hydrogen && neutral > 0.0 {
-            let pressure = electrons * kt;
-            if t < 2.5e4 {
+        let photon_ev = u * kt / ELECTRON_VOLT_ERG;
+        let mut sum = bound.iter().map(|b| b.absorption(photon_ev)).sum::<f64>() * -(-u).exp_m1();
+        if layer == Layer::Hydrogen {
+            let wave_um = 1e4 * LIGHT_SPEED_CM_S / frequency;
+            if t < H_MINUS_BELOW_K {
                 let minus = h_minus_bound_free(wave_um, t) + h_minus_free_free(wave_um, t);
-                alpha += minus * pressure * neutral;
+                sum += minus * state.electrons_per_cm3 * kt * neutral;
             }
             let wave_aa = (1e4 * wave_um).max(1300.0);
-            alpha += neutral
+            sum += neutral
                 * (5.799e-13 / wave_aa.powi(4) + 1.422e-6 / wave_aa.powi(6) + 2.784 / wave_aa.powi(8));
         }
-        let weight = u.powi(5) * (-u).exp() / (stimulated * stimulated);
-        weights += weight;
-        transparency += weight / (alpha + scattering);
-    }
-    weights / transparency / rho
+        sum
+    };
+    let plasma = Plasma {
+        electrons_per_cm3: state.electrons_per_cm3,
+        density_g_cm3: state.matter.density_g_cm3,
+        temperature_k: t,
+        degeneracy: state.degeneracy,
+    };
+    plasma.rosseland_cm2_g(&[(1.0, once), (2.0, twice)], other)
 }
 
 /// ln(1 + e^x).
 fn softplus(x: f64) -> f64 {
     if x > 30.0 { x } else { x.exp().ln_1p() }
+}
+
+/// Rosseland mean of a fully ionised mixture, cm2/g: free-free and scattering alone.
+///
+/// `ions` holds (charge, density per cm3). Bound-free absorption of carbon and oxygen is left out: cores are
+/// hotter than 1e6 K or conduct.
+pub fn ionised_rosseland_cm2_g(
+    ions: &[(f64, f64)],
+    electrons_per_cm3: f64,
+    density_g_cm3: f64,
+    temperature_k: f64,
+) -> f64 {
+    let gas = ElectronGas::shared().free_energy(electrons_per_cm3, temperature_k);
+    let plasma = Plasma { electrons_per_cm3, density_g_cm3, temperature_k, degeneracy: gas.v + gas.x };
+    plasma.rosseland_cm2_g(ions, |_| 0.0)
 }
 
 /// Rosseland mean opacity of a layer, cm2/g.

@@ -203,7 +203,7 @@ fn validate_cold_limits() {
 
 #[test]
 fn scratch_track() {
-    use emberline::interior::structure::*;
+    use emberline::interior::{core::*, structure::*};
     use emberline::interior::cooling::*;
     let n = 66;
     let teffs: Vec<f64> = (0..=n).map(|i| 4000.0 * (30.0f64).powf(f64::from(i) / f64::from(n))).collect();
@@ -212,17 +212,7 @@ fn scratch_track() {
         let Some(t) = cooling_track(mass, &teffs, HydrogenLayer::Thick, Core::of_mass(mass)) else { println!("{mass}: none"); continue };
         println!("{mass}: {} models, {:?}", t.models.len(), t0.elapsed());
         for (m, a) in t.models.iter().zip(&t.age_s) {
-            println!("  {:.0} logg {:.4} age {:.4e} Gyr Tc {:.3e} L {:.3e} Lnu {:.2e} solid {:.2}", m.teff_k, m.log_g(), a / 3.15576e16, m.core_temperature_k, m.luminosity_erg_s / 3.828e33, m.neutrino_luminosity_erg_s / 3.828e33, m.crystallised_fraction);
-        }
-    }
-}
-#[test]
-fn scratch_profile() {
-    use emberline::interior::structure::*;
-    for teff in [5000.0, 6000.0, 8000.0, 12000.] {
-        let m = solve_star(0.6, teff, HydrogenLayer::Thick, Core::CarbonOxygen, Guess::cold(0.6, Core::CarbonOxygen).unwrap()).unwrap();
-        for p in m.envelope.iter().step_by(12) {
-            println!("{teff} q {:.2} lgP {:.2} T {:.3e} rho {:.3e} conv {}", p.ln_outer_fraction/2.302585, p.ln_pressure/2.302585, p.ln_temperature.exp(), p.ln_density.exp(), p.is_convective);
+            println!("  {:.0} logg {:.4} age {:.4e} Gyr Tc {:.3e} L {:.3e} Lnu {:.2e} solid {:.2}", m.teff_k, m.log_g(), a / 3.15576e16, m.central_temperature_k, m.luminosity_erg_s / 3.828e33, m.neutrino_luminosity_erg_s / 3.828e33, m.crystallised_fraction);
         }
     }
 }
