@@ -12,7 +12,8 @@
 
 use super::envelope::EnvelopePoint;
 use super::core::Core;
-use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, solve_star};
+use super::evolution::evolve;
+use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, isothermal_star};
 use crate::physics::constants::SOLAR_MASS_G;
 
 /// Effective temperature at which ages begin, K.
@@ -24,7 +25,7 @@ const ENVELOPE_NODES: usize = 40;
 /// One mass cooling.
 #[derive(Debug, Clone)]
 pub struct CoolingTrack {
-    /// Models, cool to hot (ascending Teff).
+    /// Models, hot to cool.
     pub models: Vec<StarModel>,
     /// Age of each, s.
     pub age_s: Vec<f64>,
@@ -81,37 +82,73 @@ fn time_between(hot: &StarModel, cool: &StarModel) -> Option<f64> {
     Some(heat_between(hot, cool)? / logarithmic_mean(loss(hot), loss(cool)))
 }
 
-/// Models at the given temperatures (ascending) as far up as the star is hydrostatic, with their ages.
-///
-/// The track ends below the first temperature that has no model, or where a hotter surface would need a
-/// cooler core: such a star never was that hot.
-pub fn cooling_track(
-    mass_msun: f64,
-    teffs_k: &[f64],
-    layer: HydrogenLayer,
-    core: Core,
-) -> Option<CoolingTrack> {
-    let mut models: Vec<StarModel> = Vec::with_capacity(teffs_k.len());
-    for &teff_k in teffs_k {
+/// The hottest isothermal star of a mass at or below [`START_TEFF_K`], found by warming a cold one.
+fn starting_model(mass_msun: f64, layer: HydrogenLayer, core: Core) -> Option<StarModel> {
+    const LOWEST_K: f64 = 6000.0;
+    const STEPS: i32 = 100;
+    let mut models: Vec<StarModel> = Vec::new();
+    for i in 0..=STEPS {
+        let teff_k = LOWEST_K * (START_TEFF_K / LOWEST_K).powf(f64::from(i) / f64::from(STEPS));
         let guess = match models.as_slice() {
             [.., older, newer] => Guess::continued(older, newer, teff_k),
             [only] => Guess::from_model(only),
             [] => Guess::cold(mass_msun, core)?,
         };
-        let Some(model) = solve_star(mass_msun, teff_k, layer, core, guess) else {
-            if models.is_empty() {
-                continue;
-            }
+        let Some(model) = isothermal_star(mass_msun, teff_k, layer, core, guess) else {
             break;
         };
+        // Where a hotter surface would need a cooler core, the star never was that hot.
         if models.last().is_some_and(|cooler| model.central_temperature_k <= cooler.central_temperature_k) {
             break;
         }
         models.push(model);
     }
-    let mut age_s = vec![0.0; models.len()];
-    for i in (0..models.len().checked_sub(1)?).rev() {
-        age_s[i] = age_s[i + 1] + time_between(&models[i + 1], &models[i])?;
+    models.pop()
+}
+
+/// A star cooling from the hottest isothermal model of its mass to `coolest_teff_k`.
+///
+/// `None` if not even the start can be built; a track that fails on the way ends there.
+pub fn cooling_track(
+    mass_msun: f64,
+    coolest_teff_k: f64,
+    layer: HydrogenLayer,
+    core: Core,
+) -> Option<CoolingTrack> {
+    /// Wanted change of ln Teff in a step, and the least time step as a share of the first one.
+    const STRIDE: f64 = 0.025;
+    const MOST_STEPS: usize = 600;
+    const MOST_HALVINGS: usize = 12;
+    let start = starting_model(mass_msun, layer, core)?;
+    let thermal_erg: f64 = start
+        .core
+        .windows(2)
+        .map(|w| {
+            let m = &w[1].matter;
+            (w[1].mass_g - w[0].mass_g) * m.heat_capacity_v_erg_g_k * m.temperature_k
+        })
+        .sum();
+    let mut step_s = 3e-3 * thermal_erg / (start.luminosity_erg_s + start.neutrino_luminosity_erg_s);
+    let mut track = CoolingTrack { models: vec![start], age_s: vec![0.0] };
+    for _ in 0..MOST_STEPS {
+        let (now, age_s) = (track.models.last()?, *track.age_s.last()?);
+        if now.teff_k < coolest_teff_k {
+            break;
+        }
+        let mut next = None;
+        for _ in 0..MOST_HALVINGS {
+            next = evolve(now, layer, core, step_s);
+            if next.is_some() {
+                break;
+            }
+            step_s *= 0.5;
+        }
+        let Some(next) = next else { break };
+        let change = (now.teff_k / next.teff_k).ln().abs().max(1e-4);
+        step_s *= (STRIDE / change).clamp(0.3, 1.6);
+        let age_s = age_s + time_between(now, &next)?;
+        track.models.push(next);
+        track.age_s.push(age_s);
     }
-    Some(CoolingTrack { models, age_s })
+    Some(track)
 }

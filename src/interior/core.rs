@@ -1,10 +1,8 @@
-//! The core of a star: composition, and its structure outward from the centre.
+//! The core of a star: its material, its mass grid, and isothermal cores as starting models.
 //!
-//! In: mass, central density and temperature, the star's luminosities. Out: shells up to the base of
-//! the helium layer. Heat flows by conduction (with photons) along L(m), which rises in proportion to the mass
-//! (every gram gives up about the same heat) less the neutrinos emitted inside m. The gradient
-//! matters: below the envelope the temperature still rises by 20 % at 10 000 K and 0.6 Msun, more in hotter
-//! stars. Variables r^2, ln rho, ln T over z = m^(2/3), regular at the centre; Runge-Kutta.
+//! In: kind of core, stellar mass, central density, temperature. Out: shells up to the base of the helium
+//! layer. Variables r^2 and ln rho over z = m^(2/3), regular at the centre; Runge-Kutta. Cores with
+//! heat flow come from [`super::evolution`].
 
 use std::f64::consts::PI;
 use std::sync::OnceLock;
@@ -19,7 +17,7 @@ use super::matter::{Composition, MatterState, matter_state};
 use super::neutrinos::neutrino_loss_erg_g_s;
 use super::opacity::ionised_rosseland_cm2_g;
 use super::structure::HELIUM_FRACTION;
-use crate::physics::constants::{GRAVITATION_CGS, STEFAN_BOLTZMANN_CGS};
+use crate::physics::constants::GRAVITATION_CGS;
 
 /// Cores below this mass are helium: the core mass at helium ignition (0.45 - 0.47 Msun), common practice.
 pub const HELIUM_CORE_BELOW_MSUN: f64 = 0.45;
@@ -112,8 +110,13 @@ impl CoreMaterial {
         TABLES[core as usize].get_or_init(|| CoreMaterial::build(core)).as_ref()
     }
 
+    /// ln of the opacity, cm2/g; `None` outside the table.
+    pub fn ln_opacity(&self, ln_density: f64, ln_temperature: f64) -> Option<f64> {
+        self.ln_opacity.interp_scalar(ln_density, ln_temperature).ok()
+    }
+
     /// Neutrino losses, erg/g/s.
-    fn neutrinos_erg_g_s(&self, density_g_cm3: f64, temperature_k: f64) -> f64 {
+    pub fn neutrinos_erg_g_s(&self, density_g_cm3: f64, temperature_k: f64) -> f64 {
         neutrino_loss_erg_g_s(
             self.composition.mass_per_electron_u(),
             self.mean_charge2_per_mass,
@@ -128,43 +131,20 @@ impl CoreMaterial {
 pub struct Shell {
     /// Enclosed mass, g.
     pub mass_g: f64,
+    /// Radius, cm.
+    pub radius_cm: f64,
+    /// Energy flowing outward through it, erg/s.
+    pub luminosity_erg_s: f64,
     /// Thermodynamic state.
     pub matter: MatterState,
 }
 
-/// What a core is computed for.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct CoreInput {
-    /// Mass of the whole star, g.
-    pub mass_g: f64,
-    /// ln of the central density, g/cm3.
-    pub ln_central_density: f64,
-    /// ln of the central temperature, K.
-    pub ln_central_temperature: f64,
-    /// Photon luminosity of the star, erg/s.
-    pub luminosity_erg_s: f64,
-    /// Neutrino luminosity of the core, erg/s, as assumed for the flow of heat.
-    pub neutrino_luminosity_erg_s: f64,
-    /// Law of gravity.
-    pub gravity: Gravity,
-}
-
-/// A core integrated to the base of the helium layer.
-#[derive(Debug, Clone)]
-pub struct CoreSolution {
-    /// From the centre outward, the same mass fractions in every model.
-    pub shells: Vec<Shell>,
-    /// Outer radius, cm.
-    pub radius_cm: f64,
-    /// Neutrino luminosity found, erg/s.
-    pub neutrino_luminosity_erg_s: f64,
-}
-
-/// Mass fractions of the core nodes.
-fn core_nodes() -> Vec<f64> {
+/// Mass fractions of the core nodes; the first is a ball so small that it is uniform.
+pub fn core_nodes() -> Vec<f64> {
     let split = INNER_SHARE.powf(2.0 / 3.0);
-    let mut nodes: Vec<f64> =
-        (0..=INNER_NODES).map(|i| (split * i as f64 / INNER_NODES as f64).powf(1.5)).collect();
+    let node = |i: usize| (split * i as f64 / INNER_NODES as f64).powf(1.5);
+    let mut nodes: Vec<f64> = vec![0.01 * node(1)];
+    nodes.extend((1..=INNER_NODES).map(node));
     let (first, last) = ((1.0 - INNER_SHARE).ln(), HELIUM_FRACTION.ln());
     nodes.extend(
         (1..=OUTER_NODES).map(|i| 1.0 - (first + (last - first) * i as f64 / OUTER_NODES as f64).exp()),
@@ -172,66 +152,48 @@ fn core_nodes() -> Vec<f64> {
     nodes
 }
 
-/// State of the integration: r^2, ln rho, ln T, neutrino luminosity inside.
-#[derive(Clone, Copy)]
-struct Vector([f64; 4]);
-
-impl Vector {
-    fn plus(&self, d: &Vector, h: f64) -> Vector {
-        Vector(std::array::from_fn(|i| self.0[i] + h * d.0[i]))
-    }
-}
-
-/// Integrates a core outward; `None` outside the tables or where it has no hydrostatic solution.
-pub fn integrate_core(input: &CoreInput, material: &CoreMaterial) -> Option<CoreSolution> {
-    let total = (input.luminosity_erg_s + input.neutrino_luminosity_erg_s) / input.mass_g;
-    let slope = |z: f64, at: &Vector| -> Option<Vector> {
-        let Vector([r2, ln_density, ln_temperature, neutrinos]) = *at;
-        let (rho, t) = (ln_density.exp(), ln_temperature.exp());
-        let state = matter_state(&material.composition, rho, t);
+/// Integrates an isothermal core outward; `None` where it has no hydrostatic solution.
+pub fn isothermal_core(
+    mass_g: f64,
+    ln_central_density: f64,
+    temperature_k: f64,
+    composition: &Composition,
+    gravity: Gravity,
+) -> Option<Vec<Shell>> {
+    let slope = |z: f64, r2: f64, ln_density: f64| -> Option<(f64, f64)> {
+        let rho = ln_density.exp();
+        let state = matter_state(composition, rho, temperature_k);
         let (r, m) = (r2.max(0.0).sqrt(), z.powf(1.5));
-        let dm = 1.5 * z.sqrt();
-        let opacity = material.ln_opacity.interp_scalar(ln_density, ln_temperature).ok()?.exp();
-        let heat = total - neutrinos / m;
-        let gradient = 3.0 * opacity * state.pressure_cgs * heat
-            / (64.0 * PI * STEFAN_BOLTZMANN_CGS * GRAVITATION_CGS * t.powi(4));
-        let dln_p = -GRAVITATION_CGS * m * dm / (4.0 * PI * r2 * r2) / state.pressure_cgs
-            * input.gravity.factor(state.pressure_cgs, rho, r, m);
-        let dln_t = gradient * dln_p;
-        let derivative = [
-            2.0 * dm / (4.0 * PI * r * rho),
-            (dln_p - state.chi_temperature * dln_t) / state.chi_density,
-            dln_t,
-            dm * material.neutrinos_erg_g_s(rho, t),
-        ];
-        (derivative.iter().all(|d| d.is_finite()) && state.chi_density > 0.0).then_some(Vector(derivative))
+        let dr2 = 3.0 * z.sqrt() / (4.0 * PI * r * rho);
+        let dp = -1.5 * GRAVITATION_CGS * z * z / (4.0 * PI * r2 * r2)
+            * gravity.factor(state.pressure_cgs, rho, r, m);
+        let d = dp / (state.pressure_cgs * state.chi_density);
+        (dr2.is_finite() && d.is_finite() && state.chi_density > 0.0).then_some((dr2, d))
     };
     let nodes = core_nodes();
-    let (rho, t) = (input.ln_central_density.exp(), input.ln_central_temperature.exp());
-    let central = matter_state(&material.composition, rho, t);
-    let mut shells = vec![Shell { mass_g: 0.0, matter: central }];
-    // Uniform ball up to a thousandth of the first node.
-    let first_mass = nodes[1] * 1e-3 * input.mass_g;
-    let mut z = first_mass.powf(2.0 / 3.0);
-    let r2 = (3.0 * first_mass / (4.0 * PI * rho)).powf(2.0 / 3.0);
-    let drop = 2.0 * PI / 3.0 * GRAVITATION_CGS * rho * rho * r2 / (central.pressure_cgs * central.chi_density);
-    let mut at = Vector([
-        r2,
-        input.ln_central_density - drop,
-        input.ln_central_temperature,
-        first_mass * material.neutrinos_erg_g_s(rho, t),
-    ]);
+    let central = matter_state(composition, ln_central_density.exp(), temperature_k);
+    let mut z = (nodes[0] * mass_g).powf(2.0 / 3.0);
+    let mut r2 = (3.0 * nodes[0] * mass_g / (4.0 * PI * central.density_g_cm3)).powf(2.0 / 3.0);
+    let mut ln_density = ln_central_density
+        - 2.0 * PI / 3.0 * GRAVITATION_CGS * central.density_g_cm3.powi(2) * r2
+            / (central.pressure_cgs * central.chi_density);
+    let shell = |mass_g: f64, r2: f64, ln_density: f64| Shell {
+        mass_g,
+        radius_cm: r2.sqrt(),
+        luminosity_erg_s: 0.0,
+        matter: matter_state(composition, ln_density.exp(), temperature_k),
+    };
+    let mut shells = vec![shell(nodes[0] * mass_g, r2, ln_density)];
     for node in &nodes[1..] {
-        let mass_g = node * input.mass_g;
-        let h = mass_g.powf(2.0 / 3.0) - z;
-        let k1 = slope(z, &at)?;
-        let k2 = slope(z + 0.5 * h, &at.plus(&k1, 0.5 * h))?;
-        let k3 = slope(z + 0.5 * h, &at.plus(&k2, 0.5 * h))?;
-        let k4 = slope(z + h, &at.plus(&k3, h))?;
-        at = at.plus(&k1, h / 6.0).plus(&k2, h / 3.0).plus(&k3, h / 3.0).plus(&k4, h / 6.0);
+        let h = (node * mass_g).powf(2.0 / 3.0) - z;
+        let k1 = slope(z, r2, ln_density)?;
+        let k2 = slope(z + 0.5 * h, r2 + 0.5 * h * k1.0, ln_density + 0.5 * h * k1.1)?;
+        let k3 = slope(z + 0.5 * h, r2 + 0.5 * h * k2.0, ln_density + 0.5 * h * k2.1)?;
+        let k4 = slope(z + h, r2 + h * k3.0, ln_density + h * k3.1)?;
+        r2 += h / 6.0 * (k1.0 + 2.0 * k2.0 + 2.0 * k3.0 + k4.0);
+        ln_density += h / 6.0 * (k1.1 + 2.0 * k2.1 + 2.0 * k3.1 + k4.1);
         z += h;
-        let matter = matter_state(&material.composition, at.0[1].exp(), at.0[2].exp());
-        shells.push(Shell { mass_g, matter });
+        shells.push(shell(node * mass_g, r2, ln_density));
     }
-    Some(CoreSolution { shells, radius_cm: at.0[0].sqrt(), neutrino_luminosity_erg_s: at.0[3] })
+    Some(shells)
 }

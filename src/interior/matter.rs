@@ -203,11 +203,17 @@ pub fn exchange_jet(electron_density_per_cm3: f64, temperature_k: f64) -> Jet {
     )
 }
 
-/// Free energy per nucleus over kT, without radiation, and the mean coupling parameter.
-fn free_energy(composition: &Composition, density_g_cm3: f64, temperature_k: f64) -> (Jet, f64) {
+/// Phase of the ions.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Phase {
+    Liquid,
+    Solid,
+}
+
+/// Free energy per nucleus over kT in one phase, without radiation.
+fn free_energy(composition: &Composition, density_g_cm3: f64, temperature_k: f64, phase: Phase) -> Jet {
     let electrons = composition.electron_density_per_cm3(density_g_cm3);
     let coupling_e = electron_coupling(electrons, temperature_k);
-    let coupling = coupling_e * composition.mean_charge_5_3();
     let plasma_k = PLANCK_ERG_S / (2.0 * PI * BOLTZMANN_ERG_K)
         * (4.0 * PI * ELEMENTARY_CHARGE_ESU.powi(2) * electrons / ATOMIC_MASS_UNIT_G).sqrt();
 
@@ -217,26 +223,74 @@ fn free_energy(composition: &Composition, density_g_cm3: f64, temperature_k: f64
     for s in &composition.species {
         let gamma = Jet::power_law(coupling_e * s.charge.powf(5.0 / 3.0), 1.0 / 3.0, -1.0);
         let eta = Jet::power_law(plasma_k * (s.charge / s.mass_u).sqrt() / temperature_k, 0.5, -1.0);
-        let one = if coupling > MELTING_GAMMA {
-            ions::solid(gamma, eta)
-        } else {
-            ideal_ion(electrons / s.charge, s.mass_u * ATOMIC_MASS_UNIT_G, temperature_k)
-                + ions::liquid_interaction(gamma, eta)
+        let one = match phase {
+            Phase::Solid => ions::solid(gamma, eta),
+            Phase::Liquid => {
+                ideal_ion(electrons / s.charge, s.mass_u * ATOMIC_MASS_UNIT_G, temperature_k)
+                    + ions::liquid_interaction(gamma, eta)
+            }
         };
         let mixing = (s.number_fraction * s.charge / composition.mean_charge).ln();
         free = free + (one + mixing) * s.number_fraction;
     }
-    (free, coupling)
+    free
 }
 
-/// The state of fully ionised matter.
+/// The state of fully ionised matter, liquid up to [`MELTING_GAMMA`] and solid above.
 ///
 /// # Domain
 /// Outside the electron table every value is NaN.
 pub fn matter_state(composition: &Composition, density_g_cm3: f64, temperature_k: f64) -> MatterState {
-    let (free, coupling) = free_energy(composition, density_g_cm3, temperature_k);
+    let electrons = composition.electron_density_per_cm3(density_g_cm3);
+    let coupling = electron_coupling(electrons, temperature_k) * composition.mean_charge_5_3();
+    let phase = if coupling > MELTING_GAMMA { Phase::Solid } else { Phase::Liquid };
+    state_in_phase(composition, density_g_cm3, temperature_k, coupling, phase)
+}
+
+fn state_in_phase(
+    composition: &Composition,
+    density_g_cm3: f64,
+    temperature_k: f64,
+    coupling: f64,
+    phase: Phase,
+) -> MatterState {
+    let free = free_energy(composition, density_g_cm3, temperature_k, phase);
     let nuclei_per_g = 1.0 / composition.mean_mass_g();
     MatterState::from_free_energy(free, nuclei_per_g, density_g_cm3, temperature_k, coupling)
+}
+
+/// Half-width, relative to [`MELTING_GAMMA`], over which [`freezing_state`] passes from liquid to solid.
+const FREEZING_WIDTH: f64 = 0.03;
+
+/// Share that is solid at a coupling parameter, rising smoothly across [`MELTING_GAMMA`].
+pub fn solid_share(coupling: f64) -> f64 {
+    let t = ((coupling / MELTING_GAMMA - 1.0) / (2.0 * FREEZING_WIDTH) + 0.5).clamp(0.0, 1.0);
+    t * t * (3.0 - 2.0 * t)
+}
+
+/// Like [`matter_state`], but melting over a small range of coupling, so that a shell of a star gives
+/// up its latent heat gradually and an iteration can follow it. Pressure, energy, entropy and opacity-free
+/// derivatives are weighted means of the phases.
+pub fn freezing_state(composition: &Composition, density_g_cm3: f64, temperature_k: f64) -> MatterState {
+    let electrons = composition.electron_density_per_cm3(density_g_cm3);
+    let coupling = electron_coupling(electrons, temperature_k) * composition.mean_charge_5_3();
+    let share = solid_share(coupling);
+    let at = |phase| state_in_phase(composition, density_g_cm3, temperature_k, coupling, phase);
+    if share == 0.0 {
+        return at(Phase::Liquid);
+    }
+    let solid = at(Phase::Solid);
+    if share == 1.0 {
+        return solid;
+    }
+    let liquid = at(Phase::Liquid);
+    let mean = |a: f64, b: f64| (1.0 - share) * a + share * b;
+    MatterState {
+        pressure_cgs: mean(liquid.pressure_cgs, solid.pressure_cgs),
+        energy_erg_g: mean(liquid.energy_erg_g, solid.energy_erg_g),
+        entropy_erg_g_k: mean(liquid.entropy_erg_g_k, solid.entropy_erg_g_k),
+        ..solid
+    }
 }
 
 /// Density at which matter has the given pressure and temperature, by Newton from a guess.

@@ -7,6 +7,7 @@ pub mod cooling;
 pub mod core;
 pub mod electrons;
 pub mod envelope;
+pub mod evolution;
 pub mod ions;
 pub mod jet;
 pub mod layer;
