@@ -95,6 +95,10 @@ fn starting_model(mass_msun: f64, layer: HydrogenLayer, core: Core) -> Option<St
             [] => Guess::cold(mass_msun, core)?,
         };
         let Some(model) = isothermal_star(mass_msun, teff_k, layer, core, guess) else {
+            // The cold guess may be too far from the first star, nearer to the next.
+            if models.is_empty() {
+                continue;
+            }
             break;
         };
         // Where a hotter surface would need a cooler core, the star never was that hot.
