@@ -1,5 +1,8 @@
 //! The command line: one file per command.
 
+pub mod tracks;
+mod tracks_figure;
+
 use std::process::ExitCode;
 
 /// Parses the arguments, runs the command, returns the exit code.

@@ -139,7 +139,10 @@ impl Task {
 ///
 /// # Errors
 /// [`TrackBuildError`]; finished tracks stay for the next run.
-pub fn build_track_table(output: &Path, show_progress: bool) -> Result<(TrackTable, String), TrackBuildError> {
+pub fn build_track_table(
+    output: &Path,
+    show_progress: bool,
+) -> Result<(TrackTable, String), TrackBuildError> {
     let (masses, log_teffs) = (masses_msun(), log_teffs());
     let mut hasher = blake3::Hasher::new();
     masses.iter().chain(&log_teffs).for_each(|v| {
@@ -161,7 +164,9 @@ pub fn build_track_table(output: &Path, show_progress: bool) -> Result<(TrackTab
         .flat_map(|&layer| masses.iter().map(move |&mass_msun| Task { mass_msun, layer }))
         .collect();
     let bar = if show_progress { ProgressBar::new(tasks.len() as u64) } else { ProgressBar::hidden() };
-    if let Ok(style) = ProgressStyle::with_template("tracks {bar:40} {pos}/{len}  {elapsed} elapsed, {eta} to go") {
+    if let Ok(style) =
+        ProgressStyle::with_template("tracks {bar:40} {pos}/{len}  {elapsed} elapsed, {eta} to go")
+    {
         bar.set_style(style);
     }
     let rows: Vec<Vec<f64>> = tasks
@@ -181,7 +186,8 @@ pub fn build_track_table(output: &Path, show_progress: bool) -> Result<(TrackTab
             .map_err(|_| TrackTableError::Contents { found, need: "one track per mass" })
     };
     let (thick, thin) = rows.split_at(masses.len());
-    let table = TrackTable::new(Array1::from(masses.clone()), Array1::from(log_teffs), nodes(thick)?, nodes(thin)?)?;
+    let table =
+        TrackTable::new(Array1::from(masses.clone()), Array1::from(log_teffs), nodes(thick)?, nodes(thin)?)?;
     let checksum = table.write(output)?;
     fs::remove_dir_all(&folder).map_err(fault("remove", &folder))?;
     Ok((table, checksum))

@@ -20,8 +20,13 @@ use crate::interior::structure::HydrogenLayer;
 use crate::physics::constants::{GRAVITATION_CGS, SOLAR_MASS_G, SOLAR_RADIUS_CM};
 
 /// What the table holds at each node, in this order.
-pub const QUANTITIES: [&str; 5] =
-    ["LOG_RADIUS_RSUN", "LOG_AGE_GYR", "LOG_CENTRAL_TEMPERATURE_K", "LOG_CENTRAL_DENSITY_G_CM3", "CRYSTALLISED_FRACTION"];
+pub const QUANTITIES: [&str; 5] = [
+    "LOG_RADIUS_RSUN",
+    "LOG_AGE_GYR",
+    "LOG_CENTRAL_TEMPERATURE_K",
+    "LOG_CENTRAL_DENSITY_G_CM3",
+    "CRYSTALLISED_FRACTION",
+];
 const RADIUS: usize = 0;
 /// Version of the layout.
 const FORMAT: i64 = 1;
@@ -35,7 +40,9 @@ pub enum TrackTableError {
     #[error("cannot use the track table")]
     File(#[from] SealedFitsError),
     /// Its contents.
-    #[error("cannot use the track table: found {found}, need {need} (rebuild it with `emberline tracks build`)")]
+    #[error(
+        "cannot use the track table: found {found}, need {need} (rebuild it with `emberline tracks build`)"
+    )]
     Contents {
         /// What was found.
         found: String,
@@ -192,7 +199,8 @@ impl TrackTable {
         let mut nodes = |name: &str| {
             let data = image(name)?;
             let found = format!("{} values", data.len());
-            Nodes::from_shape_vec(shape, data).map_err(|_| contents(found, "masses x temperatures x quantities"))
+            Nodes::from_shape_vec(shape, data)
+                .map_err(|_| contents(found, "masses x temperatures x quantities"))
         };
         let (thick, thin) = (nodes("THICK")?, nodes("THIN")?);
         let mut table = TrackTable::new(mass, log_teff, thick, thin)?;

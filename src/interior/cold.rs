@@ -9,9 +9,7 @@
 
 use std::f64::consts::PI;
 
-use super::electrons::{
-    COMPTON_DENSITY_PER_CM3, ELECTRON_REST_ENERGY_ERG, cold_energy_and_pressure,
-};
+use super::electrons::{COMPTON_DENSITY_PER_CM3, ELECTRON_REST_ENERGY_ERG, cold_energy_and_pressure};
 use super::matter::Composition;
 use crate::physics::constants::{
     ATOMIC_MASS_UNIT_G, ELEMENTARY_CHARGE_ESU, GRAVITATION_CGS, LIGHT_SPEED_CM_S, SOLAR_MASS_G,
@@ -37,13 +35,20 @@ pub enum Gravity {
 }
 
 impl Gravity {
-    /// Factor on the Newtonian pressure gradient -G m rho / r^2.
-    pub fn factor(self, pressure_cgs: f64, density_g_cm3: f64, radius_cm: f64, mass_g: f64) -> f64 {
+    /// Factor on the Newtonian pressure gradient -G m rho / r^2, rho the density of rest mass.
+    pub fn factor(
+        self,
+        pressure_cgs: f64,
+        density_g_cm3: f64,
+        energy_erg_g: f64,
+        radius_cm: f64,
+        mass_g: f64,
+    ) -> f64 {
         const C2: f64 = LIGHT_SPEED_CM_S * LIGHT_SPEED_CM_S;
         match self {
             Gravity::Newton => 1.0,
             Gravity::Einstein => {
-                (1.0 + pressure_cgs / (density_g_cm3 * C2))
+                (1.0 + (energy_erg_g + pressure_cgs / density_g_cm3) / C2)
                     * (1.0 + 4.0 * PI * radius_cm.powi(3) * pressure_cgs / (mass_g * C2))
                     / (1.0 - 2.0 * GRAVITATION_CGS * mass_g / (radius_cm * C2))
             }
@@ -92,7 +97,8 @@ pub fn cold_star(
     terms: ColdPressure,
     gravity: Gravity,
 ) -> ColdStar {
-    let density_unit = COMPTON_DENSITY_PER_CM3 / 3.0 * composition.mass_per_electron_u() * ATOMIC_MASS_UNIT_G;
+    let mass_per_electron_g = composition.mass_per_electron_u() * ATOMIC_MASS_UNIT_G;
+    let density_unit = COMPTON_DENSITY_PER_CM3 / 3.0 * mass_per_electron_g;
     let pressure = |x: f64| cold_pressure(x, composition, terms);
     // Right-hand side in w, x = x_c (1 - w^2): (r, m).
     let slope = |w: f64, r: f64, m: f64| -> Option<(f64, f64)> {
@@ -107,9 +113,16 @@ pub fn cold_star(
             return None;
         }
         let density = density_unit * x.powi(3);
-        let pull = GRAVITATION_CGS * m * density / (r * r) * gravity.factor(p, density, r, m);
+        // Of the ideal electrons: Coulomb energy is a hundredth of it.
+        let energy_erg_g = cold_energy_and_pressure(x).0 * ELECTRON_REST_ENERGY_ERG / mass_per_electron_g;
+        let pull = GRAVITATION_CGS * m * density / (r * r) * gravity.factor(p, density, energy_erg_g, r, m);
         let dr = stiffness * 2.0 * central_x * w / pull;
-        Some((dr, 4.0 * PI * r * r * density * dr))
+        // In Newton's theory energy has no weight.
+        let weight = match gravity {
+            Gravity::Newton => 1.0,
+            Gravity::Einstein => 1.0 + energy_erg_g / (LIGHT_SPEED_CM_S * LIGHT_SPEED_CM_S),
+        };
+        Some((dr, 4.0 * PI * r * r * density * weight * dr))
     };
     let h = 1.0 / STEPS as f64;
     // Uniform ball for the first step: 2 pi G rho^2 r^2 / 3 = P_c - P.
@@ -133,11 +146,7 @@ pub fn cold_star(
         let Some((r_next, m_next)) = next else { break };
         (r, m) = (r_next, m_next);
     }
-    ColdStar {
-        mass_msun: m / SOLAR_MASS_G,
-        radius_rsun: r / SOLAR_RADIUS_CM,
-        central_density_g_cm3: density,
-    }
+    ColdStar { mass_msun: m / SOLAR_MASS_G, radius_rsun: r / SOLAR_RADIUS_CM, central_density_g_cm3: density }
 }
 
 /// Nauenberg's analytic mass-radius relation, solar radii.

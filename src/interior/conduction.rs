@@ -17,16 +17,15 @@ use std::sync::LazyLock;
 
 use gauss_quad::GaussLegendre;
 
-use super::matter::electron_coupling;
 use super::electrons::{ELECTRON_REST_ENERGY_ERG, ElectronGas, relativity_parameter};
+use super::matter::electron_coupling;
 use crate::physics::constants::{
     ATOMIC_MASS_UNIT_G, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S,
     PLANCK_ERG_S, STEFAN_BOLTZMANN_CGS,
 };
 
 const HBAR_ERG_S: f64 = PLANCK_ERG_S / (2.0 * PI);
-const FINE_STRUCTURE: f64 =
-    ELEMENTARY_CHARGE_ESU * ELEMENTARY_CHARGE_ESU / (HBAR_ERG_S * LIGHT_SPEED_CM_S);
+const FINE_STRUCTURE: f64 = ELEMENTARY_CHARGE_ESU * ELEMENTARY_CHARGE_ESU / (HBAR_ERG_S * LIGHT_SPEED_CM_S);
 /// Mean squared ion displacement of a bcc crystal, in classical units.
 const U_MINUS_2: f64 = 13.0;
 /// Electron-electron over electron-ion collision rate times Z in a hot thin gas, from the conductivities of
@@ -54,8 +53,7 @@ fn coulomb_logarithm(s: f64, w: f64, velocity_over_c: f64) -> f64 {
     let log = (1.0 / s).ln_1p();
     let one = 0.5 * (log + s / (s + 1.0) * (1.0 - decay) - (1.0 + s * w) * e1);
     let first = if w > 1e-3 { (decay - 1.0 + w) / w } else { 0.5 * w };
-    let two = 0.5
-        * (first - s * s / (s + 1.0) * (1.0 - decay) - 2.0 * s * log + s * (2.0 + s * w) * e1);
+    let two = 0.5 * (first - s * s / (s + 1.0) * (1.0 - decay) - 2.0 * s * log + s * (2.0 + s * w) * e1);
     (one - velocity_over_c * velocity_over_c * two).max(1e-3)
 }
 
@@ -95,7 +93,8 @@ pub fn thermal_conductivity_cgs(
     let screen_ions = debye * (1.0 + 0.06 * coupling) * (-coupling.sqrt()).exp();
     let screen_electrons = 4.0 * PI * e2 * electron_density_per_cm3 / (kt * stiffness);
     let x_fermi = relativity_parameter(electron_density_per_cm3);
-    let plasma = |density: f64, mass: f64| HBAR_ERG_S * (4.0 * PI * e2 * density / mass).sqrt() / BOLTZMANN_ERG_K;
+    let plasma =
+        |density: f64, mass: f64| HBAR_ERG_S * (4.0 * PI * e2 * density / mass).sqrt() / BOLTZMANN_ERG_K;
     let electron_plasma_k =
         plasma(electron_density_per_cm3, ELECTRON_MASS_G * (1.0 + x_fermi * x_fermi).sqrt());
     let quantum = temperature_k / plasma(charge * charge * ions, mass_u * ATOMIC_MASS_UNIT_G);

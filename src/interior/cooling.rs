@@ -10,8 +10,8 @@
 //! Age zero: the hottest model of the sequence, at most [`START_TEFF_K`], where a star of 0.6 Msun is younger
 //! than 0.5 Myr.
 
-use super::envelope::EnvelopePoint;
 use super::core::Core;
+use super::envelope::EnvelopePoint;
 use super::evolution::evolve;
 use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, isothermal_star};
 use crate::physics::constants::SOLAR_MASS_G;
@@ -85,7 +85,7 @@ fn time_between(hot: &StarModel, cool: &StarModel) -> Option<f64> {
 /// The hottest isothermal star of a mass at or below [`START_TEFF_K`], found by warming a cold one.
 fn starting_model(mass_msun: f64, layer: HydrogenLayer, core: Core) -> Option<StarModel> {
     const LOWEST_K: f64 = 6000.0;
-    const STEPS: i32 = 100;
+    const STEPS: i32 = 50;
     let mut models: Vec<StarModel> = Vec::new();
     for i in 0..=STEPS {
         let teff_k = LOWEST_K * (START_TEFF_K / LOWEST_K).powf(f64::from(i) / f64::from(STEPS));

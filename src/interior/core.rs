@@ -166,7 +166,7 @@ pub fn isothermal_core(
         let (r, m) = (r2.max(0.0).sqrt(), z.powf(1.5));
         let dr2 = 3.0 * z.sqrt() / (4.0 * PI * r * rho);
         let dp = -1.5 * GRAVITATION_CGS * z * z / (4.0 * PI * r2 * r2)
-            * gravity.factor(state.pressure_cgs, rho, r, m);
+            * gravity.factor(state.pressure_cgs, rho, state.energy_erg_g, r, m);
         let d = dp / (state.pressure_cgs * state.chi_density);
         (dr2.is_finite() && d.is_finite() && state.chi_density > 0.0).then_some((dr2, d))
     };

@@ -19,9 +19,7 @@ use std::sync::{LazyLock, OnceLock};
 use gauss_quad::GaussLegendre;
 
 use super::jet::Jet;
-use crate::physics::constants::{
-    BOLTZMANN_ERG_K, ELECTRON_MASS_G, LIGHT_SPEED_CM_S, PLANCK_ERG_S,
-};
+use crate::physics::constants::{BOLTZMANN_ERG_K, ELECTRON_MASS_G, LIGHT_SPEED_CM_S, PLANCK_ERG_S};
 
 /// Electron rest energy, erg.
 pub const ELECTRON_REST_ENERGY_ERG: f64 = ELECTRON_MASS_G * LIGHT_SPEED_CM_S * LIGHT_SPEED_CM_S;
@@ -319,8 +317,9 @@ impl ElectronGas {
                 let node = &self.nodes[(i + di) * LOG_TEMPERATURE.count + j + dj];
                 for order in 0..3 {
                     let column = &node[3 * order..3 * order + 3];
-                    let along =
-                        |row: &[f64; 6]| column[0] * row[dj] + column[1] * row[2 + dj] + column[2] * row[4 + dj];
+                    let along = |row: &[f64; 6]| {
+                        column[0] * row[dj] + column[1] * row[2 + dj] + column[2] * row[4 + dj]
+                    };
                     let (value, first, second) = (along(&wy[0]), along(&wy[1]), along(&wy[2]));
                     let k = 2 * order + di;
                     thermal.v += wx[0][k] * value;

@@ -92,7 +92,7 @@ fn derivative(
     let (rho, t, r) = (at.ln_density.exp(), at.ln_temperature.exp(), at.radius_cm);
     let outer = at.ln_outer_g.exp();
     let inner = input.mass_g - outer;
-    let gravity = GRAVITATION_CGS * inner / (r * r) * input.gravity.factor(pressure, rho, r, inner);
+    let gravity = GRAVITATION_CGS * inner / (r * r) * input.gravity.factor(pressure, rho, 0.0, r, inner);
     let opacity = m.ln_opacity.exp();
     let depth_slope = pressure * opacity / gravity;
     let (gradient, is_convective) = if at.optical_depth < PHOTOSPHERE {
@@ -181,7 +181,8 @@ pub fn integrate_envelope(input: &EnvelopeInput) -> Option<Vec<EnvelopePoint>> {
             continue;
         }
         // Short steps where the temperature changes fast, and a landing on the boundary.
-        let h = input.step.min(0.4 * input.step / k1.ln_temperature.abs().max(1e-3)).min(left / k1.ln_outer_g);
+        let h =
+            input.step.min(0.4 * input.step / k1.ln_temperature.abs().max(1e-3)).min(left / k1.ln_outer_g);
         let (k2, ..) = derivative(input, table, ln_pressure + 0.5 * h, &at.plus(&k1, 0.5 * h))?;
         let (k3, ..) = derivative(input, table, ln_pressure + 0.5 * h, &at.plus(&k2, 0.5 * h))?;
         let (k4, ..) = derivative(input, table, ln_pressure + h, &at.plus(&k3, h))?;

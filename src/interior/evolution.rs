@@ -59,7 +59,7 @@ impl Step<'_> {
         let old = &self.old[shell];
         let (r, rho, t) = (u[0].exp(), u[2].exp(), u[3].exp());
         let m = old.mass_g;
-        let pull = Gravity::Einstein.factor(state.pressure_cgs, rho, r, m);
+        let pull = Gravity::Einstein.factor(state.pressure_cgs, rho, state.energy_erg_g, r, m);
         let pressure_slope =
             -1.5 * m.cbrt() * GRAVITATION_CGS * m / (4.0 * PI * r.powi(4) * state.pressure_cgs) * pull;
         let opacity = self.material.ln_opacity(u[2], u[3])?.exp();
@@ -106,7 +106,8 @@ impl Step<'_> {
             (b.cubed_radius - a.cubed_radius) * 4.0 * PI / (3.0 * dm * inverse_density) - 1.0,
             b.luminosity - a.luminosity - 0.5 * dm * (a.heat + b.heat),
             b.ln_pressure - a.ln_pressure - 0.5 * dz * (a.pressure_slope + b.pressure_slope),
-            b.ln_temperature - a.ln_temperature
+            b.ln_temperature
+                - a.ln_temperature
                 - 0.5 * (a.gradient + b.gradient) * (b.ln_pressure - a.ln_pressure),
         )
     }
@@ -151,13 +152,20 @@ pub fn evolve(model: &StarModel, layer: HydrogenLayer, core: Core, duration_s: f
         })
         .collect();
     let mut surface = Vector2::new(model.radius_cm.ln(), model.teff_k.ln());
-    for _ in 0..MOST_ITERATIONS {
+    let mut known_slopes = None;
+    for iteration in 0..MOST_ITERATIONS {
         let base = |s: &Vector2<f64>| envelope_base(model.mass_msun, s, layer, step.luminosity_unit);
         let outer = base(&surface)?;
-        let outer_slopes = [
-            (base(&(surface + Vector2::new(DELTA, 0.0)))? - outer) / DELTA,
-            (base(&(surface + Vector2::new(0.0, DELTA)))? - outer) / DELTA,
-        ];
+        // Envelopes are the dear part and nearly linear over a step: their slopes are taken once, and
+        // again only where convergence is slow.
+        let outer_slopes = match known_slopes {
+            Some(slopes) if iteration % 6 != 0 => slopes,
+            _ => [
+                (base(&(surface + Vector2::new(DELTA, 0.0)))? - outer) / DELTA,
+                (base(&(surface + Vector2::new(0.0, DELTA)))? - outer) / DELTA,
+            ],
+        };
+        known_slopes = Some(outer_slopes);
         let locals: Vec<[Local; 5]> =
             shells.iter().enumerate().map(|(i, u)| step.locals(i, u)).collect::<Option<_>>()?;
 
@@ -186,15 +194,13 @@ pub fn evolve(model: &StarModel, layer: HydrogenLayer, core: Core, duration_s: f
             let (a, b) = (&locals[inner], &locals[inner + 1]);
             let here = step.between(inner, &a[0], &b[0]);
             let column = |f: Vector4<f64>| (f - here) / DELTA;
-            let by_a: [Vector4<f64>; 4] = std::array::from_fn(|k| column(step.between(inner, &a[k + 1], &b[0])));
-            let by_b: [Vector4<f64>; 4] = std::array::from_fn(|k| column(step.between(inner, &a[0], &b[k + 1])));
+            let by_a: [Vector4<f64>; 4] =
+                std::array::from_fn(|k| column(step.between(inner, &a[k + 1], &b[0])));
+            let by_b: [Vector4<f64>; 4] =
+                std::array::from_fn(|k| column(step.between(inner, &a[0], &b[k + 1])));
             let replaced = |k: usize| by_a[0] * relation[(0, k)] + by_a[1] * relation[(1, k)];
-            let left = Matrix4::from_columns(&[
-                by_a[2] + replaced(1),
-                by_a[3] + replaced(2),
-                by_b[0],
-                by_b[1],
-            ]);
+            let left =
+                Matrix4::from_columns(&[by_a[2] + replaced(1), by_a[3] + replaced(2), by_b[0], by_b[1]]);
             let mut right = SMatrix::<f64, 4, 3>::zeros();
             right.set_column(0, &-(here + replaced(0)));
             right.set_column(1, &-by_b[2]);

@@ -47,11 +47,7 @@ fn ln_sinh_ratio(z: Jet) -> Jet {
     let q = z.v;
     if q < 1e-2 {
         let q2 = q * q;
-        return z.apply(
-            q2 / 6.0 - q2 * q2 / 180.0,
-            q / 3.0 - q2 * q / 45.0,
-            1.0 / 3.0 - q2 / 15.0,
-        );
+        return z.apply(q2 / 6.0 - q2 * q2 / 180.0, q / 3.0 - q2 * q / 45.0, 1.0 / 3.0 - q2 / 15.0);
     }
     let decay = (-2.0 * q).exp();
     let coth = (1.0 + decay) / (1.0 - decay);

@@ -125,14 +125,7 @@ impl Neg for Jet {
 impl Mul<f64> for Jet {
     type Output = Jet;
     fn mul(self, k: f64) -> Jet {
-        Jet {
-            v: self.v * k,
-            x: self.x * k,
-            y: self.y * k,
-            xx: self.xx * k,
-            xy: self.xy * k,
-            yy: self.yy * k,
-        }
+        Jet { v: self.v * k, x: self.x * k, y: self.y * k, xx: self.xx * k, xy: self.xy * k, yy: self.yy * k }
     }
 }
 

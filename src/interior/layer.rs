@@ -16,9 +16,7 @@ use super::electrons::ElectronGas;
 use super::ions;
 use super::jet::Jet;
 use super::matter::{MatterState, electron_coupling, exchange_jet, ideal_ion};
-use crate::physics::constants::{
-    ATOMIC_MASS_UNIT_G, BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_VOLT_ERG,
-};
+use crate::physics::constants::{ATOMIC_MASS_UNIT_G, BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_VOLT_ERG};
 
 /// A layer of the envelope, pure hydrogen or pure helium.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
@@ -74,7 +72,6 @@ impl Layer {
             Layer::Helium => 2.0,
         }
     }
-
 }
 
 /// Share of a bound stage's energy that it has lost where the volumes of neighbours fill space.
@@ -130,9 +127,10 @@ fn fractions(layer: Layer, nuclei: f64, electrons: f64, temperature_k: f64, prev
         if charge > 0.0 { ions::liquid_excess(coupling * charge.powf(5.0 / 3.0)) } else { (0.0, 0.0) }
     };
     // Every free electron shares in the Coulomb energy of all ions; `previous` weighs their charges.
-    let (energy, charge) = stages.iter().zip(previous).fold((0.0, 1e-300), |(energy, charge), (stage, share)| {
-        (energy + share * excess(stage.charge).1 / 3.0, charge + share * stage.charge)
-    });
+    let (energy, charge) =
+        stages.iter().zip(previous).fold((0.0, 1e-300), |(energy, charge), (stage, share)| {
+            (energy + share * excess(stage.charge).1 / 3.0, charge + share * stage.charge)
+        });
     let shared = energy / charge;
     let mut logs = [f64::NEG_INFINITY; 3];
     for (log, stage) in logs.iter_mut().zip(stages) {
@@ -186,11 +184,7 @@ fn equilibrium(layer: Layer, nuclei: f64, temperature_k: f64) -> [f64; 3] {
 }
 
 /// Illinois variant of the rule of false position: bracketed and superlinear.
-fn root(
-    at: &impl Fn(f64) -> (f64, [f64; 3]),
-    mut left: (f64, f64),
-    mut right: (f64, f64),
-) -> [f64; 3] {
+fn root(at: &impl Fn(f64) -> (f64, [f64; 3]), mut left: (f64, f64), mut right: (f64, f64)) -> [f64; 3] {
     let mut shares = [0.0; 3];
     let mut side = 0;
     for _ in 0..60 {

@@ -186,8 +186,7 @@ impl MatterState {
 
 /// Classical ideal gas of nuclei of one mass: free energy per nucleus over kT at density n.
 pub fn ideal_ion(density_per_cm3: f64, mass_g: f64, temperature_k: f64) -> Jet {
-    let wave2 =
-        PLANCK_ERG_S * PLANCK_ERG_S / (2.0 * PI * mass_g * BOLTZMANN_ERG_K * temperature_k);
+    let wave2 = PLANCK_ERG_S * PLANCK_ERG_S / (2.0 * PI * mass_g * BOLTZMANN_ERG_K * temperature_k);
     Jet::linear((density_per_cm3 * wave2 * wave2.sqrt()).ln() - 1.0, 1.0, -1.5)
 }
 

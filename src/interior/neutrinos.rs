@@ -18,11 +18,7 @@ const EXTRA_FLAVOURS: f64 = 2.0;
 fn couplings() -> (f64, f64, f64) {
     let (v, a) = (VECTOR * VECTOR, AXIAL * AXIAL);
     let (v2, a2) = ((1.0 - VECTOR).powi(2), (1.0 - AXIAL).powi(2));
-    (
-        v + EXTRA_FLAVOURS * v2,
-        v + a + EXTRA_FLAVOURS * (v2 + a2),
-        v - a + EXTRA_FLAVOURS * (v2 - a2),
-    )
+    (v + EXTRA_FLAVOURS * v2, v + a + EXTRA_FLAVOURS * (v2 + a2), v - a + EXTRA_FLAVOURS * (v2 - a2))
 }
 
 /// Plasmon decay, erg/cm3/s, at density per electron mass rho/mu_e.

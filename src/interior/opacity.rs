@@ -15,7 +15,8 @@ use std::f64::consts::PI;
 use super::electrons::ElectronGas;
 use super::layer::{Layer, LayerState, layer_state};
 use crate::physics::constants::{
-    BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, LIGHT_SPEED_CM_S, PLANCK_ERG_S, THOMSON_CM2,
+    BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, LIGHT_SPEED_CM_S, PLANCK_ERG_S,
+    THOMSON_CM2,
 };
 
 const RYDBERG_EV: f64 = 13.598;
@@ -45,7 +46,8 @@ fn free_free_gaunt(photon: f64, gamma2: f64) -> f64 {
             let (eta_low, eta_high) = ((gamma2 / low).sqrt(), (gamma2 / high).sqrt());
             let (k_low, k_high) = (low.sqrt(), high.sqrt());
             let born = 3f64.sqrt() / PI * ((k_high + k_low) / (k_high - k_low)).ln();
-            let elwert = eta_low / eta_high * (-2.0 * PI * eta_high).exp_m1() / (-2.0 * PI * eta_low).exp_m1();
+            let elwert =
+                eta_low / eta_high * (-2.0 * PI * eta_high).exp_m1() / (-2.0 * PI * eta_low).exp_m1();
             weight * born * elwert
         })
         .sum()
@@ -73,7 +75,8 @@ fn h_minus_bound_free(wave_um: f64, temperature_k: f64) -> f64 {
     let f: f64 = C.iter().enumerate().map(|(n, c)| c * d.powf(0.5 * n as f64)).sum();
     let cross = 1e-18 * wave_um.powi(3) * d.powf(1.5) * f;
     let alpha = 1.439e4;
-    0.750 * temperature_k.powf(-2.5)
+    0.750
+        * temperature_k.powf(-2.5)
         * (alpha / (LIMIT_UM * temperature_k)).exp()
         * -(-alpha / (wave_um * temperature_k)).exp_m1()
         * cross
@@ -143,7 +146,12 @@ impl BoundLevels {
                 let boltzmann = weight / ground_weight * (-(ground_ev - threshold) / kt_ev).exp();
                 let share = occupation(n, net_charge, state) / ground_occupation;
                 let share = if level == 1 { 1.0 } else { share };
-                (threshold, density * boltzmann * share, 7.906e-18 * n / (net_charge * net_charge), level == 1)
+                (
+                    threshold,
+                    density * boltzmann * share,
+                    7.906e-18 * n / (net_charge * net_charge),
+                    level == 1,
+                )
             })
             .collect();
         BoundLevels { levels, net_charge }
@@ -197,10 +205,8 @@ impl Plasma {
             // Pauli blocking of the initial and final states of the scattered electron.
             let blocking =
                 (softplus(self.degeneracy) - softplus(self.degeneracy - u)) / (stimulated * maxwell);
-            let free: f64 = ions
-                .iter()
-                .map(|(z, n)| z * z * n * free_free_gaunt(u, z * z * RYDBERG_EV / kt_ev))
-                .sum();
+            let free: f64 =
+                ions.iter().map(|(z, n)| z * z * n * free_free_gaunt(u, z * z * RYDBERG_EV / kt_ev)).sum();
             // Kramers: 3.692e8 cgs (Rybicki & Lightman 1979, eq. 5.18a).
             let absorption =
                 3.692e8 * electrons * free / (t.sqrt() * frequency.powi(3)) * stimulated * blocking;

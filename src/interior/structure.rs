@@ -4,7 +4,8 @@
 //! photospheric radius and the central density; they make radius and pressure of core and envelope
 //! equal at the base of the helium layer, whose temperature the core has (Newton, convergence 1e-8).
 //! Stars with heat flow in the core come from [`super::evolution`].
-//! General relativity is in the pressure gradient. Mass is rest mass of nucleons and electrons.
+//! General relativity is in the pressure gradient. Mass is that of nucleons and electrons at rest: binding and
+//! internal energy, below 0.3 % even at 1.36 Msun, are not weighed.
 
 use nalgebra::{Matrix2, Vector2};
 
