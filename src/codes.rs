@@ -170,6 +170,30 @@ codes! {
         "some values could not be had and are null", "see the other flags of this report";
     REPORT_NOT_WRITTEN = "report.not-written", Reject,
         "a report could not be written to disk", "check that the output folder exists, is writable and has space";
+    // star
+    OUTSIDE_TRACKS = "star.outside-tracks", Review,
+        "the fitted temperature and gravity lie outside the cooling tracks, so mass, radius and age are null",
+        "look at the fit; for very low gravities the star may not be a white dwarf";
+    ABOVE_STABLE_MASS = "star.above-stable-mass", Review,
+        "the fitted gravity would need more mass than a stable white dwarf can have",
+        "look at the fit: broadened lines (a field, fast rotation, low resolution) imitate high gravity";
+    BELOW_SINGLE_STAR_MASS = "star.below-single-star-mass", Note,
+        "the mass is lower than single-star evolution makes within the age of the universe",
+        "look for a companion or variable velocity; an unresolved pair of white dwarfs also looks like this";
+    CORE_AMBIGUOUS = "star.core-composition-ambiguous", Note,
+        "the mass allows two kinds of core; the age depends on which it is",
+        "quote the age with care";
+    OUTSIDE_INITIAL_FINAL_RELATION = "star.outside-initial-final-relation", Note,
+        "the mass lies outside the initial-final mass relation, so the progenitor mass is null", "none needed";
+    VELOCITY_IMPLAUSIBLE = "star.velocity-implausible", Review,
+        "the radial velocity less the gravitational redshift is faster than escape from the Galaxy",
+        "check the wavelength calibration and whether the wavelengths are in air or vacuum";
+    ERRORS_TRUNCATED = "star.errors-truncated", Note,
+        "part of the error ellipse lies outside the cooling tracks, so the intervals are too narrow",
+        "quote the intervals as lower limits";
+    COVARIANCE_UNUSABLE = "star.covariance-unusable", Review,
+        "the covariance of temperature and gravity is not one, so the values have no errors",
+        "look at the fit";
 }
 
 /// Finds a code by its identifier.

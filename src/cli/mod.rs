@@ -9,6 +9,9 @@ mod schema;
 
 use std::error::Error;
 use std::io::{self, IsTerminal, Write};
+pub mod tracks;
+mod tracks_figure;
+
 use std::process::ExitCode;
 
 use clap::{Parser, Subcommand};

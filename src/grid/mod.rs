@@ -8,3 +8,6 @@ pub mod profile_table;
 
 pub use flux_file::{FORMAT_VERSION, GridFault};
 pub use flux_grid::{FluxGrid, GridHeader, NodeRecord, OutsideGrid, Stencil};
+pub mod sealed_fits;
+pub mod track_build;
+pub mod track_table;

@@ -1,5 +1,31 @@
 //! Benchmarks: `cargo bench`.
-#![allow(missing_docs)]
+#![allow(missing_docs, clippy::unwrap_used)]
+
+use std::path::Path;
+
+use emberline::grid::track_table::TrackTable;
+use emberline::interior::structure::HydrogenLayer;
+use emberline::star::describe;
+
 fn main() {
     divan::main();
+}
+
+fn tracks() -> TrackTable {
+    TrackTable::read(&Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/tracks.fits")).unwrap()
+}
+
+/// (Teff, log g) to mass, radius and age.
+#[divan::bench]
+fn track_lookup(bencher: divan::Bencher) {
+    let tracks = tracks();
+    bencher.bench(|| tracks.at(divan::black_box(14_321.0), divan::black_box(8.03), HydrogenLayer::Thick));
+}
+
+/// The whole star block with its intervals.
+#[divan::bench]
+fn star_block(bencher: divan::Bencher) {
+    let tracks = tracks();
+    let covariance = [[3e4, 2.0], [2.0, 2e-3]];
+    bencher.bench(|| describe(divan::black_box(14_321.0), 8.03, &covariance, Some(40.0), &tracks));
 }

@@ -5,3 +5,5 @@ mod stark_tables;
 
 mod constants;
 mod wavelength;
+mod interior;
+mod star;
