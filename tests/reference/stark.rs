@@ -69,7 +69,7 @@ fn verify_profiles_integrate_to_one() {
             let profile = line.broadened(t, ne, gamma);
             let (mut total, mut x) = (profile.per_aa(0.0) * 1e-4, 1e-4f64);
             let step = 0.02f64;
-            while x < 3e5 {
+            while x < 1e7 {
                 let next = x * step.exp();
                 let middle = (x * next).sqrt();
                 let sum = profile.per_aa(x) * x
