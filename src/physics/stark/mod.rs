@@ -7,12 +7,13 @@
 //! in frequency: give them `Line::detuning_aa`, not a wavelength difference, in the far wings.
 //!
 //! Measured against the published tables, cut off and heat included (`validate_against_vcs`,
-//! `validate_against_stehle`): centres and near wings agree with Vidal, Cooper & Smith (1973) to 0.1 %
-//! in the median, 96 - 98 % of points within 8 %; wings agree with Stehle & Hutcheon (1999) to 1 % in the median.
-//! Known departures: (1) where electrons pass from impact to static, VCS are up to 20 % above us and
-//! Stehle & Hutcheon, most at low density and high temperature; (2) in line centres Stehle & Hutcheon
-//! include moving ions, which lower H-alpha's by up to 30 % and fill H-beta's by up to 40 %; (3) Stehle & Hutcheon's
-//! Balmer lines above H7 are 6 - 8 % above twice the exact Holtsmark wing at low density.
+//! `validate_against_stehle`): centres and near wings agree with Vidal, Cooper & Smith (1973) to 0.6 %
+//! in the median, 96 - 98 % of points within 8 %; wings agree with Stehle & Hutcheon (1999) to 1.2 % in the
+//! median, 99 - 100 % of points within 8 %. Known departures: (1) in the wings where electrons pass from
+//! impact to static ours are up to 27 % below VCS, most at low density, while Stehle & Hutcheon agree with
+//! ours there; (2) in line centres Stehle & Hutcheon include moving ions: at log n_e = 15 - 16 ours are up
+//! to 30 % higher in H-alpha and 42 % lower in H-beta; (3) Stehle & Hutcheon's Balmer lines above H7 are
+//! 6 - 8 % above twice the exact Holtsmark wing even at low density.
 
 pub mod broadened;
 pub mod electrons;
