@@ -48,7 +48,7 @@ impl Line {
     /// Absorption oscillator strength, averaged over the sublevels of the lower level.
     ///
     /// # Reference
-    /// Bethe & Salpeter 1957, section 60: f = (1/3) dE[Ry] max(l, l')/(2 l + 1) R^2 per sublevel.
+    /// Bethe & Salpeter 1957, section 60: f = (1/3) dE max(l, l')/(2 l + 1) R^2 per sublevel, dE in Rydberg.
     pub fn oscillator_strength(self) -> f64 {
         let (n, u) = (f64::from(self.lower), f64::from(self.upper));
         let energy_ry = 1.0 / (n * n) - 1.0 / (u * u);

@@ -9,7 +9,7 @@
 //! Measured against the published tables, cut off and heat included (`validate_against_vcs`,
 //! `validate_against_stehle`): centres and near wings agree with Vidal, Cooper & Smith (1973) to 0.6 %
 //! in the median, 96 - 98 % of points within 8 %; wings agree with Stehle & Hutcheon (1999) to 1.2 % in the
-//! median, 99 - 100 % of points within 8 %. Known departures: (1) in the wings where electrons pass from
+//! median, 98 - 100 % of points within 8 %. Known departures: (1) in the wings where electrons pass from
 //! impact to static ours are up to 27 % below VCS, most at low density, while Stehle & Hutcheon agree with
 //! ours there; (2) in line centres Stehle & Hutcheon include moving ions: at log n_e = 15 - 16 ours are up
 //! to 30 % higher in H-alpha and 42 % lower in H-beta; (3) Stehle & Hutcheon's Balmer lines above H7 are
