@@ -3,7 +3,8 @@
 //! Layout: the magic line, the length of a JSON header (u32, little endian), the header with nodes,
 //! lines and provenance, the values (f32, little endian; fastest over alpha, then density, then
 //! temperature, then line), and the blake3 hash of all that. The build writes the whole file anew after
-//! each line (temporary file, sync, rename) and continues a file of the same physics and nodes.
+//! each line (temporary file, sync, rename) and continues a file of the same physics and nodes. The table of
+//! `grids/` has 0.9 MB and took 6 CPU minutes; `verify_bundled_table` computes some of it anew.
 
 use crate::physics::hydrogen::Line;
 use crate::physics::stark::{DENSITY_STEP, LineTable, ProfileTable, TableNodes, UnifiedLine};
@@ -248,12 +249,12 @@ pub fn build_profile_table(
     table
         .lines
         .retain(|made| wanted.contains(&made.line()) && is_same(made.nodes(), &table_nodes(made.line())));
-    for line in &wanted {
+    for (done, line) in wanted.iter().enumerate() {
         if table.line(line.lower, line.upper).is_none() {
             table.lines.push(compute_line(*line, &table_nodes(*line)));
             table.write(path)?;
         }
-        progress(table.lines.len(), wanted.len());
+        progress(done + 1, wanted.len());
     }
     Ok(table)
 }

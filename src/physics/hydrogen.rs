@@ -50,7 +50,7 @@ impl Line {
     /// Absorption oscillator strength, averaged over the sublevels of the lower level.
     ///
     /// # Reference
-    /// Bethe & Salpeter 1957, section 60: f = (1/3) dE[Ry] max(l, l')/(2 l + 1) R^2 per sublevel.
+    /// Bethe & Salpeter 1957, section 60: f = (1/3) dE max(l, l')/(2 l + 1) R^2 per sublevel, dE in Rydberg.
     pub fn oscillator_strength(self) -> f64 {
         static STORE: PerLine = PerLine::new();
         STORE.get_or_compute(self, Self::compute_oscillator_strength)

@@ -41,8 +41,8 @@ pub struct Findings {
 impl Report {
     /// Makes the document and decides its verdict: the worst effect among the flags.
     ///
-    /// A value that is missing or not finite becomes `null`; where no flag already rejects the
-    /// object, a flag names the missing values.
+    /// A value that is missing or not finite becomes `null`. Where no flag explains that (a rejection,
+    /// or for values of the star any `star.` flag), one is added that names the missing values.
     pub fn assemble(object: ObjectRecord, source: SourceRecord, findings: Findings) -> Report {
         let Findings { mut flags, parameters, solutions, lines, star, provenance, timing_ms } = findings;
         let parameters = parameters.map_or_else(Parameters::default, |fitted| Parameters {
@@ -51,7 +51,10 @@ impl Report {
             radial_velocity_km_s: parameter(fitted.radial_velocity_km_s),
         });
         let star = star.unwrap_or_default();
-        let missing = missing_values(&parameters, &star);
+        let mut missing = missing_parameters(&parameters);
+        if !flags.iter().any(|flag| flag.code.starts_with("star.")) {
+            missing.extend(missing_star_values(&star));
+        }
         if !missing.is_empty() && verdict(&flags) != Verdict::Rejected {
             let code = if parameters.teff_k.value.is_none() || parameters.log_g.value.is_none() {
                 &codes::NO_PARAMETERS
@@ -100,21 +103,29 @@ fn verdict(flags: &[Flag]) -> Verdict {
     flags.iter().map(of).max().unwrap_or(Verdict::Accepted)
 }
 
-fn missing_values(parameters: &Parameters, star: &Star) -> Vec<&'static str> {
-    let fitted = |name, parameter: &Parameter| parameter.value.is_none().then_some(name);
-    let derived = |name, value: &StarValue| value.value.is_none().then_some(name);
+fn missing_parameters(parameters: &Parameters) -> Vec<&'static str> {
+    let missing = |name, parameter: &Parameter| parameter.value.is_none().then_some(name);
     [
-        fitted("teff_k", &parameters.teff_k),
-        fitted("log_g", &parameters.log_g),
-        fitted("radial_velocity_km_s", &parameters.radial_velocity_km_s),
-        derived("mass_msun", &star.mass_msun),
-        derived("radius_rsun", &star.radius_rsun),
-        derived("luminosity_lsun", &star.luminosity_lsun),
-        derived("gravitational_redshift_km_s", &star.gravitational_redshift_km_s),
-        derived("cooling_age_gyr", &star.cooling_age_gyr),
-        derived("progenitor_mass_msun", &star.progenitor_mass_msun),
+        missing("teff_k", &parameters.teff_k),
+        missing("log_g", &parameters.log_g),
+        missing("radial_velocity_km_s", &parameters.radial_velocity_km_s),
     ]
     .into_iter()
     .flatten()
     .collect()
+}
+
+fn missing_star_values(star: &Star) -> impl Iterator<Item = &'static str> {
+    let missing = |name, value: &StarValue| value.value.is_none().then_some(name);
+    [
+        missing("mass_msun", &star.mass_msun),
+        missing("radius_rsun", &star.radius_rsun),
+        missing("luminosity_lsun", &star.luminosity_lsun),
+        missing("gravitational_redshift_km_s", &star.gravitational_redshift_km_s),
+        missing("cooling_age_gyr", &star.cooling_age_gyr),
+        missing("progenitor_mass_msun", &star.progenitor_mass_msun),
+        missing("mean_density_g_cm3", &star.mean_density_g_cm3),
+    ]
+    .into_iter()
+    .flatten()
 }

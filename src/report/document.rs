@@ -153,6 +153,8 @@ pub struct Star {
     pub cooling_age_gyr: StarValue,
     /// Mass on the main sequence, solar masses.
     pub progenitor_mass_msun: StarValue,
+    /// Mean density, g/cm3.
+    pub mean_density_g_cm3: StarValue,
 }
 
 /// What made a report.

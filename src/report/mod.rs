@@ -1,8 +1,8 @@
 //! The JSON document: what the program says about one object.
 //!
-//! [`Report`] is the only definition of the document; its schema and its Rust type are the same
-//! thing. [`Report::assemble`] turns findings into a document and decides the verdict from the flags;
-//! [`report_file`] runs a file through reading, analysis and assembly; [`write_atomically`] puts bytes on disk so that a crash at any line leaves the old file or the new
+//! `Report` is the only definition of the document; its schema and its Rust type are the same
+//! thing. `Report::assemble` turns findings into a document and decides the verdict from the flags;
+//! `report_file` runs a file through reading, analysis and assembly; `write_atomically` puts bytes on disk so that a crash at any line leaves the old file or the new
 //! one. Keys stand in the order of declaration, so equal findings give equal bytes.
 
 mod assemble;

@@ -1,7 +1,7 @@
 //! From a path to reports: read, analyse, assemble, once per object, with everything that can go wrong
 //! turned into a report.
 //!
-//! What is done between reading and reporting comes in as [`Analyse`], so that commands, the daemon and
+//! What is done between reading and reporting comes in as `Analyse`, so that commands, the daemon and
 //! the rehearsal run the same code and tests can put anything there.
 
 use std::error::Error;

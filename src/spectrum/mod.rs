@@ -1,10 +1,10 @@
 //! Observed data, made safe.
 //!
-//! In goes a FITS file that nobody checked; out comes a [`Spectrum`], which can only be made from
+//! In goes a FITS file that nobody checked; out comes a `Spectrum`, which can only be made from
 //! values that the fit may trust, or a fault that says in one line what was found, what was expected
-//! and what to do. Wavelengths are vacuum angstroms from here on. [`fits`] opens files so that the C
-//! library never sees a name to parse or a size to believe, [`readers`] knows one file layout per
-//! file, [`settle`] decides what the file leaves open (unit, medium, error kind, resolution, velocity
+//! and what to do. Wavelengths are vacuum angstroms from here on. `fits` opens files so that the C
+//! library never sees a name to parse or a size to believe, `readers` knows one file layout per
+//! file, `settle` decides what the file leaves open (unit, medium, error kind, resolution, velocity
 //! frame) from the configuration and records how, and never guesses.
 
 mod axis;

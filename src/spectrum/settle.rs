@@ -1,8 +1,8 @@
-//! From what a file states to a [`Spectrum`]: one place where everything that files leave open is
+//! From what a file states to a `Spectrum`: one place where everything that files leave open is
 //! settled, by the file, else by the configuration, else not at all (a refusal that names the key).
 //!
 //! Readers only state; nothing here knows of layouts. Every decision is written down in
-//! [`Decisions`], and every departure from the file's own words is a flag.
+//! `Decisions`, and every departure from the file's own words is a flag.
 
 use super::axis::{Medium, VelocityFrame};
 use super::observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};

@@ -69,7 +69,7 @@ fn verify_profiles_integrate_to_one() {
             let profile = line.broadened(t, ne, gamma);
             let (mut total, mut x) = (profile.per_aa(0.0) * 1e-4, 1e-4f64);
             let step = 0.02f64;
-            while x < 3e5 {
+            while x < 1e7 {
                 let next = x * step.exp();
                 let middle = (x * next).sqrt();
                 let sum = profile.per_aa(x) * x
@@ -287,6 +287,32 @@ fn verify_bundled_table() {
             let difference = made.ln() - f64::from(stored.ln_s()[start + i]);
             // Single precision of ln S up to 30.
             assert!(difference.abs() < 4e-6, "{line:?} alpha node {i}: {difference}");
+        }
+    }
+}
+
+/// Profiles from the bundled table integrate to 1, inside its nodes and beyond them.
+#[test]
+fn verify_bundled_profiles() {
+    let path = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/stark_profiles.bin");
+    let table = ProfileTable::read(&path).unwrap();
+    for line in &table.lines {
+        for (t, ne, gamma) in [
+            (2e3, 1e8, 0.0),
+            (6e3, 3e12, 0.01),
+            (1e4, 2e14, 1e-4),
+            (1.5e4, 4e15, 1e-4),
+            (3e4, 7e16, 0.0),
+            (8e4, 2e18, 0.0),
+            (3e5, 1e20, 0.0),
+        ] {
+            let profile = line.broadened(t, ne, gamma);
+            let (step, mut sum) = (0.01f64, 0.0);
+            for i in 0..3000 {
+                let x = 1e-5 * (step * (f64::from(i) + 0.5)).exp();
+                sum += 2.0 * step * x * profile.per_aa(x);
+            }
+            assert!((sum - 1.0).abs() < 1e-3, "{:?} T {t} n_e {ne:.0e}: {sum}", line.line());
         }
     }
 }

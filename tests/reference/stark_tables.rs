@@ -261,7 +261,10 @@ fn validate_against_stehle() {
         print_breakdown(&format!("Stehle {lower}-{upper}"), &ratios);
         let wing = ratios.iter().filter(|r| is_wing(line, r.2)).map(|r| r.3);
         let (median, within) = print_quantiles("  wing", wing);
-        assert!((median - 1.0).abs() < 0.02, "{lower}-{upper}: median {median}, {within} within 8 %");
+        assert!(
+            (median - 1.0).abs() < 0.02 && within > 0.98,
+            "{lower}-{upper}: median {median}, {within} within 8 %"
+        );
     }
 }
 

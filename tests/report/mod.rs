@@ -24,6 +24,7 @@ fn star() -> Star {
         gravitational_redshift_km_s: value(29.8),
         cooling_age_gyr: value(0.2),
         progenitor_mass_msun: value(1.7),
+        mean_density_g_cm3: value(4e5),
     }
 }
 
@@ -107,6 +108,12 @@ fn what_could_not_be_had_is_null_with_a_flag() {
     assert_eq!(report.verdict, Verdict::Review);
     assert_eq!(report.flags[0].code, "report.values-missing");
     assert_eq!(report.flags[0].detail, "cooling_age_gyr");
+
+    // A flag about the star explains what is missing there, with the effect that it has.
+    let mut explained = findings();
+    explained.star = Some(Star { cooling_age_gyr: StarValue::default(), ..star() });
+    explained.flags = vec![Flag { code: "star.not-a-code-yet".to_owned(), detail: "why".to_owned() }];
+    assert_eq!(assemble(explained).flags.len(), 1);
 
     let mut not_finite = findings();
     not_finite.parameters = Some(FittedParameters {

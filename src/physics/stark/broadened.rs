@@ -153,7 +153,9 @@ impl Broadened {
             stark
         };
         let ln_first = (FIRST_SIGMA * sigma).ln();
-        let count = ((wave_aa.ln() - ln_first) / LN_STEP).ceil() as usize;
+        // To where the Stark wing is a pure power law, or a whole wavelength away.
+        let ln_wing = profile.ln_detuning_first + profile.ln_detuning_step * profile.ln_s.len() as f64;
+        let count = ((wave_aa.ln().max(ln_wing) - ln_first) / LN_STEP).ceil() as usize;
         let near = NearNodes::new(profile, sigma);
         let ln_s: Vec<f64> = (0..count)
             .map(|i| {

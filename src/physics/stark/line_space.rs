@@ -20,7 +20,7 @@ pub struct Block {
     pub shifts: Vec<i32>,
     /// Dipole amplitude of each pair; squares sum to the block's share of the intensity.
     pub dipoles: Vec<f64>,
-    /// One matrix per entry of [`LineSpace::values`], stored [row][column][value]: C_k, or its share in
+    /// One matrix per entry of [`LineSpace::values`], row by row, the value running fastest: C_k, or its share in
     /// the interpolation nodes.
     pub coefficients: Vec<f64>,
 }

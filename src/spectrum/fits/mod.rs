@@ -1,9 +1,9 @@
 //! FITS files opened so that no file may bring the program down.
 //!
 //! The C library is fast and complete but trusts names, sizes and headers, so it is given none of
-//! them: [`bytes`] opens the path in Rust (ordinary file, bounded size, hashed, unpacked with a
-//! bound), [`walk`] parses every header in Rust and compares declared sizes with the bytes that are
-//! there, and [`cfitsio`], the only file with `unsafe`, decodes one extension at a time from sealed
+//! them: `bytes` opens the path in Rust (ordinary file, bounded size, hashed, unpacked with a
+//! bound), `walk` parses every header in Rust and compares declared sizes with the bytes that are
+//! there, and `cfitsio`, the only file with `unsafe`, decodes one extension at a time from sealed
 //! memory behind a header that we wrote ourselves. Headers are answered from the Rust side only.
 //!
 //! Checked by `spectrum::mutants` in the test binary: thousands of mutated files, no crash.

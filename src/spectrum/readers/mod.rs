@@ -1,7 +1,7 @@
 //! One file per layout of reduced one-dimensional spectra, and the one table of layouts.
 //!
-//! A reader states what its file says in a [`RawSpectrum`] per object and decides nothing that the
-//! file leaves open; that is the work of `settle`. Layouts are tried in the order of [`LAYOUTS`]; the
+//! A reader states what its file says in a `RawSpectrum` per object and decides nothing that the
+//! file leaves open; that is the work of `settle`. Layouts are tried in the order of `LAYOUTS`; the
 //! first whose `identify` agrees reads the file. The order matters: specific layouts come before
 //! general ones, and primary images before tables, because an SDSS image file also carries line lists
 //! that look like spectra in tables.
