@@ -49,7 +49,10 @@ const LARGEST_NEWTON_FLUX_ERROR: f64 = 1.0;
 /// Convective fraction of the flux from which a layer takes part in that.
 const SETTLED_FRACTION: f64 = 0.3;
 /// Iterations before a model is given up.
-const MOST_ITERATIONS: usize = 60;
+const MOST_ITERATIONS: usize = 40;
+/// Temperature of a helping model over that of the one that failed, and how many may stand in line.
+const HELPER_RATIO: f64 = 1.04;
+const MOST_HELPERS: u32 = 4;
 
 /// A model that did not converge, with how far it came.
 #[derive(Debug, Clone, thiserror::Error)]
@@ -114,8 +117,29 @@ pub fn compute_atmosphere(
     log_g: f64,
     profiles: &ProfileTable,
 ) -> Result<Atmosphere, NotConverged> {
+    compute_with_help(teff_k, log_g, profiles, MOST_HELPERS)
+}
+
+/// Starts from the grey run; where that fails (deep convection in the coolest, densest models), from
+/// the structure of a slightly hotter star, found the same way.
+fn compute_with_help(
+    teff_k: f64,
+    log_g: f64,
+    profiles: &ProfileTable,
+    helpers: u32,
+) -> Result<Atmosphere, NotConverged> {
     let sources = Sources::new(FrequencyGrid::for_structure(teff_k), STRUCTURE_LINES, profiles);
-    let mut iteration = Iteration::start(teff_k, log_g, &sources, profiles);
+    let fault = match converge(Iteration::start(teff_k, log_g, &sources, profiles)) {
+        Ok(atmosphere) => return Ok(atmosphere),
+        Err(fault) if helpers == 0 => return Err(fault),
+        Err(fault) => fault,
+    };
+    let hotter = compute_with_help(teff_k * HELPER_RATIO, log_g, profiles, helpers - 1).map_err(|_| fault)?;
+    converge(Iteration::start_from(&hotter, teff_k, &sources))
+}
+
+fn converge(mut iteration: Iteration<'_, '_>) -> Result<Atmosphere, NotConverged> {
+    let (teff_k, log_g) = (iteration.teff_k, iteration.log_g);
     let mut temperature_change = f64::INFINITY;
     for iterations in 1..=MOST_ITERATIONS {
         let linear = iteration.linearise(temperature_change);
@@ -249,6 +273,25 @@ impl<'s, 't> Iteration<'s, 't> {
             previous_depth = depth;
             previous_opacity = opacity;
         }
+        Self::with_structure(teff_k, log_g, sources, column_g_cm2, temperature_k, pressure_cgs)
+    }
+
+    /// The temperatures of another effective temperature's model, scaled.
+    fn start_from(other: &Atmosphere, teff_k: f64, sources: &'s Sources<'t>) -> Self {
+        let ratio = teff_k / other.teff_k;
+        let temperature_k = other.states.iter().map(|state| state.temperature_k * ratio).collect();
+        let pressure_cgs = other.states.iter().map(|state| state.pressure_cgs).collect();
+        Self::with_structure(teff_k, other.log_g, sources, other.column_g_cm2.clone(), temperature_k, pressure_cgs)
+    }
+
+    fn with_structure(
+        teff_k: f64,
+        log_g: f64,
+        sources: &'s Sources<'t>,
+        column_g_cm2: Vec<f64>,
+        temperature_k: Vec<f64>,
+        pressure_cgs: Vec<f64>,
+    ) -> Self {
         let fields = sources
             .grid()
             .frequency_hz
@@ -261,7 +304,7 @@ impl<'s, 't> Iteration<'s, 't> {
         let mut iteration = Iteration {
             teff_k,
             log_g,
-            gravity_cgs,
+            gravity_cgs: 10f64.powf(log_g),
             sources,
             column_g_cm2,
             temperature_k,

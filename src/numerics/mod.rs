@@ -3,4 +3,5 @@
 pub mod angular;
 pub mod bessel;
 pub mod cubic;
+pub mod least_squares;
 pub mod quadrature;
