@@ -170,6 +170,47 @@ codes! {
         "some values could not be had and are null", "see the other flags of this report";
     REPORT_NOT_WRITTEN = "report.not-written", Reject,
         "a report could not be written to disk", "check that the output folder exists, is writable and has space";
+    // fit
+    FIT_TOO_FEW_LINES = "fit.too-few-lines", Reject,
+        "the spectrum covers too few Balmer line windows to be fitted",
+        "give a spectrum of 3 860 - 5 020 A, or choose other lines in the configuration";
+    FIT_FAILED = "fit.failed", Reject,
+        "the model could not be evaluated", "check the grid with `emberline grid check`";
+    FIT_TOO_NOISY = "fit.too-noisy", Reject,
+        "the spectrum is too noisy for any statement", "add exposures";
+    FIT_LOW_SNR = "fit.low-snr", Note,
+        "the spectrum is noisy; errors are large and the screening is weak", "add exposures";
+    FIT_POOR = "fit.poor", Review,
+        "the best model differs from the data by more than the noise and more than calibration can",
+        "look at the figure: a companion, metals, a magnetic field or a bad reduction";
+    FIT_ERRORS_TOO_SMALL = "fit.errors-too-small", Note,
+        "the model fits within a few per cent, but the errors of the file are smaller than that",
+        "check the error column; the reported errors have been scaled up";
+    FIT_AT_EDGE = "fit.at-edge", Review,
+        "the best solution lies on an edge of the grid", "treat the value as a limit";
+    FIT_NOT_CONVERGED = "fit.not-converged", Review,
+        "the refinement stopped before gradient and step vanished", "look at the spectrum";
+    FIT_WEAK_CHOICE = "fit.weak-choice", Review,
+        "a hot and a cold solution explain the spectrum almost equally well",
+        "add photometry or a flux-calibrated spectrum";
+    FIT_NLTE = "fit.nlte", Note,
+        "so hot that line cores depart from LTE: Teff comes out a few per cent too high",
+        "use the value with an error of 5 %";
+    FIT_UNCERTAIN = "fit.uncertain", Review,
+        "the statistical errors are too large for a measurement", "add exposures";
+    FIT_PIXELS_SET_ASIDE = "fit.pixels-set-aside", Note,
+        "single pixels that no model explains were given no weight", "none needed; see the count";
+    // screen
+    SCREEN_NO_BALMER = "screen.no-balmer-lines", Reject,
+        "no Balmer absorption was detected", "not a DA white dwarf, or too noisy to tell";
+    SCREEN_EMISSION = "screen.emission", Reject,
+        "the Balmer windows show emission, not absorption", "not a single DA white dwarf";
+    SCREEN_NARROW_LINES = "screen.narrow-lines", Reject,
+        "the Balmer lines are narrower than those of any white dwarf in the grid",
+        "probably an A or B star or a hot subdwarf";
+    SCREEN_NOT_EXPLAINED = "screen.not-explained", Reject,
+        "no DA model comes near the data", "not a DA white dwarf, or a failed reduction";
+
     // star
     OUTSIDE_TRACKS = "star.outside-tracks", Review,
         "the fitted temperature and gravity lie outside the cooling tracks, so mass, radius and age are null",

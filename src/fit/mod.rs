@@ -1,1 +1,20 @@
-//! See the map in `lib.rs`.
+//! From a spectrum to effective temperature, gravity and velocity.
+//!
+//! Windows around the Balmer lines; model seen through the instrument; normalisation as part of the
+//! fit; coarse scan, refinement of every minimum, choice between hot and cold; errors; screening.
+
+mod errors;
+mod fitter;
+pub mod line_spread;
+mod objective;
+mod screening;
+mod settings;
+mod solution;
+mod windows;
+
+pub use errors::{EXTERNAL_LOG_G, EXTERNAL_TEFF};
+pub use fitter::{Fitter, equivalent_width_aa};
+pub use objective::Seen;
+pub use settings::FitSettings;
+pub use solution::{Branch, Fit, FitFault, LineResult, Solution};
+pub use windows::{WINDOWS, Window};

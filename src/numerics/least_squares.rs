@@ -56,9 +56,11 @@ pub struct Fitted<const N: usize> {
     pub is_converged: bool,
 }
 
-/// Relative step below which, and cosine between residuals and the model's tangent space below
-/// which, a point counts as a minimum.
-const STEP_TOLERANCE: f64 = 1e-8;
+/// A step is small when it changes the model by this fraction of the residuals, or every parameter by
+/// this fraction of itself.
+const STEP_TOLERANCE: f64 = 1e-5;
+const RELATIVE_STEP_TOLERANCE: f64 = 1e-12;
+/// A gradient is small when the cosine between residuals and each free parameter's direction is.
 const GRADIENT_TOLERANCE: f64 = 1e-5;
 const FIRST_DAMPING: f64 = 1e-3;
 const LARGEST_DAMPING: f64 = 1e12;
@@ -134,7 +136,8 @@ impl<const N: usize, P: LeastSquares<N>> Solver<P, Parameters<N>> for LevenbergM
         };
         let step = self.bounded_step(&here, &at);
         let there = here + step;
-        let is_still = (0..N).all(|i| step[i].abs() <= STEP_TOLERANCE * (here[i].abs() + STEP_TOLERANCE));
+        let is_still = (at.curvature * step).dot(&step) <= STEP_TOLERANCE.powi(2) * at.chi2
+            || (0..N).all(|i| step[i].abs() <= RELATIVE_STEP_TOLERANCE * here[i].abs());
         let trial = problem.problem("linearise", |problem| problem.linearise(&there))?;
         let predicted = -(2.0 * at.gradient + at.curvature * step).dot(&step);
         let gain = (at.chi2 - trial.chi2) / predicted;

@@ -1,0 +1,399 @@
+//! The fit of one spectrum, from coarse scan to chosen solution.
+//!
+//! 1. Scan of a coarse subset of the grid's nodes at one velocity; the velocity is found first, by shifting
+//!    the best node's model. 2. Every distinct minimum of the scan, and at least one on each side
+//!    of the ridge where Balmer lines are strongest, is refined. 3. Pixels that the best solution cannot
+//!    explain one by one are set aside, and the refinement repeated. 4. The choice between the solutions
+//!    uses chi-square and, where the flux is calibrated, the slope of the continuum.
+
+use nalgebra::Vector3;
+
+use super::errors::{Errors, compute_errors};
+use super::objective::{LARGEST_VELOCITY_KM_S, Objective, Seen};
+use super::screening::screen;
+use super::settings::FitSettings;
+use super::solution::{Branch, Fit, FitFault, LineResult, Solution};
+use super::windows::WINDOWS;
+use crate::grid::FluxGrid;
+use crate::numerics::least_squares::{Bounds, minimise};
+use crate::spectrum::Spectrum;
+
+/// Rough spacing of the scan's nodes: relative in Teff, absolute in log g.
+const SCAN_STEP: (f64, f64) = (0.07, 0.5);
+/// Velocities tried before the scan, km/s.
+const FIRST_VELOCITY_STEP_KM_S: f64 = 50.0;
+/// Velocity beyond which the scan is repeated with moved operators, km/s.
+const SCAN_VELOCITY_TOLERANCE_KM_S: f64 = 120.0;
+/// The operators follow the fitted velocity until they agree to this, km/s.
+const VELOCITY_TOLERANCE_KM_S: f64 = 3.0;
+const MOST_VELOCITY_ROUNDS: usize = 6;
+const MOST_ITERATIONS: u64 = 60;
+/// Most minima that are refined.
+const MOST_MINIMA: usize = 4;
+/// Solutions closer than this are one: relative in Teff, absolute in log g.
+const SAME_SOLUTION: (f64, f64) = (0.01, 0.05);
+/// A pixel is set aside when it misses the best model by this many standard deviations, scaled by the
+/// scatter of all pixels.
+const OUTLIER_SIGMA: f64 = 5.0;
+/// At most this share of the pixels is set aside; more is a poor model, not bad pixels.
+const MOST_OUTLIERS: f64 = 0.03;
+/// Tilt of the flux calibration and of unknown reddening between H-beta and H8 together, one standard
+/// deviation of the natural logarithm (E(B-V) = 0.05 reddens that range by 5 %; common practice).
+const TILT_SIGMA: f64 = 0.08;
+/// Grid edges count as reached within this: relative in Teff, absolute in log g.
+const EDGE: (f64, f64) = (2e-3, 5e-3);
+
+/// Fits spectra against one grid; shared by all threads.
+#[derive(Debug)]
+pub struct Fitter<'g> {
+    grid: &'g FluxGrid,
+    settings: FitSettings,
+    scan_teff: Vec<usize>,
+    scan_log_g: Vec<usize>,
+    /// Per log g node of the grid: Teff at which H-gamma is widest and deepest, K.
+    ridge_k: Vec<f64>,
+}
+
+impl<'g> Fitter<'g> {
+    /// Prepares the scan and finds the ridge of line strength in the grid.
+    pub fn new(grid: &'g FluxGrid, settings: FitSettings) -> Self {
+        let thin = |axis: &[f64], is_far: &dyn Fn(f64, f64) -> bool| {
+            let mut kept = vec![0];
+            for i in 1..axis.len() {
+                if is_far(axis[kept[kept.len() - 1]], axis[i]) || i + 1 == axis.len() {
+                    kept.push(i);
+                }
+            }
+            kept
+        };
+        let scan_teff = thin(&grid.teff_k, &|last, next| next > last * (1.0 + SCAN_STEP.0));
+        let scan_log_g = thin(&grid.log_g, &|last, next| next > last + SCAN_STEP.1 - 1e-6);
+        let ridge_k = (0..grid.log_g.len()).map(|j| strongest_teff_k(grid, j)).collect();
+        Fitter { grid, settings, scan_teff, scan_log_g, ridge_k }
+    }
+
+    /// Teff at which the Balmer lines are strongest for a gravity, K.
+    pub fn ridge_k(&self, log_g: f64) -> f64 {
+        let nodes = &self.grid.log_g;
+        let cell = nodes.partition_point(|node| *node <= log_g).clamp(1, nodes.len() - 1) - 1;
+        let share = ((log_g - nodes[cell]) / (nodes[cell + 1] - nodes[cell])).clamp(0.0, 1.0);
+        self.ridge_k[cell] + share * (self.ridge_k[cell + 1] - self.ridge_k[cell])
+    }
+
+    /// Fits one spectrum.
+    ///
+    /// # Errors
+    /// [`FitFault`] where the spectrum does not cover enough lines; everything else is said by flags.
+    pub fn fit(&self, spectrum: &Spectrum) -> Result<Fit, FitFault> {
+        let wanted: Vec<_> =
+            WINDOWS.iter().filter(|window| self.settings.lines.contains(window)).copied().collect();
+        let mut objective = Objective::new(spectrum, self.grid, &wanted, 0.0);
+        if objective.windows.len() < self.settings.fewest_windows {
+            return Err(FitFault::TooFewWindows {
+                found: objective.windows.len(),
+                need: self.settings.fewest_windows,
+            });
+        }
+        let starts = self.scan(spectrum, &wanted, &mut objective);
+        let mut solutions = self.refine_all(&mut objective, &starts)?;
+        let rejected = self.set_outliers_aside(&mut objective, &solutions);
+        if rejected > 0 {
+            let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
+            solutions = self.refine_all(&mut objective, &starts)?;
+        }
+        self.choose(&mut solutions, &mut objective, spectrum.is_flux_calibrated())?;
+        objective.set_velocity(solutions[0].radial_velocity_km_s);
+        let views = objective.view(&solutions[0].vector()).map_err(FitFault::Model)?;
+        let lines = objective.windows.iter().zip(&views).map(|(data, seen)| LineResult::new(data, seen)).collect();
+        let chi2_without_lines = objective.chi2_without_lines();
+        let mut fit = Fit {
+            solutions,
+            lines,
+            flags: Vec::new(),
+            rejected_pixels: rejected,
+            chi2_without_lines,
+            views,
+            wave_vac_aa: objective
+                .windows
+                .iter()
+                .map(|data| data.pixels.iter().map(|pixel| pixel.wave_vac_aa).collect())
+                .collect(),
+        };
+        fit.flags = screen(&fit, &objective, self.grid);
+        Ok(fit)
+    }
+
+    /// Starting points: the scan's local minima, and the best node on either side of the ridge.
+    fn scan(
+        &self,
+        spectrum: &Spectrum,
+        wanted: &[super::windows::Window],
+        objective: &mut Objective<'g>,
+    ) -> Vec<Vector3<f64>> {
+        let mut chi2 = self.scan_nodes(objective);
+        let (i, j) = lowest(&chi2);
+        let count = (LARGEST_VELOCITY_KM_S / FIRST_VELOCITY_STEP_KM_S) as i32 - 2;
+        let velocities: Vec<f64> = (-count..=count).map(|k| f64::from(k) * FIRST_VELOCITY_STEP_KM_S).collect();
+        let velocity = objective.best_velocity(self.scan_teff[i], self.scan_log_g[j], &velocities);
+        if velocity.abs() > SCAN_VELOCITY_TOLERANCE_KM_S {
+            // The windows move with the star; where that loses too many, stay.
+            let moved = Objective::new(spectrum, self.grid, wanted, velocity);
+            if moved.windows.len() == objective.windows.len() {
+                *objective = moved;
+                chi2 = self.scan_nodes(objective);
+            }
+        } else {
+            objective.set_velocity(velocity);
+        }
+        self.pick_starts(&chi2, objective.velocity_km_s())
+    }
+
+    /// Chi-square of every scanned node; outer index Teff.
+    fn scan_nodes(&self, objective: &Objective<'g>) -> Vec<Vec<f64>> {
+        let row = |i: &usize| self.scan_log_g.iter().map(|j| objective.chi2_at_node(*i, *j)).collect();
+        self.scan_teff.iter().map(row).collect()
+    }
+
+    fn pick_starts(&self, chi2: &[Vec<f64>], velocity_km_s: f64) -> Vec<Vector3<f64>> {
+        let (rows, columns) = (chi2.len(), chi2[0].len());
+        let mut minima = Vec::new();
+        let mut best_of_branch: [Option<(f64, usize, usize)>; 2] = [None, None];
+        for i in 0..rows {
+            for j in 0..columns {
+                let value = chi2[i][j];
+                let side = usize::from(self.node_teff_k(i) > self.ridge_k(self.node_log_g(j)));
+                if best_of_branch[side].is_none_or(|(best, ..)| value < best) {
+                    best_of_branch[side] = Some((value, i, j));
+                }
+                let near = |a: usize, last: usize| a.saturating_sub(1)..=(a + 1).min(last);
+                let is_lowest = near(i, rows - 1)
+                    .all(|a| near(j, columns - 1).all(|b| (a, b) == (i, j) || chi2[a][b] > value));
+                if is_lowest {
+                    minima.push((value, i, j));
+                }
+            }
+        }
+        minima.sort_by(|a, b| a.0.total_cmp(&b.0));
+        minima.truncate(MOST_MINIMA - 2);
+        for candidate in best_of_branch.into_iter().flatten() {
+            if !minima.iter().any(|(_, i, j)| (*i, *j) == (candidate.1, candidate.2)) {
+                minima.push(candidate);
+            }
+        }
+        minima
+            .iter()
+            .map(|(_, i, j)| Vector3::new(self.node_teff_k(*i), self.node_log_g(*j), velocity_km_s))
+            .collect()
+    }
+
+    fn node_teff_k(&self, scan_index: usize) -> f64 {
+        self.grid.teff_k[self.scan_teff[scan_index]]
+    }
+
+    fn node_log_g(&self, scan_index: usize) -> f64 {
+        self.grid.log_g[self.scan_log_g[scan_index]]
+    }
+
+    /// Refines all starts; keeps the distinct solutions, best chi-square first.
+    fn refine_all(
+        &self,
+        objective: &mut Objective<'g>,
+        starts: &[Vector3<f64>],
+    ) -> Result<Vec<Solution>, FitFault> {
+        let mut solutions: Vec<Solution> = Vec::new();
+        for start in starts {
+            let solution = self.refine(objective, *start)?;
+            let is_known = solutions.iter().any(|known| {
+                (known.teff_k / solution.teff_k - 1.0).abs() < SAME_SOLUTION.0
+                    && (known.log_g - solution.log_g).abs() < SAME_SOLUTION.1
+            });
+            if !is_known {
+                solutions.push(solution);
+            }
+        }
+        solutions.sort_by(|a, b| a.chi2.total_cmp(&b.chi2));
+        Ok(solutions)
+    }
+
+    fn refine(&self, objective: &mut Objective<'g>, start: Vector3<f64>) -> Result<Solution, FitFault> {
+        let (teff_first_k, teff_last_k) = self.grid.teff_range_k();
+        let (log_g_first, log_g_last) = self.grid.log_g_range();
+        let bounds = Bounds {
+            lower: Vector3::new(teff_first_k, log_g_first, -LARGEST_VELOCITY_KM_S),
+            upper: Vector3::new(teff_last_k, log_g_last, LARGEST_VELOCITY_KM_S),
+        };
+        let mut at = start;
+        let mut iterations = 0;
+        let mut round = 0;
+        let fitted = loop {
+            if (at[2] - objective.velocity_km_s()).abs() > 1e-6 {
+                objective.set_velocity(at[2]);
+            }
+            let fitted = minimise(&*objective, at, bounds, MOST_ITERATIONS).map_err(FitFault::Model)?;
+            at = fitted.parameters;
+            iterations += fitted.iterations;
+            round += 1;
+            let moved_km_s = (at[2] - objective.velocity_km_s()).abs();
+            if moved_km_s < VELOCITY_TOLERANCE_KM_S || round == MOST_VELOCITY_ROUNDS {
+                break fitted;
+            }
+        };
+        let views = objective.view(&at).map_err(FitFault::Model)?;
+        let Errors { covariance, dof, .. } = compute_errors(objective, &fitted.at, &views);
+        let edge_teff = |node: f64| (at[0] / node - 1.0).abs() < EDGE.0;
+        let edge_log_g = |node: f64| (at[1] - node).abs() < EDGE.1;
+        let ridge_k = self.ridge_k(at[1]);
+        Ok(Solution {
+            teff_k: at[0],
+            log_g: at[1],
+            radial_velocity_km_s: at[2],
+            covariance,
+            chi2: fitted.at.chi2,
+            dof,
+            probability: 1.0,
+            tilt: None,
+            branch: if at[0] > ridge_k { Branch::Hot } else { Branch::Cold },
+            iterations,
+            is_converged: fitted.is_converged && round < MOST_VELOCITY_ROUNDS,
+            is_at_edge: edge_teff(teff_first_k)
+                || edge_teff(teff_last_k)
+                || edge_log_g(log_g_first)
+                || edge_log_g(log_g_last),
+        })
+    }
+
+    /// Gives the worst isolated pixels no weight; returns their number.
+    fn set_outliers_aside(&self, objective: &mut Objective<'g>, solutions: &[Solution]) -> usize {
+        let Some(best) = solutions.first() else { return 0 };
+        objective.set_velocity(best.radial_velocity_km_s);
+        let Ok(views) = objective.view(&best.vector()) else { return 0 };
+        let mut sizes: Vec<f64> =
+            views.iter().flat_map(|seen| seen.residual.iter().map(|residual| residual.abs())).collect();
+        if sizes.is_empty() {
+            return 0;
+        }
+        let middle = sizes.len() / 2;
+        let median = *sizes.select_nth_unstable_by(middle, f64::total_cmp).1;
+        // Median of |x| of a unit Gaussian.
+        let limit = OUTLIER_SIGMA * (median / 0.674_49).max(1.0);
+        let outliers: usize =
+            views.iter().map(|seen| seen.residual.iter().filter(|r| r.abs() > limit).count()).sum();
+        if outliers == 0 || outliers as f64 > MOST_OUTLIERS * sizes.len() as f64 {
+            return 0;
+        }
+        for (data, seen) in objective.windows.iter_mut().zip(&views) {
+            for (weight, residual) in data.inverse_sigma.iter_mut().zip(&seen.residual) {
+                if residual.abs() > limit {
+                    *weight = 0.0;
+                }
+            }
+        }
+        outliers
+    }
+
+    /// Orders the solutions by probability.
+    fn choose(
+        &self,
+        solutions: &mut [Solution],
+        objective: &mut Objective<'g>,
+        is_flux_calibrated: bool,
+    ) -> Result<(), FitFault> {
+        let best = solutions.iter().fold(f64::INFINITY, |least, s| least.min(s.chi2 / s.dof as f64));
+        let mut badness = Vec::new();
+        for solution in solutions.iter_mut() {
+            let mut sum = solution.chi2 / best.max(1.0);
+            if is_flux_calibrated {
+                objective.set_velocity(solution.radial_velocity_km_s);
+                let views = objective.view(&solution.vector()).map_err(FitFault::Model)?;
+                let tilt = continuum_tilt(objective, &views);
+                solution.tilt = tilt;
+                sum += tilt.map_or(0.0, |tilt| (tilt / TILT_SIGMA).powi(2));
+            }
+            badness.push(sum);
+        }
+        let least = badness.iter().copied().fold(f64::INFINITY, f64::min);
+        let total: f64 = badness.iter().map(|sum| (-0.5 * (sum - least)).exp()).sum();
+        for (solution, sum) in solutions.iter_mut().zip(&badness) {
+            solution.probability = (-0.5 * (sum - least)).exp() / total;
+        }
+        solutions.sort_by(|a, b| b.probability.total_cmp(&a.probability).then(a.chi2.total_cmp(&b.chi2)));
+        Ok(())
+    }
+}
+
+/// How much the ratio of data to model changes between the wavelengths of H-beta and H8, as a natural
+/// logarithm: zero for the right model of well calibrated, unreddened flux. `None` with fewer than two
+/// windows or negative flux.
+fn continuum_tilt(objective: &Objective<'_>, views: &[Seen]) -> Option<f64> {
+    let points: Vec<(f64, f64)> = objective
+        .windows
+        .iter()
+        .zip(views)
+        .map(|(data, seen)| {
+            let mean = seen.scale.iter().sum::<f64>() / seen.scale.len() as f64;
+            (1e4 / data.window.centre_vac_aa(), mean.ln())
+        })
+        .collect();
+    if points.len() < 2 || points.iter().any(|(_, ratio)| !ratio.is_finite()) {
+        return None;
+    }
+    let count = points.len() as f64;
+    let mean_x = points.iter().map(|(x, _)| x).sum::<f64>() / count;
+    let mean_y = points.iter().map(|(_, y)| y).sum::<f64>() / count;
+    let covariance: f64 = points.iter().map(|(x, y)| (x - mean_x) * (y - mean_y)).sum();
+    let variance: f64 = points.iter().map(|(x, _)| (x - mean_x).powi(2)).sum();
+    let span = 1e4 / 3890.2 - 1e4 / 4862.7;
+    Some(covariance / variance * span)
+}
+
+fn lowest(chi2: &[Vec<f64>]) -> (usize, usize) {
+    let mut best = (0, 0);
+    for (i, row) in chi2.iter().enumerate() {
+        for (j, value) in row.iter().enumerate() {
+            if *value < chi2[best.0][best.1] {
+                best = (i, j);
+            }
+        }
+    }
+    best
+}
+
+/// Teff of the grid's largest H-gamma equivalent width at one gravity node, refined by a parabola, K.
+fn strongest_teff_k(grid: &FluxGrid, log_g_index: usize) -> f64 {
+    let window = WINDOWS[2];
+    let first = grid.wave_vac_aa.partition_point(|wave| *wave < window.range_vac_aa.0);
+    let end = grid.wave_vac_aa.partition_point(|wave| *wave < window.range_vac_aa.1);
+    let waves = &grid.wave_vac_aa[first..end];
+    let width = |i: usize| {
+        let row = grid.ln_flux.slice(ndarray::s![i, log_g_index, first..end]);
+        let flux: Vec<f64> = row.iter().map(|value| f64::from(*value).exp()).collect();
+        equivalent_width_aa(waves, &flux)
+    };
+    let widths: Vec<f64> = (0..grid.teff_k.len()).map(width).collect();
+    let peak = widths.iter().enumerate().max_by(|a, b| a.1.total_cmp(b.1)).map_or(0, |(i, _)| i);
+    if peak == 0 || peak + 1 == widths.len() {
+        return grid.teff_k[peak];
+    }
+    let x: [f64; 3] = std::array::from_fn(|k| grid.teff_k[peak - 1 + k]);
+    let y: [f64; 3] = std::array::from_fn(|k| widths[peak - 1 + k]);
+    let (left, right) = ((y[1] - y[0]) / (x[1] - x[0]), (y[2] - y[1]) / (x[2] - x[1]));
+    let curvature = (right - left) / (x[2] - x[0]);
+    (0.5 * (x[0] + x[1]) - 0.5 * left / curvature).clamp(x[0], x[2])
+}
+
+/// Equivalent width over a window, A, below the straight line through its two ends.
+pub fn equivalent_width_aa(wave_vac_aa: &[f64], flux: &[f64]) -> f64 {
+    let last = flux.len() - 1;
+    // The outer tenth on either side carries the line.
+    let tenth = (flux.len() / 10).max(1);
+    let mean = |range: std::ops::Range<usize>| {
+        let count = range.len() as f64;
+        let wave = wave_vac_aa[range.clone()].iter().sum::<f64>() / count;
+        (wave, flux[range].iter().sum::<f64>() / count)
+    };
+    let (blue, red) = (mean(0..tenth), mean(last + 1 - tenth..last + 1));
+    let slope = (red.1 - blue.1) / (red.0 - blue.0);
+    let depth = |i: usize| 1.0 - flux[i] / (blue.1 + slope * (wave_vac_aa[i] - blue.0));
+    (1..=last).map(|i| 0.5 * (depth(i) + depth(i - 1)) * (wave_vac_aa[i] - wave_vac_aa[i - 1])).sum()
+}
+

@@ -1,0 +1,97 @@
+//! How far a fit may be trusted, and whether the object is a DA white dwarf at all.
+//!
+//! Each test states what it measured; the table of codes says what it does to the verdict. Thresholds
+//! are common practice unless a source is named; `rehearse` measures what they cost.
+
+use super::objective::Objective;
+use super::solution::Fit;
+use crate::codes::{self, Flag};
+use crate::grid::FluxGrid;
+
+/// Significance (chi-square gained by the lines) below which there are none.
+const LEAST_LINE_GAIN: f64 = 49.0;
+/// The lines' gain must also be this share of what the polynomials alone leave, or it may be chance.
+const SNR_REVIEW: f64 = 8.0;
+const SNR_REJECT: f64 = 3.0;
+/// Reduced chi-square from which a fit is poor, and from which it explains nothing.
+const POOR_CHI2: f64 = 2.5;
+const HOPELESS_CHI2: f64 = 8.0;
+/// Residuals of a good fit of bright stars are limited by calibration, not noise: below this rms a high
+/// chi-square says that the errors are too small, not that the model is wrong.
+const CALIBRATION_RMS: f64 = 0.02;
+/// Probability of the chosen solution below which the choice is weak.
+const WEAK_CHOICE: f64 = 0.9;
+/// Hotter than this, line cores depart from LTE (Napiwotzki 1997, A&A 322, 256).
+const NLTE_TEFF_K: f64 = 45_000.0;
+/// A gravity this close to the lower edge of the grid (dex, or three standard deviations) means lines
+/// narrower than any white dwarf's.
+const NARROW_MARGIN: f64 = 0.06;
+/// Statistical error of Teff (relative) and log g beyond which the parameters say nothing.
+const LARGEST_ERROR: (f64, f64) = (0.15, 0.5);
+
+/// All flags of a fit.
+pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag> {
+    let mut flags = Vec::new();
+    let chosen = fit.chosen();
+    let snr = fit.snr();
+    if snr < SNR_REJECT {
+        flags.push(Flag::new(&codes::FIT_TOO_NOISY, format!("median S/N per pixel {snr:.1}, need {SNR_REJECT}")));
+    } else if snr < SNR_REVIEW {
+        flags.push(Flag::new(&codes::FIT_LOW_SNR, format!("median S/N per pixel {snr:.1}, below {SNR_REVIEW}")));
+    }
+    let rms = fit.lines.iter().map(|line| line.rms_residual.powi(2)).sum::<f64>() / fit.lines.len() as f64;
+    let (rms, reduced) = (rms.sqrt(), chosen.reduced_chi2());
+    let gain = (fit.chi2_without_lines - chosen.chi2) / reduced.max(1.0);
+    if gain < LEAST_LINE_GAIN {
+        let detail = format!("Balmer lines lower chi-square by {gain:.0}, need {LEAST_LINE_GAIN}");
+        flags.push(Flag::new(&codes::SCREEN_NO_BALMER, detail));
+    }
+    let weakest = fit.lines.iter().map(|line| line.equivalent_width_aa).fold(f64::INFINITY, f64::min);
+    let strongest = fit.lines.iter().map(|line| line.equivalent_width_aa).fold(0.0, f64::max);
+    if strongest <= 0.0 {
+        let detail = format!("largest equivalent width among the lines {weakest:.1} A");
+        flags.push(Flag::new(&codes::SCREEN_EMISSION, detail));
+    }
+    if reduced > HOPELESS_CHI2 && rms > CALIBRATION_RMS {
+        let detail = format!("reduced chi-square {reduced:.1}, rms residual {:.1} %", 100.0 * rms);
+        flags.push(Flag::new(&codes::SCREEN_NOT_EXPLAINED, detail));
+    } else if reduced > POOR_CHI2 {
+        let detail = format!("reduced chi-square {reduced:.1}, rms residual {:.1} %", 100.0 * rms);
+        let code = if rms > CALIBRATION_RMS { &codes::FIT_POOR } else { &codes::FIT_ERRORS_TOO_SMALL };
+        flags.push(Flag::new(code, detail));
+    }
+    let (log_g_first, _) = grid.log_g_range();
+    let margin = NARROW_MARGIN.max(3.0 * chosen.sigma(1));
+    if chosen.log_g - log_g_first < margin.min(0.3) {
+        let detail = format!("log g {:.2} against the edge {log_g_first} of the models", chosen.log_g);
+        flags.push(Flag::new(&codes::SCREEN_NARROW_LINES, detail));
+    } else if chosen.is_at_edge {
+        let detail = format!("Teff {:.0} K, log g {:.2}", chosen.teff_k, chosen.log_g);
+        flags.push(Flag::new(&codes::FIT_AT_EDGE, detail));
+    }
+    if !chosen.is_converged {
+        let detail = format!("{} iterations", chosen.iterations);
+        flags.push(Flag::new(&codes::FIT_NOT_CONVERGED, detail));
+    }
+    if fit.solutions.len() > 1 && chosen.probability < WEAK_CHOICE {
+        let other = &fit.solutions[1];
+        let detail = format!(
+            "{:.0} K with probability {:.2} against {:.0} K with {:.2}",
+            chosen.teff_k, chosen.probability, other.teff_k, other.probability
+        );
+        flags.push(Flag::new(&codes::FIT_WEAK_CHOICE, detail));
+    }
+    if chosen.teff_k > NLTE_TEFF_K {
+        flags.push(Flag::new(&codes::FIT_NLTE, format!("Teff {:.0} K", chosen.teff_k)));
+    }
+    let (teff_error, log_g_error) = (chosen.sigma(0) / chosen.teff_k, chosen.sigma(1));
+    if !(teff_error < LARGEST_ERROR.0 && log_g_error < LARGEST_ERROR.1) {
+        let detail = format!("statistical errors {:.0} % in Teff, {log_g_error:.2} in log g", 100.0 * teff_error);
+        flags.push(Flag::new(&codes::FIT_UNCERTAIN, detail));
+    }
+    if fit.rejected_pixels > 0 {
+        let detail = format!("{} of {} pixels", fit.rejected_pixels, objective.counts().0 + fit.rejected_pixels);
+        flags.push(Flag::new(&codes::FIT_PIXELS_SET_ASIDE, detail));
+    }
+    flags
+}
