@@ -1,7 +1,7 @@
 //! The command line: one file per command.
 
 pub mod tracks;
-mod tracks_figure;
+pub mod tracks_figure;
 
 use std::process::ExitCode;
 

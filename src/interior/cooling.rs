@@ -11,9 +11,9 @@
 //! than 0.5 Myr.
 
 use super::core::Core;
-use super::envelope::EnvelopePoint;
+use super::envelope::{EnvelopePoint, HELIUM_FRACTION};
 use super::evolution::evolve;
-use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, isothermal_star};
+use super::structure::{Guess, HydrogenLayer, StarModel, isothermal_star};
 use crate::physics::constants::SOLAR_MASS_G;
 
 /// Effective temperature at which ages begin, K.
