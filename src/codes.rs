@@ -225,7 +225,7 @@ codes! {
         "the mass allows two kinds of core; the age depends on which it is",
         "quote the age with care";
     OUTSIDE_INITIAL_FINAL_RELATION = "star.outside-initial-final-relation", Note,
-        "the mass lies outside the initial-final mass relation, so the progenitor mass is null", "none needed";
+        "the mass, or part of its error, lies outside the initial-final mass relation, so the progenitor mass or its error is null", "none needed";
     VELOCITY_IMPLAUSIBLE = "star.velocity-implausible", Review,
         "the radial velocity less the gravitational redshift is faster than escape from the Galaxy",
         "check the wavelength calibration and whether the wavelengths are in air or vacuum";

@@ -10,7 +10,7 @@ mod schema;
 use std::error::Error;
 use std::io::{self, IsTerminal, Write};
 pub mod tracks;
-mod tracks_figure;
+pub mod tracks_figure;
 
 use std::process::ExitCode;
 

@@ -51,12 +51,15 @@ pub enum TrackBuildError {
     Table(#[from] TrackTableError),
 }
 
-/// Masses of the table, solar: steps of 0.02, with a node on each side of the change of core.
+/// Masses of the table, solar: steps of 0.01 up to the change of core, where radii change fastest with mass,
+/// then of 0.02; a node on each side of the change.
 pub fn masses_msun() -> Vec<f64> {
-    let run = |first: f64, count: i32| (0..count).map(move |i| first + 0.02 * f64::from(i));
-    let mut masses: Vec<f64> = run(0.15, 15).collect();
+    // Whole thousandths, so that nodes are round numbers.
+    let run =
+        |first: i32, step: usize, last: i32| (first..=last).step_by(step).map(|m| f64::from(m) / 1000.0);
+    let mut masses: Vec<f64> = run(150, 10, 440).collect();
     masses.extend([0.449, 0.451]);
-    masses.extend(run(0.47, 45));
+    masses.extend(run(470, 20, 1350));
     masses.push(1.36);
     masses
 }

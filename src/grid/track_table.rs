@@ -5,7 +5,7 @@
 //! exists. Lookup: the mass whose log g at this Teff is the wanted one, by bisection over the masses and within a cell,
 //! then bilinear in mass and log Teff (`ndarray-interp`). Never extrapolates: outside the tracks the answer
 //! is [`OutsideTracks`]. Interpolation error 0.002 Msun, 2 % in age (test `verif_track_interpolation`); a lookup takes
-//! about a microsecond (bench `track_lookup`).
+//! 5 us unoptimised for the machine (test `verif_lookup_speed`, bench `track_lookup`).
 
 use std::path::Path;
 
@@ -224,6 +224,9 @@ impl TrackTable {
             primary.write_key(fits, "CREATOR", self.origin.as_str())?;
             primary.write_key(fits, "FORMAT", FORMAT)?;
             primary.write_key(fits, "METHOD", "own degenerate-star models, emberline tracks build")?;
+            primary.write_key(fits, "GRAVITY", "general relativity in the pressure gradient")?;
+            primary.write_key(fits, "CONVECT", "ML2, mixing length 0.8")?;
+            primary.write_key(fits, "AGEZERO", "hottest isothermal model, at most 120000 K")?;
             primary.write_key(fits, "CORE", "He below 0.45 Msun, C/O 50/50 by mass above")?;
             primary.write_key(fits, "LAYERS", "He 1e-2; H 1e-4 (THICK), 1e-10 (THIN)")?;
             for (i, name) in QUANTITIES.iter().enumerate() {

@@ -11,9 +11,9 @@
 //! than 0.5 Myr.
 
 use super::core::Core;
-use super::envelope::EnvelopePoint;
+use super::envelope::{EnvelopePoint, HELIUM_FRACTION};
 use super::evolution::evolve;
-use super::structure::{Guess, HELIUM_FRACTION, HydrogenLayer, StarModel, isothermal_star};
+use super::structure::{Guess, HydrogenLayer, StarModel, isothermal_star};
 use crate::physics::constants::SOLAR_MASS_G;
 
 /// Effective temperature at which ages begin, K.
@@ -82,30 +82,57 @@ fn time_between(hot: &StarModel, cool: &StarModel) -> Option<f64> {
     Some(heat_between(hot, cool)? / logarithmic_mean(loss(hot), loss(cool)))
 }
 
-/// The hottest isothermal star of a mass at or below [`START_TEFF_K`], found by warming a cold one.
+/// The isothermal star a mass starts from: at [`START_TEFF_K`], or a little below the hottest there is.
+///
+/// Found by warming a cold star until there is no solution, then halving the last stride: the start must
+/// change smoothly with mass, because light stars remember it for a million years.
 fn starting_model(mass_msun: f64, layer: HydrogenLayer, core: Core) -> Option<StarModel> {
     const LOWEST_K: f64 = 6000.0;
     const STEPS: i32 = 50;
+    const HALVINGS: i32 = 9;
+    /// At the hottest model itself the core temperature changes without bound with Teff.
+    const BELOW_HOTTEST: f64 = 0.97;
     let mut models: Vec<StarModel> = Vec::new();
-    for i in 0..=STEPS {
-        let teff_k = LOWEST_K * (START_TEFF_K / LOWEST_K).powf(f64::from(i) / f64::from(STEPS));
-        let guess = match models.as_slice() {
+    let warmer = |models: &[StarModel], teff_k: f64| {
+        let guess = match models {
             [.., older, newer] => Guess::continued(older, newer, teff_k),
             [only] => Guess::from_model(only),
             [] => Guess::cold(mass_msun, core)?,
         };
-        let Some(model) = isothermal_star(mass_msun, teff_k, layer, core, guess) else {
-            // The cold guess may be too far from the first star, nearer to the next.
-            if models.is_empty() {
-                continue;
-            }
-            break;
-        };
+        let model = isothermal_star(mass_msun, teff_k, layer, core, guess)?;
         // Where a hotter surface would need a cooler core, the star never was that hot.
-        if models.last().is_some_and(|cooler| model.central_temperature_k <= cooler.central_temperature_k) {
-            break;
+        let is_warmer =
+            models.last().is_none_or(|cooler| model.central_temperature_k > cooler.central_temperature_k);
+        is_warmer.then_some(model)
+    };
+    let at_step = |i: i32| LOWEST_K * (START_TEFF_K / LOWEST_K).powf(f64::from(i) / f64::from(STEPS));
+    let mut limit_k = None;
+    for i in 0..=STEPS {
+        match warmer(&models, at_step(i)) {
+            Some(model) => models.push(model),
+            // The cold guess may be too far from the first star, nearer to the next.
+            None if models.is_empty() => continue,
+            None => {
+                limit_k = Some(at_step(i));
+                break;
+            }
         }
-        models.push(model);
+    }
+    if let Some(mut fails_k) = limit_k {
+        let mut hottest_k = models.last()?.teff_k;
+        for _ in 0..HALVINGS {
+            let middle_k = 0.5 * (hottest_k + fails_k);
+            match warmer(&models, middle_k) {
+                Some(model) => {
+                    models.push(model);
+                    hottest_k = middle_k;
+                }
+                None => fails_k = middle_k,
+            }
+        }
+        let start_k = BELOW_HOTTEST * hottest_k;
+        let cooler = models.iter().rfind(|m| m.teff_k <= start_k)?;
+        return isothermal_star(mass_msun, start_k, layer, core, Guess::from_model(cooler));
     }
     models.pop()
 }

@@ -13,10 +13,10 @@ use rayon::prelude::*;
 
 use super::cold::Gravity;
 use super::conduction::conductive_opacity_cm2_g;
+use super::envelope::HELIUM_FRACTION;
 use super::matter::{Composition, MatterState, matter_state};
 use super::neutrinos::neutrino_loss_erg_g_s;
 use super::opacity::ionised_rosseland_cm2_g;
-use super::structure::HELIUM_FRACTION;
 use crate::physics::constants::GRAVITATION_CGS;
 
 /// Cores below this mass are helium: the core mass at helium ignition (0.45 - 0.47 Msun), common practice.

@@ -9,8 +9,8 @@
 //! Maxwell's relations exact.
 //!
 //! Domain: log10 n_e 0 .. 36, log10 T 3 .. 9.4; outside it values are NaN. No positrons: below
-//! 5e8 K pairs are fewer than exp(-2 mc^2 / kT) = 5e-11 of kT-like scales.
-//! Accuracy 2e-5 in thermal pressure and energy (test `verif_electron_table_matches_quadrature`);
+//! 5e8 K pair creation is suppressed by exp(-2 mc^2 / kT) = 5e-11.
+//! Accuracy 5e-7 in pressure and energy, 1e-5 in heat capacity (test `verif_electron_table_matches_quadrature`);
 //! limits in `validate_electron_gas_limits`.
 
 use std::f64::consts::PI;

@@ -15,6 +15,8 @@ use super::layer::Layer;
 use super::material::{Material, MaterialTable};
 use crate::physics::constants::{GRAVITATION_CGS, RADIATION_DENSITY_CGS, STEFAN_BOLTZMANN_CGS};
 
+/// Helium layer and everything above it, over the stellar mass.
+pub const HELIUM_FRACTION: f64 = 1e-2;
 /// Optical depth where grey temperature stratification hands over to diffusion.
 const PHOTOSPHERE: f64 = 2.0 / 3.0;
 /// Optical depth of the outermost point.

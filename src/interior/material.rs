@@ -4,7 +4,8 @@
 //! In: layer, ln density, ln temperature. Out: [`Material`]. Built once per process (a few seconds on
 //! two cores) from [`super::layer`], [`super::opacity`] and [`super::conduction`]; fully ionised matter is
 //! taken directly from [`super::matter`]. Bilinear in the logarithms (`ndarray-interp`); outside the
-//! table the lookup refuses.
+//! table the lookup refuses, and so it does near unstable densities of cold hydrogen (below about 2e4 K at 0.3 - 1 g/cm3),
+//! which only the coolest and most massive stars would reach.
 
 use std::sync::OnceLock;
 
@@ -81,6 +82,12 @@ fn node(layer: Layer, mixture: &Composition, density_g_cm3: f64, temperature_k: 
     );
     let opacity = 1.0 / (1.0 / radiative + 1.0 / conductive);
     let m = state.matter;
+    // Where neutral hydrogen or helium would turn metallic at once (cold and dense), the free energy has no stable
+    // state of this density: such nodes are no part of the table.
+    let is_stable = m.chi_density > 0.05 && m.chi_temperature > 0.0 && m.heat_capacity_v_erg_g_k > 0.0;
+    if !is_stable {
+        return [f64::NAN; COLUMNS];
+    }
     [
         m.pressure_cgs.ln(),
         opacity.ln(),

@@ -11,12 +11,10 @@ use nalgebra::{Matrix2, Vector2};
 
 use super::cold::{ColdPressure, Gravity, cold_star_of_mass};
 use super::core::{Core, CoreMaterial, Shell, isothermal_core};
-use super::envelope::{EnvelopeInput, EnvelopePoint, integrate_envelope, luminosity_erg_s};
+use super::envelope::{EnvelopeInput, EnvelopePoint, HELIUM_FRACTION, integrate_envelope, luminosity_erg_s};
 use super::matter::solid_share;
 use crate::physics::constants::{GRAVITATION_CGS, SOLAR_MASS_G, SOLAR_RADIUS_CM};
 
-/// Helium layer and everything above it, over the stellar mass.
-pub const HELIUM_FRACTION: f64 = 1e-2;
 /// Longest step in ln P of envelopes.
 const ENVELOPE_STEP: f64 = 0.1;
 /// Thickness of the hydrogen layer.

@@ -32,6 +32,9 @@ const CARBON_OR_NEON_MSUN: f64 = 1.05;
 /// Speed of escape from the Galaxy near the Sun: 528 km/s (Deason et al. 2019, MNRAS 485, 3514).
 const ESCAPE_SPEED_KM_S: f64 = 528.0;
 
+/// Place of the progenitor mass in [`quantities`].
+const PROGENITOR: usize = 5;
+
 /// Standard normal pairs that fill the plane evenly.
 static NORMAL_PAIRS: LazyLock<Vec<[f64; 2]>> = LazyLock::new(|| {
     // Additive recurrence with the two-dimensional analogue of the golden ratio, x^3 = x + 1.
@@ -149,6 +152,14 @@ pub fn describe_in_layer(
     } else {
         let detail = format!("found {covariance:?} (K^2, K dex, dex^2)");
         report.flags.push(Flag::new(&codes::COVARIANCE_UNUSABLE, detail));
+    }
+    let without_progenitor = 1.0 - columns[PROGENITOR].len() as f64 / columns[0].len().max(1) as f64;
+    if values[PROGENITOR].is_some() && without_progenitor > OUTSIDE_SHARE {
+        // Percentiles of a sample that is cut off on one side would be wrong, not only narrow.
+        columns[PROGENITOR].clear();
+        let detail =
+            format!("{:.0} % of the error ellipse lies outside the relation", 100.0 * without_progenitor);
+        report.flags.push(Flag::new(&codes::OUTSIDE_INITIAL_FINAL_RELATION, detail));
     }
     let mut pairs = values.into_iter().zip(columns);
     let mut next = || {
