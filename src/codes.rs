@@ -193,6 +193,9 @@ codes! {
     FIT_WEAK_CHOICE = "fit.weak-choice", Review,
         "a hot and a cold solution explain the spectrum almost equally well",
         "add photometry or a flux-calibrated spectrum";
+    FIT_THREE_D = "fit.three-d", Note,
+        "parameters of one-dimensional models were corrected for three-dimensional convection, or could not be",
+        "none needed; both values are in `solutions`";
     FIT_NLTE = "fit.nlte", Note,
         "so hot that line cores depart from LTE: Teff comes out a few per cent too high",
         "use the value with an error of 5 %";

@@ -5,20 +5,23 @@
 
 mod codes;
 pub mod fit;
+mod grid;
+mod rehearse;
 mod schema;
-
-use std::error::Error;
-use std::io::{self, IsTerminal, Write};
+mod tables;
 pub mod tracks;
 pub mod tracks_figure;
 
+use std::error::Error;
+use std::io::{self, IsTerminal, Write};
 use std::process::ExitCode;
 
 use clap::{Parser, Subcommand};
 
-use crate::codes::{Flag, NO_PARAMETERS};
-use crate::report::{Analyse, Findings, Provenance, error_chain};
-use crate::spectrum::Observation;
+pub use tables::Tables;
+
+use crate::fit::FitSettings;
+use crate::report::{Analysis, error_chain};
 
 /// Exit code for wrong use or configuration.
 pub const EXIT_WRONG_USE: u8 = 2;
@@ -37,6 +40,12 @@ struct Arguments {
 enum Command {
     /// Fit spectra and print one JSON report per object.
     Fit(fit::FitArguments),
+    /// Fit an invented night of the Kestrel Fell survey and compare with its truth.
+    Rehearse(rehearse::RehearseArguments),
+    /// Build, verify or describe the grid of model spectra.
+    Grid(grid::GridArguments),
+    /// Build, verify, describe, read or draw the evolutionary tracks.
+    Tracks(tracks::TracksArgs),
     /// List the stable codes of faults and flags with their meaning and remedy.
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
@@ -54,7 +63,10 @@ pub fn run() -> ExitCode {
     };
     start_log();
     let outcome = match arguments.command {
-        Command::Fit(arguments) => fit::run(&arguments, &NoPipeline),
+        Command::Fit(arguments) => run_fit(&arguments),
+        Command::Rehearse(arguments) => rehearse::run(&arguments),
+        Command::Grid(arguments) => grid::run(&arguments),
+        Command::Tracks(arguments) => tracks::run(&arguments).map_err(Into::into),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
     };
@@ -69,17 +81,9 @@ pub fn run() -> ExitCode {
     }
 }
 
-/// Stands where the fit will be: reads and checks, fits nothing, and says so in every report.
-struct NoPipeline;
-
-impl Analyse for NoPipeline {
-    fn analyse(&self, _observation: &Observation) -> Findings {
-        Findings {
-            flags: vec![Flag::new(&NO_PARAMETERS, "this build does not fit")],
-            provenance: Provenance::of_this_program(),
-            ..Findings::default()
-        }
-    }
+fn run_fit(arguments: &fit::FitArguments) -> CommandResult {
+    let tables = Tables::read()?;
+    fit::run(arguments, &Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default()))
 }
 
 fn print_refusal(refusal: &clap::Error) -> ExitCode {

@@ -258,6 +258,70 @@ fn parabola_slope(x: &[f64], node: usize) -> [(usize, f64); 3] {
     ]
 }
 
+/// How well one node's normalised profile is reproduced from its neighbours.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct LeftOut {
+    /// Effective temperature of the node, K.
+    pub teff_k: f64,
+    /// log10 gravity of the node.
+    pub log_g: f64,
+    /// Root mean square difference, in units of the continuum.
+    pub rms: f64,
+}
+
+impl FluxGrid {
+    /// Leaves out every interior node in turn, interpolates it from the others along each axis, and
+    /// compares profiles over a wavelength range (vacuum A), both divided by the line through their
+    /// ends; the worse of the two axes counts. Twice the node spacing makes this an upper limit.
+    pub fn leave_one_out(&self, range_vac_aa: (f64, f64)) -> Vec<LeftOut> {
+        let first = self.wave_vac_aa.partition_point(|wave| *wave < range_vac_aa.0);
+        let end = self.wave_vac_aa.partition_point(|wave| *wave < range_vac_aa.1);
+        let waves = &self.wave_vac_aa[first..end];
+        let profile = |terms: &[(usize, usize, f64)]| {
+            let mut sums = vec![0.0; waves.len()];
+            for (i, j, weight) in terms {
+                let row = self.ln_flux.slice(ndarray::s![*i, *j, first..end]);
+                sums.iter_mut().zip(row).for_each(|(sum, value)| *sum += weight * f64::from(*value));
+            }
+            sums.iter_mut().for_each(|sum| *sum = sum.exp());
+            divide_by_chord(waves, &mut sums);
+            sums
+        };
+        let without = |axis: &[f64], left_out: usize, scale: fn(f64) -> f64| -> Vec<(usize, f64)> {
+            let others: Vec<f64> = (0..axis.len()).filter(|i| *i != left_out).map(|i| axis[i]).collect();
+            let stencil = AxisStencil::new(&others, axis[left_out], scale);
+            let original = |i: usize| if i < left_out { i } else { i + 1 };
+            (0..stencil.count).map(|k| (original(stencil.first + k), stencil.weight[k])).collect()
+        };
+        let mut errors = Vec::new();
+        for i in 1..self.teff_k.len() - 1 {
+            for j in 1..self.log_g.len() - 1 {
+                let exact = profile(&[(i, j, 1.0)]);
+                let rms = |terms: Vec<(usize, usize, f64)>| {
+                    let squares: f64 =
+                        profile(&terms).iter().zip(&exact).map(|(a, b)| (a - b).powi(2)).sum();
+                    (squares / waves.len() as f64).sqrt()
+                };
+                let along_teff = without(&self.teff_k, i, f64::ln);
+                let along_log_g = without(&self.log_g, j, |value| value);
+                let rms = rms(along_teff.iter().map(|(a, weight)| (*a, j, *weight)).collect())
+                    .max(rms(along_log_g.iter().map(|(b, weight)| (i, *b, *weight)).collect()));
+                errors.push(LeftOut { teff_k: self.teff_k[i], log_g: self.log_g[j], rms });
+            }
+        }
+        errors
+    }
+}
+
+fn divide_by_chord(waves: &[f64], flux: &mut [f64]) {
+    let last = flux.len() - 1;
+    let (blue, red) = (flux[0], flux[last]);
+    let slope = (red - blue) / (waves[last] - waves[0]);
+    for (value, wave) in flux.iter_mut().zip(waves) {
+        *value /= blue + slope * (wave - waves[0]);
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

@@ -1,1 +1,10 @@
-//! An invented night with known truth.
+//! An invented night with known truth, and the scoring of what came back.
+//!
+//! Everything belongs to the invented Kestrel Fell survey. Spectra are drawn from the bundled grid, so
+//! that the rehearsal proves the fit, its errors and its verdicts, not the physics of the models.
+
+mod night;
+mod score;
+
+pub use night::{Sighting, Truth, observe};
+pub use score::{Region, Summary, score};

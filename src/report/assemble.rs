@@ -3,10 +3,11 @@
 use std::collections::BTreeMap;
 
 use super::document::{
-    LineRow, Parameter, Parameters, Provenance, Report, SCHEMA_VERSION, SolutionRow, Star, StarValue, Verdict,
+    LineRow, Parameter, Parameters, Provenance, Report, SCHEMA_VERSION, SolutionRow, Verdict,
 };
 use crate::codes::{self, Effect, Flag};
 use crate::spectrum::{ObjectRecord, SourceRecord};
+use crate::star::{Star, StarValue};
 
 /// Values of the chosen solution with their errors, one standard deviation each.
 #[derive(Debug, Clone, PartialEq)]

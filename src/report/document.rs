@@ -7,6 +7,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::codes::Flag;
 use crate::spectrum::{ObjectRecord, SourceRecord};
+use crate::star::Star;
 
 /// Version of the document; grows when a key changes its meaning or goes away.
 pub const SCHEMA_VERSION: u32 = 1;
@@ -123,38 +124,6 @@ pub struct LineRow {
     pub rms_residual: Option<f64>,
     /// Equivalent width, A.
     pub equivalent_width_aa: Option<f64>,
-}
-
-/// A derived value with its 68 % interval.
-#[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize, JsonSchema)]
-#[serde(deny_unknown_fields)]
-pub struct StarValue {
-    /// Best value.
-    pub value: Option<f64>,
-    /// Distance down to the 16th percentile.
-    pub err_minus: Option<f64>,
-    /// Distance up to the 84th percentile.
-    pub err_plus: Option<f64>,
-}
-
-/// What follows for the star from the chosen solution.
-#[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize, JsonSchema)]
-#[serde(deny_unknown_fields)]
-pub struct Star {
-    /// Mass, solar masses.
-    pub mass_msun: StarValue,
-    /// Radius, nominal solar radii.
-    pub radius_rsun: StarValue,
-    /// Luminosity, nominal solar luminosities.
-    pub luminosity_lsun: StarValue,
-    /// Gravitational redshift of the surface, km/s.
-    pub gravitational_redshift_km_s: StarValue,
-    /// Time since the star left its nucleus stage, Gyr.
-    pub cooling_age_gyr: StarValue,
-    /// Mass on the main sequence, solar masses.
-    pub progenitor_mass_msun: StarValue,
-    /// Mean density, g/cm3.
-    pub mean_density_g_cm3: StarValue,
 }
 
 /// What made a report.

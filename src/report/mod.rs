@@ -5,14 +5,16 @@
 //! `report_file` runs a file through reading, analysis and assembly; `write_atomically` puts bytes on disk so that a crash at any line leaves the old file or the new
 //! one. Keys stand in the order of declaration, so equal findings give equal bytes.
 
+mod analysis;
 mod assemble;
 mod document;
 mod pipeline;
 mod write;
 
+pub use analysis::Analysis;
 pub use assemble::{Findings, FittedParameters};
 pub use document::{
-    LineRow, Parameter, Parameters, Provenance, Report, SCHEMA_VERSION, SolutionRow, Star, StarValue, Verdict,
+    LineRow, Parameter, Parameters, Provenance, Report, SCHEMA_VERSION, SolutionRow, Verdict,
 };
 pub use pipeline::{Analyse, error_chain, report_file, report_observation, report_refusal};
 pub use write::{WriteFault, write_atomically};
