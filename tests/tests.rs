@@ -5,6 +5,8 @@
 mod architecture;
 // Truth from outside: each number with its source.
 mod reference;
+// Invariants and recovery of the fit; published models and standard stars.
+mod science;
 // Exit codes, messages, output of the program itself.
 mod cli;
 // Reading: values, decisions, refusals, mutated files.

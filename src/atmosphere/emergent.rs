@@ -38,8 +38,7 @@ fn block_flux(atmosphere: &Atmosphere, wave_vac_aa: &[f64], profiles: &ProfileTa
                 planck[i] = planck_per_hz(hz, state.temperature_k);
                 thermal_fraction[i] = extinction.thermal_fraction[[k, i]];
             }
-            let medium =
-                Medium { interval: &interval, thermal_fraction: &thermal_fraction, planck: &planck };
+            let medium = Medium { interval: &interval, thermal_fraction: &thermal_fraction, planck: &planck };
             let mut field = Field::isotropic(&planck);
             field.solve(medium, 8, 1e-5, &mut scratch);
             // F_nu = 4 pi H_nu; per angstrom with c / lambda^2 and 1e-8 cm per A.

@@ -76,7 +76,12 @@ impl<'t> Sources<'t> {
     /// Computes the opacities of a run of states and their derivatives; line shapes are taken from
     /// the store where temperature (and three times as much electron density) has moved by less than
     /// `tolerance` since.
-    pub fn evaluate_with_slopes(&self, states: &[State], store: &mut LineStore, tolerance: f64) -> Extinction {
+    pub fn evaluate_with_slopes(
+        &self,
+        states: &[State],
+        store: &mut LineStore,
+        tolerance: f64,
+    ) -> Extinction {
         self.evaluate_with(states, true, store, tolerance)
     }
 

@@ -254,8 +254,7 @@ impl<'s, 't> Iteration<'s, 't> {
                     temperature = grey_k.min(above_k * ratio.powf(limit));
                 }
                 let state = State::new(temperature, column * gravity_cgs);
-                let renewed =
-                    continuum.evaluate(std::slice::from_ref(&state)).rosseland_cm2_g[0];
+                let renewed = continuum.evaluate(std::slice::from_ref(&state)).rosseland_cm2_g[0];
                 let renewed_column = match column_g_cm2.last() {
                     None => depth / renewed,
                     Some(above) => above + 2.0 * (depth - previous_depth) / (previous_opacity + renewed),
@@ -281,7 +280,14 @@ impl<'s, 't> Iteration<'s, 't> {
         let ratio = teff_k / other.teff_k;
         let temperature_k = other.states.iter().map(|state| state.temperature_k * ratio).collect();
         let pressure_cgs = other.states.iter().map(|state| state.pressure_cgs).collect();
-        Self::with_structure(teff_k, other.log_g, sources, other.column_g_cm2.clone(), temperature_k, pressure_cgs)
+        Self::with_structure(
+            teff_k,
+            other.log_g,
+            sources,
+            other.column_g_cm2.clone(),
+            temperature_k,
+            pressure_cgs,
+        )
     }
 
     fn with_structure(
@@ -492,9 +498,11 @@ impl<'s, 't> Iteration<'s, 't> {
             }
             rhs[i] /= scale;
         }
-        let errors = sums.flux.iter().zip(convection).map(|(flux, [convective, ..])| {
-            ((flux + convective) / target - 1.0).abs()
-        });
+        let errors = sums
+            .flux
+            .iter()
+            .zip(convection)
+            .map(|(flux, [convective, ..])| ((flux + convective) / target - 1.0).abs());
         let flux_error_surface = (sums.surface_flux / target - 1.0).abs();
         Linear {
             matrix,

@@ -9,11 +9,8 @@
 
 /// Gauss-Legendre points on (0, 1): direction cosines and weights (Abramowitz & Stegun 1964, table
 /// 25.4, n = 3, mapped from (-1, 1)).
-const ANGLES: [(f64, f64); 3] = [
-    (0.112_701_665_379_258_3, 5.0 / 18.0),
-    (0.5, 8.0 / 18.0),
-    (0.887_298_334_620_741_7, 5.0 / 18.0),
-];
+const ANGLES: [(f64, f64); 3] =
+    [(0.112_701_665_379_258_3, 5.0 / 18.0), (0.5, 8.0 / 18.0), (0.887_298_334_620_741_7, 5.0 / 18.0)];
 
 /// Radiation field of one frequency at all depths, top first; every slice has the same length.
 #[derive(Debug, Clone)]

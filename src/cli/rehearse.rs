@@ -53,7 +53,10 @@ pub fn run(arguments: &RehearseArguments) -> CommandResult {
             let observation = Observation {
                 spectrum: sighting.spectrum.clone(),
                 object,
-                source: SourceRecord { path: format!("rehearsal/{}", sighting.name), ..SourceRecord::default() },
+                source: SourceRecord {
+                    path: format!("rehearsal/{}", sighting.name),
+                    ..SourceRecord::default()
+                },
                 flags: Vec::new(),
             };
             let report = report_observation(observation, 0.0, &analysis);

@@ -21,8 +21,6 @@ pub struct Errors {
     pub covariance: [[f64; 3]; 3],
     /// Pixels less all free parameters, those of the normalisation included.
     pub dof: u64,
-    /// Factor on the variances: scatter beyond the given errors, times the correlation of neighbours.
-    pub inflation: f64,
 }
 
 /// Inverse curvature with the normalisation projected out, scaled up where the residuals scatter more
@@ -31,12 +29,9 @@ pub fn compute_errors(objective: &Objective<'_>, at: &Linearisation<3>, views: &
     let (pixels, coefficients) = objective.counts();
     let dof = pixels.saturating_sub(coefficients + 3).max(1) as u64;
     let inflation = (at.chi2 / dof as f64).max(1.0) * correlation_factor(views);
-    let covariance = at.curvature.try_inverse().unwrap_or_else(|| Matrix3::from_element(f64::NAN)) * inflation;
-    Errors {
-        covariance: std::array::from_fn(|i| std::array::from_fn(|j| covariance[(i, j)])),
-        dof,
-        inflation,
-    }
+    let covariance =
+        at.curvature.try_inverse().unwrap_or_else(|| Matrix3::from_element(f64::NAN)) * inflation;
+    Errors { covariance: std::array::from_fn(|i| std::array::from_fn(|j| covariance[(i, j)])), dof }
 }
 
 /// 1 + 2 sum of the autocorrelation at positive lags up to the first insignificant one: how much fewer

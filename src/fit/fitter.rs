@@ -104,7 +104,8 @@ impl<'g> Fitter<'g> {
         self.choose(&mut solutions, &mut objective, spectrum.is_flux_calibrated())?;
         objective.set_velocity(solutions[0].radial_velocity_km_s);
         let views = objective.view(&solutions[0].vector()).map_err(FitFault::Model)?;
-        let lines = objective.windows.iter().zip(&views).map(|(data, seen)| LineResult::new(data, seen)).collect();
+        let lines =
+            objective.windows.iter().zip(&views).map(|(data, seen)| LineResult::new(data, seen)).collect();
         let chi2_without_lines = objective.chi2_without_lines();
         let mut fit = Fit {
             solutions,
@@ -133,7 +134,8 @@ impl<'g> Fitter<'g> {
         let mut chi2 = self.scan_nodes(objective);
         let (i, j) = lowest(&chi2);
         let count = (LARGEST_VELOCITY_KM_S / FIRST_VELOCITY_STEP_KM_S) as i32 - 2;
-        let velocities: Vec<f64> = (-count..=count).map(|k| f64::from(k) * FIRST_VELOCITY_STEP_KM_S).collect();
+        let velocities: Vec<f64> =
+            (-count..=count).map(|k| f64::from(k) * FIRST_VELOCITY_STEP_KM_S).collect();
         let velocity = objective.best_velocity(self.scan_teff[i], self.scan_log_g[j], &velocities);
         if velocity.abs() > SCAN_VELOCITY_TOLERANCE_KM_S {
             // The windows move with the star; where that loses too many, stay.
@@ -229,7 +231,7 @@ impl<'g> Fitter<'g> {
             if (at[2] - objective.velocity_km_s()).abs() > 1e-6 {
                 objective.set_velocity(at[2]);
             }
-            let fitted = minimise(&*objective, at, bounds, MOST_ITERATIONS).map_err(FitFault::Model)?;
+            let fitted = minimise(&*objective, at, bounds, MOST_ITERATIONS, 1.0).map_err(FitFault::Model)?;
             at = fitted.parameters;
             iterations += fitted.iterations;
             round += 1;
@@ -239,7 +241,7 @@ impl<'g> Fitter<'g> {
             }
         };
         let views = objective.view(&at).map_err(FitFault::Model)?;
-        let Errors { covariance, dof, .. } = compute_errors(objective, &fitted.at, &views);
+        let Errors { covariance, dof } = compute_errors(objective, &fitted.at, &views);
         let edge_teff = |node: f64| (at[0] / node - 1.0).abs() < EDGE.0;
         let edge_log_g = |node: f64| (at[1] - node).abs() < EDGE.1;
         let ridge_k = self.ridge_k(at[1]);
@@ -396,4 +398,3 @@ pub fn equivalent_width_aa(wave_vac_aa: &[f64], flux: &[f64]) -> f64 {
     let depth = |i: usize| 1.0 - flux[i] / (blue.1 + slope * (wave_vac_aa[i] - blue.0));
     (1..=last).map(|i| 0.5 * (depth(i) + depth(i - 1)) * (wave_vac_aa[i] - wave_vac_aa[i - 1])).sum()
 }
-

@@ -81,8 +81,10 @@ struct Scratch {
 impl<'g> Objective<'g> {
     /// Takes the windows that the spectrum covers well enough, at a first guess of the velocity.
     pub fn new(spectrum: &Spectrum, grid: &'g FluxGrid, windows: &[Window], velocity_km_s: f64) -> Self {
-        let windows =
-            windows.iter().filter_map(|window| WindowData::cut(spectrum, grid, window, velocity_km_s)).collect();
+        let windows = windows
+            .iter()
+            .filter_map(|window| WindowData::cut(spectrum, grid, window, velocity_km_s))
+            .collect();
         let mut objective =
             Objective { grid, windows, velocity_km_s, scratch: RefCell::new(Scratch::default()) };
         objective.set_velocity(velocity_km_s);
@@ -203,8 +205,7 @@ impl LeastSquares<3> for &Objective<'_> {
     fn linearise(&self, parameters: &Vector3<f64>) -> Result<Linearisation<3>, Error> {
         let stencil = self.grid.stencil(parameters[0], parameters[1])?;
         let mut scratch = self.scratch.borrow_mut();
-        let mut result =
-            Linearisation { chi2: 0.0, gradient: Vector3::zeros(), curvature: Matrix3::zeros() };
+        let mut result = Linearisation { chi2: 0.0, gradient: Vector3::zeros(), curvature: Matrix3::zeros() };
         for data in &self.windows {
             scratch.fit_to(data.pixels.len());
             let Scratch { model, seen, .. } = &mut *scratch;
@@ -332,10 +333,7 @@ impl Scratch {
             let later: f64 = (l + 1..count).map(|k| triangle[l][k] * coefficients[k]).sum();
             coefficients[l] = (shares[l] - later) / triangle[l][l];
         }
-        data.position
-            .iter()
-            .map(|x| (0..count).map(|l| coefficients[l] * legendre(l, *x)).sum())
-            .collect()
+        data.position.iter().map(|x| (0..count).map(|l| coefficients[l] * legendre(l, *x)).sum()).collect()
     }
 
     /// Derivatives of the model, less what the normalisation would take up.

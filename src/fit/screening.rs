@@ -35,9 +35,15 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag
     let chosen = fit.chosen();
     let snr = fit.snr();
     if snr < SNR_REJECT {
-        flags.push(Flag::new(&codes::FIT_TOO_NOISY, format!("median S/N per pixel {snr:.1}, need {SNR_REJECT}")));
+        flags.push(Flag::new(
+            &codes::FIT_TOO_NOISY,
+            format!("median S/N per pixel {snr:.1}, need {SNR_REJECT}"),
+        ));
     } else if snr < SNR_REVIEW {
-        flags.push(Flag::new(&codes::FIT_LOW_SNR, format!("median S/N per pixel {snr:.1}, below {SNR_REVIEW}")));
+        flags.push(Flag::new(
+            &codes::FIT_LOW_SNR,
+            format!("median S/N per pixel {snr:.1}, below {SNR_REVIEW}"),
+        ));
     }
     let rms = fit.lines.iter().map(|line| line.rms_residual.powi(2)).sum::<f64>() / fit.lines.len() as f64;
     let (rms, reduced) = (rms.sqrt(), chosen.reduced_chi2());
@@ -86,11 +92,13 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag
     }
     let (teff_error, log_g_error) = (chosen.sigma(0) / chosen.teff_k, chosen.sigma(1));
     if !(teff_error < LARGEST_ERROR.0 && log_g_error < LARGEST_ERROR.1) {
-        let detail = format!("statistical errors {:.0} % in Teff, {log_g_error:.2} in log g", 100.0 * teff_error);
+        let detail =
+            format!("statistical errors {:.0} % in Teff, {log_g_error:.2} in log g", 100.0 * teff_error);
         flags.push(Flag::new(&codes::FIT_UNCERTAIN, detail));
     }
     if fit.rejected_pixels > 0 {
-        let detail = format!("{} of {} pixels", fit.rejected_pixels, objective.counts().0 + fit.rejected_pixels);
+        let detail =
+            format!("{} of {} pixels", fit.rejected_pixels, objective.counts().0 + fit.rejected_pixels);
         flags.push(Flag::new(&codes::FIT_PIXELS_SET_ASIDE, detail));
     }
     flags

@@ -98,11 +98,8 @@ impl LineResult {
         let used: Vec<usize> = (0..data.pixels.len()).filter(|i| data.inverse_sigma[*i] > 0.0).collect();
         let mut ratios: Vec<f64> = used.iter().map(|i| data.flux[*i] * data.inverse_sigma[*i]).collect();
         let middle = ratios.len() / 2;
-        let snr = if ratios.is_empty() {
-            0.0
-        } else {
-            *ratios.select_nth_unstable_by(middle, f64::total_cmp).1
-        };
+        let snr =
+            if ratios.is_empty() { 0.0 } else { *ratios.select_nth_unstable_by(middle, f64::total_cmp).1 };
         let squares: f64 = used.iter().map(|i| (data.flux[*i] / seen.model[*i] - 1.0).powi(2)).sum();
         let waves: Vec<f64> = used.iter().map(|i| data.pixels[*i].wave_vac_aa).collect();
         let flux: Vec<f64> = used.iter().map(|i| data.flux[*i]).collect();

@@ -169,8 +169,7 @@ impl NodeSpectrum {
 
     fn from_bytes(bytes: &[u8], fluxes: usize, seds: usize) -> Option<Self> {
         let (head, tail) = bytes.split_at_checked(7 * 8)?;
-        let head: Vec<f64> =
-            head.as_chunks::<8>().0.iter().map(|chunk| f64::from_le_bytes(*chunk)).collect();
+        let head: Vec<f64> = head.as_chunks::<8>().0.iter().map(|chunk| f64::from_le_bytes(*chunk)).collect();
         let values: Vec<f32> =
             tail.as_chunks::<4>().0.iter().map(|chunk| f32::from_le_bytes(*chunk)).collect();
         if values.len() != fluxes + seds {
@@ -261,8 +260,9 @@ fn assemble(
     let at = |i: usize, j: usize| &spectra[i * gravities + j];
     let ln_flux =
         Array3::from_shape_fn((temperatures, gravities, wave_vac_aa.len()), |(i, j, k)| at(i, j).ln_flux[k]);
-    let ln_sed =
-        Array3::from_shape_fn((temperatures, gravities, sed_wave_vac_aa.len()), |(i, j, k)| at(i, j).ln_sed[k]);
+    let ln_sed = Array3::from_shape_fn((temperatures, gravities, sed_wave_vac_aa.len()), |(i, j, k)| {
+        at(i, j).ln_sed[k]
+    });
     let mut grid = FluxGrid {
         teff_k: nodes.teff_k.clone(),
         log_g: nodes.log_g.clone(),

@@ -21,8 +21,7 @@ use super::{FluxGrid, GridHeader, NodeRecord};
 pub const FORMAT_VERSION: u32 = 1;
 
 /// Header cards that carry the physics switches.
-const SWITCHES: [&str; 8] =
-    ["COMPOS", "THERMO", "CONVEC", "NEUTRAD", "OCCUP", "STARK", "SELFBR", "LYAQUASI"];
+const SWITCHES: [&str; 8] = ["COMPOS", "THERMO", "CONVEC", "NEUTRAD", "OCCUP", "STARK", "SELFBR", "LYAQUASI"];
 
 const NODE_COLUMNS: usize = 7;
 
@@ -116,7 +115,10 @@ impl FluxGrid {
             let found = values.len();
             let shape = (teff_k.len(), log_g.len(), waves);
             Array3::from_shape_vec(shape, values).map_err(|_| {
-                damaged(path, format!("{name} holds {found} values, expected {} x {} x {}", shape.0, shape.1, shape.2))
+                damaged(
+                    path,
+                    format!("{name} holds {found} values, expected {} x {} x {}", shape.0, shape.1, shape.2),
+                )
             })
         };
         let ln_flux = spectra(&mut fits, "LNFLUX", wave_vac_aa.len())?;
@@ -129,7 +131,8 @@ impl FluxGrid {
         grid.check_axes().map_err(|found| damaged(path, found))?;
         let found = grid.compute_blake3();
         if found != grid.header.blake3 {
-            let text = format!("its numbers have the checksum {found}, its header says {}", grid.header.blake3);
+            let text =
+                format!("its numbers have the checksum {found}, its header says {}", grid.header.blake3);
             return Err(damaged(path, text));
         }
         Ok(grid)
@@ -143,7 +146,8 @@ impl FluxGrid {
         let io = |source| GridFault::Io { verb: "write", path: path.to_owned(), source };
         let folder = path.parent().filter(|folder| !folder.as_os_str().is_empty()).unwrap_or(Path::new("."));
         let scratch = std::env::temp_dir().join(format!("emberline-grid-{}.fits", std::process::id()));
-        self.write_fits(&scratch).map_err(|fault| damaged(path, format!("cfitsio refused to write it: {fault}")))?;
+        self.write_fits(&scratch)
+            .map_err(|fault| damaged(path, format!("cfitsio refused to write it: {fault}")))?;
         let temporary = path.with_extension("writing");
         let bytes = fs::read(&scratch).map_err(io)?;
         fs::remove_file(&scratch).map_err(io)?;
@@ -169,7 +173,14 @@ impl FluxGrid {
         let (temperatures, gravities) = (self.teff_k.len(), self.log_g.len());
         write_image(&mut fits, "TEFF", "K", &[temperatures], ImageType::Double, &self.teff_k)?;
         write_image(&mut fits, "LOGG", "log(cm/s**2)", &[gravities], ImageType::Double, &self.log_g)?;
-        write_image(&mut fits, "WAVE", "Angstrom", &[self.wave_vac_aa.len()], ImageType::Double, &self.wave_vac_aa)?;
+        write_image(
+            &mut fits,
+            "WAVE",
+            "Angstrom",
+            &[self.wave_vac_aa.len()],
+            ImageType::Double,
+            &self.wave_vac_aa,
+        )?;
         let sed = &self.sed_wave_vac_aa;
         write_image(&mut fits, "SEDWAVE", "Angstrom", &[sed.len()], ImageType::Double, sed)?;
         let numbers = self.node_numbers();
@@ -195,7 +206,10 @@ impl FluxGrid {
             ("SEDWAVE", &self.sed_wave_vac_aa),
         ] {
             if axis.len() < 4 || !axis.windows(2).all(|pair| pair[0] < pair[1]) {
-                return Err(format!("its axis {name} has {} values that do not all ascend, need at least 4", axis.len()));
+                return Err(format!(
+                    "its axis {name} has {} values that do not all ascend, need at least 4",
+                    axis.len()
+                ));
             }
         }
         Ok(())
@@ -238,14 +252,18 @@ fn hash_numbers(hasher: &mut blake3::Hasher, bytes: impl Iterator<Item = u8>) {
 }
 
 fn read_header(fits: &mut FitsFile, path: &Path) -> Result<GridHeader, GridFault> {
-    let primary = fits.primary_hdu().map_err(|fault| damaged(path, format!("it has no primary header: {fault}")))?;
+    let primary =
+        fits.primary_hdu().map_err(|fault| damaged(path, format!("it has no primary header: {fault}")))?;
     let mut text = |key: &str| -> Result<String, GridFault> {
         primary
             .read_key::<String>(fits, key)
             .map_err(|_| damaged(path, format!("its header has no card {key}; it is not a flux grid")))
     };
     let number = |value: String, key: &str| {
-        value.trim().parse::<u32>().map_err(|_| damaged(path, format!("its card {key} is not a number: {value}")))
+        value
+            .trim()
+            .parse::<u32>()
+            .map_err(|_| damaged(path, format!("its card {key} is not a number: {value}")))
     };
     let format_version = number(text("GRIDFMT")?, "GRIDFMT")?;
     let physics_version = number(text("PHYSVER")?, "PHYSVER")?;
@@ -256,8 +274,7 @@ fn read_header(fits: &mut FitsFile, path: &Path) -> Result<GridHeader, GridFault
             return Err(GridFault::OtherVersion { path: path.to_owned(), what, found, need });
         }
     }
-    let physics =
-        SWITCHES.iter().filter_map(|key| Some(((*key).to_owned(), text(key).ok()?))).collect();
+    let physics = SWITCHES.iter().filter_map(|key| Some(((*key).to_owned(), text(key).ok()?))).collect();
     Ok(GridHeader {
         format_version,
         physics_version,
@@ -272,8 +289,10 @@ fn read_image<T>(fits: &mut FitsFile, name: &str, path: &Path) -> Result<Vec<T>,
 where
     Vec<T>: ReadImage,
 {
-    let hdu = fits.hdu(name).map_err(|fault| damaged(path, format!("it has no extension {name}: {fault}")))?;
-    hdu.read_image(fits).map_err(|fault| damaged(path, format!("its extension {name} cannot be read: {fault}")))
+    let hdu =
+        fits.hdu(name).map_err(|fault| damaged(path, format!("it has no extension {name}: {fault}")))?;
+    hdu.read_image(fits)
+        .map_err(|fault| damaged(path, format!("its extension {name} cannot be read: {fault}")))
 }
 
 fn write_image<T: WriteImage>(

@@ -230,7 +230,8 @@ impl AxisStencil {
         slope[here] = (6.0 * t2 - 6.0 * t) / width;
         slope[here + 1] = -slope[here];
         // ... and slopes, each a combination of three node values.
-        let ends = [(here, t3 - 2.0 * t2 + t, 3.0 * t2 - 4.0 * t + 1.0), (here + 1, t3 - t2, 3.0 * t2 - 2.0 * t)];
+        let ends =
+            [(here, t3 - 2.0 * t2 + t, 3.0 * t2 - 4.0 * t + 1.0), (here + 1, t3 - t2, 3.0 * t2 - 2.0 * t)];
         for (node, basis, basis_slope) in ends {
             for (index, share) in parabola_slope(&x, node) {
                 weight[index] += basis * width * share;
@@ -298,8 +299,7 @@ impl FluxGrid {
             for j in 1..self.log_g.len() - 1 {
                 let exact = profile(&[(i, j, 1.0)]);
                 let rms = |terms: Vec<(usize, usize, f64)>| {
-                    let squares: f64 =
-                        profile(&terms).iter().zip(&exact).map(|(a, b)| (a - b).powi(2)).sum();
+                    let squares: f64 = profile(&terms).iter().zip(&exact).map(|(a, b)| (a - b).powi(2)).sum();
                     (squares / waves.len() as f64).sqrt()
                 };
                 let along_teff = without(&self.teff_k, i, f64::ln);

@@ -67,6 +67,9 @@ const LARGEST_DAMPING: f64 = 1e12;
 
 /// Minimises from a start inside the bounds.
 ///
+/// Steps and gradients are judged against the residuals; `chi2_floor` (in units of the sum of squares)
+/// stands in for residuals that vanish: 1 for residuals in standard deviations, 0 where nothing is known.
+///
 /// # Errors
 /// What the problem reports where it cannot be evaluated.
 pub fn minimise<const N: usize, P: LeastSquares<N>>(
@@ -74,8 +77,10 @@ pub fn minimise<const N: usize, P: LeastSquares<N>>(
     start: SVector<f64, N>,
     bounds: Bounds<N>,
     most_iterations: u64,
+    chi2_floor: f64,
 ) -> Result<Fitted<N>, Error> {
-    let solver = LevenbergMarquardt { bounds, damping: FIRST_DAMPING, growth: 2.0, at: None, ended: None };
+    let solver =
+        LevenbergMarquardt { bounds, chi2_floor, damping: FIRST_DAMPING, growth: 2.0, at: None, ended: None };
     let result = Executor::new(problem, solver)
         .configure(|state: Parameters<N>| state.param(start).max_iters(most_iterations))
         .ctrlc(false)
@@ -86,8 +91,9 @@ pub fn minimise<const N: usize, P: LeastSquares<N>>(
     let (Some(parameters), Some(at)) = (result.state.get_param().copied(), solver.at) else {
         return Err(Error::msg("the solver ended before its first evaluation"));
     };
-    let is_small = tangent_cosine(&at, &held(&parameters, &at.gradient, &bounds)) < GRADIENT_TOLERANCE;
-    let is_converged = solver.ended == Some(Ending::Still) && is_small || is_small && at.chi2 == 0.0;
+    let is_held = held(&parameters, &at.gradient, &bounds);
+    let is_small = tangent_cosine(&at, &is_held, chi2_floor) < GRADIENT_TOLERANCE;
+    let is_converged = solver.ended == Some(Ending::Still) && is_small;
     Ok(Fitted { parameters, at, iterations, is_converged })
 }
 
@@ -104,6 +110,7 @@ enum Ending {
 
 struct LevenbergMarquardt<const N: usize> {
     bounds: Bounds<N>,
+    chi2_floor: f64,
     damping: f64,
     growth: f64,
     at: Option<Linearisation<N>>,
@@ -136,7 +143,8 @@ impl<const N: usize, P: LeastSquares<N>> Solver<P, Parameters<N>> for LevenbergM
         };
         let step = self.bounded_step(&here, &at);
         let there = here + step;
-        let is_still = (at.curvature * step).dot(&step) <= STEP_TOLERANCE.powi(2) * at.chi2
+        let is_still = (at.curvature * step).dot(&step)
+            <= STEP_TOLERANCE.powi(2) * at.chi2.max(self.chi2_floor)
             || (0..N).all(|i| step[i].abs() <= RELATIVE_STEP_TOLERANCE * here[i].abs());
         let trial = problem.problem("linearise", |problem| problem.linearise(&there))?;
         let predicted = -(2.0 * at.gradient + at.curvature * step).dot(&step);
@@ -191,21 +199,17 @@ impl<const N: usize> LevenbergMarquardt<N> {
 }
 
 /// Parameters that sit on a bound and would leave the box downhill.
-fn held<const N: usize>(
-    here: &SVector<f64, N>,
-    gradient: &SVector<f64, N>,
-    bounds: &Bounds<N>,
-) -> [bool; N] {
+fn held<const N: usize>(here: &SVector<f64, N>, gradient: &SVector<f64, N>, bounds: &Bounds<N>) -> [bool; N] {
     std::array::from_fn(|i| {
         here[i] <= bounds.lower[i] && gradient[i] > 0.0 || here[i] >= bounds.upper[i] && gradient[i] < 0.0
     })
 }
 
 /// Largest cosine of the angle between the residuals and a free parameter's direction.
-fn tangent_cosine<const N: usize>(at: &Linearisation<N>, is_held: &[bool; N]) -> f64 {
+fn tangent_cosine<const N: usize>(at: &Linearisation<N>, is_held: &[bool; N], chi2_floor: f64) -> f64 {
     let mut largest = 0.0_f64;
     for i in 0..N {
-        let length = (at.curvature[(i, i)] * at.chi2).sqrt();
+        let length = (at.curvature[(i, i)] * at.chi2.max(chi2_floor)).sqrt();
         if !is_held[i] && length > 0.0 {
             largest = largest.max(at.gradient[i].abs() / length);
         }

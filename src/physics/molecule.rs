@@ -89,8 +89,7 @@ impl Diatomic {
                 }
                 last = level;
                 let spin_weight = if (j as i64) % 2 == 0 { 0.25 } else { 0.75 };
-                let weight =
-                    spin_weight * (2.0 * j + 1.0) * (-WAVENUMBER_K * level / temperature_k).exp();
+                let weight = spin_weight * (2.0 * j + 1.0) * (-WAVENUMBER_K * level / temperature_k).exp();
                 sum += weight;
                 energy_sum += weight * level;
                 j += 1.0;

@@ -93,7 +93,8 @@ pub fn observe(grid: &FluxGrid, seed: u64, number: u64) -> Result<Sighting, Spec
     let reference = clean[at];
     let sigma: Vec<f64> =
         clean.iter().map(|flux| reference / snr * (flux.max(0.0) / reference).sqrt().max(0.05)).collect();
-    let flux = clean.iter().zip(&sigma).map(|(flux, sigma)| flux + sigma * unit_normal(&mut random)).collect();
+    let flux =
+        clean.iter().zip(&sigma).map(|(flux, sigma)| flux + sigma * unit_normal(&mut random)).collect();
     let waves: Vec<f64> = pixels.iter().map(|pixel| pixel.wave_vac_aa).collect();
     let good = vec![true; waves.len()];
     let spectrum = Spectrum::new(waves, flux, sigma, good, Resolution::FwhmAa(fwhm_aa), true)?;
@@ -119,9 +120,7 @@ fn draw_truth(random: &mut ChaCha8Rng) -> Truth {
 fn spectrograph(fwhm_aa: f64) -> Vec<Pixel> {
     let width_aa = fwhm_aa / PIXELS_PER_FWHM;
     let count = ((RANGE_AA.1 - RANGE_AA.0) / width_aa) as usize;
-    (0..count)
-        .map(|i| Pixel { wave_vac_aa: RANGE_AA.0 + width_aa * i as f64, width_aa, fwhm_aa })
-        .collect()
+    (0..count).map(|i| Pixel { wave_vac_aa: RANGE_AA.0 + width_aa * i as f64, width_aa, fwhm_aa }).collect()
 }
 
 fn see_star(grid: &FluxGrid, pixels: &[Pixel], teff_k: f64, log_g: f64, velocity_km_s: f64) -> Vec<f64> {

@@ -25,7 +25,8 @@ impl<'t> Analysis<'t> {
     /// Prepares the fit against a grid, and the look-up in a track table.
     pub fn new(grid: &'t FluxGrid, tracks: &'t TrackTable, settings: &FitSettings) -> Self {
         let fingerprint = blake3::hash(format!("{settings:?}").as_bytes()).to_hex()[..16].to_owned();
-        let physics: Vec<String> = grid.header.physics.iter().map(|(key, value)| format!("{key}={value}")).collect();
+        let physics: Vec<String> =
+            grid.header.physics.iter().map(|(key, value)| format!("{key}={value}")).collect();
         let provenance = Provenance {
             config_fingerprint: Some(fingerprint),
             grid: Some(format!("physics {}: {}", grid.header.physics_version, physics.join("; "))),

@@ -1,9 +1,10 @@
-mod hydrogen;
-mod stark;
-mod stark_tables;
 //! Truth from outside: each number with its source beside it.
 
 mod constants;
-mod wavelength;
+mod hydrogen;
 mod interior;
+mod least_squares;
 mod star;
+mod stark;
+mod stark_tables;
+mod wavelength;

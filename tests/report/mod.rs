@@ -4,11 +4,11 @@ use std::fs;
 
 use emberline::codes::{self, Effect, Flag};
 use emberline::report::{
-    Analyse, Findings, FittedParameters, LineRow, Provenance, Report, SCHEMA_VERSION, SolutionRow,
-    Verdict, report_file, schema, write_atomically,
+    Analyse, Findings, FittedParameters, LineRow, Provenance, Report, SCHEMA_VERSION, SolutionRow, Verdict,
+    report_file, schema, write_atomically,
 };
-use emberline::star::{Star, StarValue};
 use emberline::spectrum::{ObjectRecord, Observation, ReadSettings, SourceRecord};
+use emberline::star::{Star, StarValue};
 
 use crate::support::folder;
 

@@ -2,3 +2,5 @@
 
 pub mod fits_bytes;
 pub mod folder;
+pub mod published;
+pub mod toy_grid;

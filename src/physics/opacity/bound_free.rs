@@ -11,8 +11,9 @@ pub const LYMAN_LIMIT_HZ: f64 = LIGHT_SPEED_CM_S * RYDBERG_H_PER_CM;
 const FINE_STRUCTURE: f64 = 7.297_352_5693e-3;
 
 /// Kramers cross-section of level 1 at its threshold, cm^2: 64 pi alpha a0^2 / (3 sqrt 3).
-const KRAMERS_THRESHOLD_CM2: f64 = 64.0 * std::f64::consts::PI * FINE_STRUCTURE * BOHR_RADIUS_CM * BOHR_RADIUS_CM
-    / (3.0 * 1.732_050_807_568_877_2);
+const KRAMERS_THRESHOLD_CM2: f64 =
+    64.0 * std::f64::consts::PI * FINE_STRUCTURE * BOHR_RADIUS_CM * BOHR_RADIUS_CM
+        / (3.0 * 1.732_050_807_568_877_2);
 
 /// Photoionisation cross-section of level n averaged over its sublevels, cm^2, at or above its
 /// threshold; below it, the smooth continuation as nu^-3 that the pseudo-continuum needs.

@@ -45,8 +45,8 @@ impl Continuum {
         let ground = state.levels_per_cm3[0];
         let outputs = absorption_per_cm.iter_mut().zip(scattering_per_cm);
         for (point, (absorption, scattering)) in self.points.iter().zip(outputs) {
-            let emission = 1.0
-                - (-PLANCK_OVER_BOLTZMANN_K_S * point.frequency_hz / state.temperature_k).exp();
+            let emission =
+                1.0 - (-PLANCK_OVER_BOLTZMANN_K_S * point.frequency_hz / state.temperature_k).exp();
             let mut stimulated = point.bound_free_per_cm(state)
                 + state.electrons_per_cm3
                     * state.protons_per_cm3
@@ -56,12 +56,9 @@ impl Continuum {
                 stimulated += ground * state.protons_per_cm3 * h2_plus.cm5(state.temperature_k);
             }
             *absorption = stimulated * emission
-                + ground
-                    * electron_pressure_cgs
-                    * point.h_minus_free_free.cm4_per_dyn(state.temperature_k);
-            *scattering = thomson_per_cm
-                + ground * point.rayleigh_h_cm2
-                + state.h2_per_cm3 * point.rayleigh_h2_cm2;
+                + ground * electron_pressure_cgs * point.h_minus_free_free.cm4_per_dyn(state.temperature_k);
+            *scattering =
+                thomson_per_cm + ground * point.rayleigh_h_cm2 + state.h2_per_cm3 * point.rayleigh_h2_cm2;
         }
     }
 }

@@ -1,8 +1,6 @@
 //! Line opacity: Lyman, Balmer, Paschen and Brackett series.
 
-use crate::physics::constants::{
-    ELECTRON_MASS_G, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S,
-};
+use crate::physics::constants::{ELECTRON_MASS_G, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S};
 use crate::physics::hydrogen::Line;
 use crate::physics::stark::{Broadened, LineTable, ProfileTable, StaticLine, self_broadening_hwhm_aa};
 use crate::physics::state::State;
@@ -106,9 +104,7 @@ impl Transition<'_> {
     fn broadened(&self, state: &State) -> Broadened {
         let hwhm_aa = self_broadening_hwhm_aa(self.line, state.temperature_k, state.levels_per_cm3[0]);
         match &self.profile {
-            Profile::Unified(table) => {
-                table.broadened(state.temperature_k, state.electrons_per_cm3, hwhm_aa)
-            }
+            Profile::Unified(table) => table.broadened(state.temperature_k, state.electrons_per_cm3, hwhm_aa),
             Profile::Static(line) => line.broadened(state.temperature_k, state.electrons_per_cm3, hwhm_aa),
         }
     }
