@@ -10,8 +10,9 @@ use indicatif::{ProgressBar, ProgressStyle};
 use rayon::prelude::*;
 use serde::de::DeserializeOwned;
 
-use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE};
-use crate::report::{Analyse, Report, Verdict, report_file};
+use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, Tables};
+use crate::fit::FitSettings;
+use crate::report::{Analysis, Report, Verdict, report_file};
 use crate::spectrum::{Assumptions, ErrorKind, FluxScale, Medium, ReadSettings, VelocityFrame, WaveUnit};
 
 /// Files read and fitted at once before their reports are printed, so that output streams.
@@ -98,13 +99,16 @@ fn word<T: DeserializeOwned>(words: &str) -> Result<T, String> {
     serde_json::from_value(serde_json::Value::String(words.to_owned())).map_err(|fault| fault.to_string())
 }
 
-/// Reads, analyses and reports every object of every file.
-pub fn run(arguments: &FitArguments, pipeline: &dyn Analyse) -> CommandResult {
+/// Checks the options, then reads the tables, then reads, analyses and reports every object of every
+/// file.
+pub fn run(arguments: &FitArguments) -> CommandResult {
     let settings = arguments.settings();
     if let Err(detail) = settings.check() {
         writeln!(io::stderr(), "emberline: cannot use the options: {detail}")?;
         return Ok(ExitCode::from(EXIT_WRONG_USE));
     }
+    let tables = Tables::read()?;
+    let pipeline = Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default());
     let bar = progress_bar(arguments.files.len());
     let started = Instant::now();
     let mut out = io::BufWriter::new(io::stdout().lock());
@@ -113,7 +117,7 @@ pub fn run(arguments: &FitArguments, pipeline: &dyn Analyse) -> CommandResult {
         let reports: Vec<Vec<Report>> = batch
             .par_iter()
             .map(|path| {
-                let reports = report_file(path, &settings, pipeline);
+                let reports = report_file(path, &settings, &pipeline);
                 bar.inc(1);
                 reports
             })

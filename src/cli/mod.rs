@@ -20,8 +20,7 @@ use clap::{Parser, Subcommand};
 
 pub use tables::Tables;
 
-use crate::fit::FitSettings;
-use crate::report::{Analysis, error_chain};
+use crate::report::error_chain;
 
 /// Exit code for wrong use or configuration.
 pub const EXIT_WRONG_USE: u8 = 2;
@@ -63,7 +62,7 @@ pub fn run() -> ExitCode {
     };
     start_log();
     let outcome = match arguments.command {
-        Command::Fit(arguments) => run_fit(&arguments),
+        Command::Fit(arguments) => fit::run(&arguments),
         Command::Rehearse(arguments) => rehearse::run(&arguments),
         Command::Grid(arguments) => grid::run(&arguments),
         Command::Tracks(arguments) => tracks::run(&arguments).map_err(Into::into),
@@ -79,11 +78,6 @@ pub fn run() -> ExitCode {
             ExitCode::from(EXIT_WRONG_USE)
         }
     }
-}
-
-fn run_fit(arguments: &fit::FitArguments) -> CommandResult {
-    let tables = Tables::read()?;
-    fit::run(arguments, &Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default()))
 }
 
 fn print_refusal(refusal: &clap::Error) -> ExitCode {
