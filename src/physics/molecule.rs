@@ -113,3 +113,18 @@ impl Diatomic {
         }
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Dissociation constant of H2 in atmospheres: log10 Kp = -1.606 at 3 000 K (JANAF tables, from
+    /// memory), which is the textbook 7.8 % dissociation at 1 atm.
+    #[test]
+    fn validate_hydrogen_dissociation() {
+        const ATMOSPHERE_CGS: f64 = 1.013_25e6;
+        let association = h2_equilibrium(3000.0).association_cm3;
+        let pressure = BOLTZMANN_ERG_K * 3000.0 / association / ATMOSPHERE_CGS;
+        assert!((pressure.log10() + 1.606).abs() < 0.02, "log Kp = {}", pressure.log10());
+    }
+}

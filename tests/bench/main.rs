@@ -1,6 +1,10 @@
 //! Benchmarks: `cargo bench`.
 #![allow(missing_docs, clippy::unwrap_used)]
 
+mod atmospheres;
+mod fitting;
+mod reading;
+
 use std::path::Path;
 
 use emberline::grid::track_table::TrackTable;

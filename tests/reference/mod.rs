@@ -1,6 +1,7 @@
 //! Truth from outside: each number with its source beside it.
 
 mod constants;
+mod gas;
 mod hydrogen;
 mod interior;
 mod least_squares;

@@ -1,5 +1,6 @@
 //! Invariants and recovery: what goes in must come out, with honest errors.
 
+mod atmospheres;
 mod grid_file;
 mod models;
 mod recovery;

@@ -90,3 +90,46 @@ pub fn dissolved_fraction(
     }
     (1.0 - surroundings.occupation(effective_level) / occupation[level - 1]).clamp(0.0, 1.0)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Threshold cross-sections from the exact theory: 6.304e-18 cm^2 for n = 1 (Bethe & Salpeter
+    /// 1957), and Gaunt factors 0.7973, 0.8762, 0.9075, 0.9247 of n = 1 .. 4 (Karzas & Latter 1961, ApJS 6,
+    /// 167; from memory).
+    #[test]
+    fn validate_thresholds() {
+        let at_threshold = |n: usize| cross_section_cm2(n, LYMAN_LIMIT_HZ / (n * n) as f64 * (1.0 + 1e-9));
+        assert!((at_threshold(1) / 6.304e-18 - 1.0).abs() < 2e-3, "{}", at_threshold(1));
+        for (n, gaunt, tolerance) in
+            [(1, 0.7973, 2e-3), (2, 0.8762, 2e-3), (3, 0.9075, 4e-3), (4, 0.9247, 4e-3)]
+        {
+            let ours = at_threshold(n) / (KRAMERS_THRESHOLD_CM2 * n as f64);
+            assert!((ours / gaunt - 1.0).abs() < tolerance, "n = {n}: {ours} against {gaunt}");
+        }
+    }
+
+    /// The exact n = 2 cross-section and the asymptotic one agree where the latter holds.
+    #[test]
+    fn verify_exact_joins_asymptotic() {
+        for ratio in [0.8, 0.6, 0.4] {
+            let exact = exact_low_level(2.0, ratio);
+            let asymptotic =
+                KRAMERS_THRESHOLD_CM2 * 2.0 * ratio.powi(3) * asymptotic_gaunt(2.0, 1.0 / ratio - 1.0);
+            assert!((asymptotic / exact - 1.0).abs() < 0.01, "at {ratio}: {asymptotic:e} against {exact:e}");
+        }
+    }
+
+    #[test]
+    fn verify_pseudo_continuum_ends_at_the_first_line() {
+        let state = crate::physics::state::State::new(12_000.0, 3e5);
+        let of = |wave_aa: f64| {
+            let hz = 1e8 * LIGHT_SPEED_CM_S / wave_aa;
+            dissolved_fraction(2, hz, &state.occupation, &state.surroundings)
+        };
+        assert_eq!(of(3600.0), 1.0);
+        assert!(of(3700.0) > 0.5 && of(4000.0) < 0.5);
+        assert_eq!(of(6600.0), 0.0);
+    }
+}

@@ -66,3 +66,27 @@ impl FreeFree {
         (1e-29 * series * root * root).max(0.0)
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Maximum of Wishart (1979): 3.9e-17 cm^2 near 0.85 micrometres (from memory); zero beyond threshold.
+    #[test]
+    fn validate_photodetachment_maximum() {
+        let peak = (4000..16_000).step_by(10).map(|wave| (bound_free_cm2(f64::from(wave)), wave));
+        let (height, wave) = peak.max_by(|a, b| a.0.total_cmp(&b.0)).unwrap_or_default();
+        assert!((height / 3.9e-17 - 1.0).abs() < 0.02, "{height:e}");
+        assert!((8200..8800).contains(&wave), "{wave}");
+        assert_eq!(bound_free_cm2(16_420.0), 0.0);
+    }
+
+    /// The two tables of the free-free fit meet at 0.3645 micrometres.
+    #[test]
+    fn verify_free_free_tables_join() {
+        for temperature_k in [5000.0, 7000.0, 10_000.0] {
+            let at = |wave: f64| FreeFree::at(wave).cm4_per_dyn(temperature_k);
+            assert!((at(3644.9) / at(3645.1) - 1.0).abs() < 0.02, "{} {}", at(3644.9), at(3645.1));
+        }
+    }
+}
