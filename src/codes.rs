@@ -193,6 +193,9 @@ codes! {
     FIT_WEAK_CHOICE = "fit.weak-choice", Review,
         "a hot and a cold solution explain the spectrum almost equally well",
         "add photometry or a flux-calibrated spectrum";
+    FIT_WAVELENGTHS_DISAGREE = "fit.wavelengths-disagree", Review,
+        "the lines disagree on the radial velocity: the wavelength scale is wrong, or the star is not single",
+        "check the wavelength calibration; Teff and log g were fitted with an offset per line, the velocity is not to be used";
     FIT_THREE_D = "fit.three-d", Note,
         "parameters of one-dimensional models were corrected for three-dimensional convection, or could not be",
         "none needed; both values are in `solutions`";

@@ -50,7 +50,7 @@ fn correlation_factor(views: &[Seen]) -> f64 {
             })
             .sum();
         let correlation = products / variance;
-        if !(correlation > noise) {
+        if correlation.is_nan() || correlation <= noise {
             break;
         }
         factor += 2.0 * correlation;

@@ -32,6 +32,13 @@ const MOST_ITERATIONS: u64 = 60;
 const MOST_MINIMA: usize = 4;
 /// Solutions closer than this are one: relative in Teff, absolute in log g.
 const SAME_SOLUTION: (f64, f64) = (0.01, 0.05);
+/// A line's velocity disagrees with the others' from this on, km/s and standard deviations: more than any
+/// asymmetry of Stark-broadened lines makes.
+const OFFSET_KM_S: f64 = 60.0;
+const OFFSET_SIGMA: f64 = 4.0;
+const MOST_ALIGNMENTS: usize = 6;
+/// Largest change of an offset in one round, km/s.
+const LARGEST_ALIGNMENT_KM_S: f64 = 250.0;
 /// A pixel is set aside when it misses the best model by this many standard deviations, scaled by the
 /// scatter of all pixels.
 const OUTLIER_SIGMA: f64 = 5.0;
@@ -96,6 +103,11 @@ impl<'g> Fitter<'g> {
         }
         let starts = self.scan(spectrum, &wanted, &mut objective);
         let mut solutions = self.refine_all(&mut objective, &starts)?;
+        let largest_offset_km_s = self.align_windows(&mut objective, &solutions[0])?;
+        if largest_offset_km_s.is_some() {
+            let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
+            solutions = self.refine_all(&mut objective, &starts)?;
+        }
         let rejected = self.set_outliers_aside(&mut objective, &solutions);
         if rejected > 0 {
             let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
@@ -112,6 +124,7 @@ impl<'g> Fitter<'g> {
             lines,
             flags: Vec::new(),
             rejected_pixels: rejected,
+            largest_offset_km_s,
             chi2_without_lines,
             views,
             wave_vac_aa: objective
@@ -262,6 +275,35 @@ impl<'g> Fitter<'g> {
                 || edge_log_g(log_g_first)
                 || edge_log_g(log_g_last),
         })
+    }
+
+    /// Where the lines disagree on the velocity far beyond their errors, the wavelengths are wrong (arms of a
+    /// spectrograph with different zero points): each window then gets an offset of its own, so that
+    /// temperature and gravity do not suffer. Returns the largest, km/s; `None` where all agree.
+    fn align_windows(&self, objective: &mut Objective<'g>, best: &Solution) -> Result<Option<f64>, FitFault> {
+        let mut largest = None;
+        let mut at = best.vector();
+        for _ in 0..MOST_ALIGNMENTS {
+            objective.set_velocity(at[2]);
+            let velocities = objective.window_velocities(&at).map_err(FitFault::Model)?;
+            let scatter = best.reduced_chi2().max(1.0).sqrt();
+            let disagrees =
+                |(v, sigma): (f64, f64)| v.abs() > OFFSET_KM_S && v.abs() > OFFSET_SIGMA * scatter * sigma;
+            if !velocities.iter().any(|velocity| disagrees(*velocity)) {
+                break;
+            }
+            for (data, velocity) in objective.windows.iter_mut().zip(&velocities) {
+                // A line too weak to say where it is stays with the others.
+                if disagrees(*velocity) {
+                    // Far from the truth the first order overshoots.
+                    data.offset_km_s += velocity.0.clamp(-LARGEST_ALIGNMENT_KM_S, LARGEST_ALIGNMENT_KM_S);
+                }
+            }
+            let sizes = objective.windows.iter().map(|data| data.offset_km_s.abs());
+            largest = Some(sizes.fold(0.0, f64::max));
+            at = self.refine(objective, at)?.vector();
+        }
+        Ok(largest)
     }
 
     /// Gives the worst isolated pixels no weight; returns their number.

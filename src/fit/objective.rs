@@ -41,6 +41,8 @@ pub struct WindowData {
     pub inverse_sigma: Vec<f64>,
     /// Pixels that the spectrum's mask took away.
     pub masked: usize,
+    /// Wavelength error of this window against the others, as a velocity, km/s.
+    pub offset_km_s: f64,
     /// Position in the window, -1 to 1.
     position: Vec<f64>,
     model_range: Range<usize>,
@@ -96,8 +98,35 @@ impl<'g> Objective<'g> {
         self.velocity_km_s = velocity_km_s;
         for data in &mut self.windows {
             let waves = &self.grid.wave_vac_aa[data.model_range.clone()];
-            data.operator = LineSpread::new(&data.pixels, waves, velocity_km_s);
+            data.operator = LineSpread::new(&data.pixels, waves, velocity_km_s + data.offset_km_s);
         }
+    }
+
+    /// Velocity of each window against the common one that its own residuals ask for, and its standard
+    /// deviation, km/s, to first order, at (Teff, log g, velocity).
+    ///
+    /// # Errors
+    /// Outside the grid.
+    pub fn window_velocities(&self, parameters: &Vector3<f64>) -> Result<Vec<(f64, f64)>, Error> {
+        let stencil = self.grid.stencil(parameters[0], parameters[1])?;
+        let mut scratch = self.scratch.borrow_mut();
+        let mut velocities = Vec::with_capacity(self.windows.len());
+        for data in &self.windows {
+            scratch.fit_to(data.pixels.len());
+            let Scratch { model, seen, .. } = &mut *scratch;
+            model[0].resize(data.model_range.len(), 0.0);
+            self.grid.interpolate(&stencil, data.model_range.clone(), &mut model[0]);
+            data.operator.apply(&model[0], &mut seen[0]);
+            data.operator.apply_velocity_slope(&model[0], &mut seen[3]);
+            let scale = scratch.project(data);
+            scratch.project_directions(data, &scale);
+            let information = dot(&scratch.direction[2], &scratch.direction[2]);
+            velocities.push((
+                dot(&scratch.direction[2], &scratch.residual) / information,
+                1.0 / information.sqrt(),
+            ));
+        }
+        Ok(velocities)
     }
 
     /// The velocity of the operators, km/s.
@@ -248,6 +277,7 @@ impl WindowData {
             flux: Vec::new(),
             inverse_sigma: Vec::new(),
             masked: 0,
+            offset_km_s: 0.0,
             position: Vec::new(),
             model_range: 0..0,
             operator: LineSpread::default(),

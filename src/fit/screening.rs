@@ -96,6 +96,10 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag
             format!("statistical errors {:.0} % in Teff, {log_g_error:.2} in log g", 100.0 * teff_error);
         flags.push(Flag::new(&codes::FIT_UNCERTAIN, detail));
     }
+    if let Some(offset_km_s) = fit.largest_offset_km_s {
+        let detail = format!("lines were shifted against each other by up to {offset_km_s:.0} km/s");
+        flags.push(Flag::new(&codes::FIT_WAVELENGTHS_DISAGREE, detail));
+    }
     if fit.rejected_pixels > 0 {
         let detail =
             format!("{} of {} pixels", fit.rejected_pixels, objective.counts().0 + fit.rejected_pixels);

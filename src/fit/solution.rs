@@ -127,6 +127,8 @@ pub struct Fit {
     pub flags: Vec<Flag>,
     /// Pixels set aside as outliers.
     pub rejected_pixels: usize,
+    /// Largest wavelength offset between lines that had to be allowed, km/s.
+    pub largest_offset_km_s: Option<f64>,
     /// Chi-square of polynomials without lines.
     pub chi2_without_lines: f64,
     /// Model, normalisation and residuals per window of the chosen solution.

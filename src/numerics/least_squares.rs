@@ -60,8 +60,9 @@ pub struct Fitted<const N: usize> {
 /// this fraction of itself.
 const STEP_TOLERANCE: f64 = 1e-5;
 const RELATIVE_STEP_TOLERANCE: f64 = 1e-12;
-/// A gradient is small when the cosine between residuals and each free parameter's direction is.
-const GRADIENT_TOLERANCE: f64 = 1e-5;
+/// A gradient is small when the cosine between residuals and each free parameter's direction is: for 500
+/// residuals the parameter is then within a fiftieth of its standard deviation.
+const GRADIENT_TOLERANCE: f64 = 1e-3;
 const FIRST_DAMPING: f64 = 1e-3;
 const LARGEST_DAMPING: f64 = 1e12;
 

@@ -81,26 +81,35 @@ fn validate_nlte_models() {
     }
 }
 
-/// Fits of published models: what our scale makes of other people's. LTE fits of NLTE models come out
-/// hotter, by 0.4 % at 33 000 K and 5 % at 61 000 K (Napiwotzki 1997 and physics of the cores).
+/// Fits of published models: what our scale makes of other people's.
+///
+/// The X-shooter models are recent and use line profiles of the same theory as ours: they must agree. The
+/// CALSPEC models are NLTE and older; LTE fits of them come out hotter (0.4 % at 33 000 K, 5 % at 61 000 K:
+/// physics.md), and profiles without dissolution inside the line give lower temperatures and gravities
+/// (Tremblay & Bergeron 2009, ApJ 696, 1755). They are bounded, not matched.
 #[test]
 fn validate_fits_of_published_models() {
     let fitter = Fitter::new(bundled_grid(), FitSettings::default());
     println!("{:>12} {:>18} {:>20}", "model", "published", "fitted here");
-    let models = NLTE_MODELS.iter().map(|model| (model, Medium::Vacuum));
-    for ((name, teff_k, log_g), medium) in
-        models.chain(XSHOOTER_MODELS.iter().map(|model| (model, Medium::Air)))
-    {
+    let nlte = NLTE_MODELS.iter().map(|model| (model, Medium::Vacuum, 0.09, 0.25));
+    let xshooter = XSHOOTER_MODELS.iter().map(|model| (model, Medium::Air, 0.03, 0.13));
+    let mut off = Vec::new();
+    for ((name, teff_k, log_g), medium, largest_teff, largest_log_g) in nlte.chain(xshooter) {
         let fit = fitter.fit(&read_model(name, medium, 0.3)).unwrap();
         let chosen = fit.chosen();
+        let (dteff, dlog_g) = (chosen.teff_k / teff_k - 1.0, chosen.log_g - log_g);
+        let rms: Vec<String> =
+            fit.lines.iter().map(|line| format!("{:.2}", 100.0 * line.rms_residual)).collect();
         println!(
-            "{name:>12} {teff_k:>10} {log_g:>7} {:>12.0} {:>7.3}  ({:+.1} %, {:+.3})",
+            "{name:>12} {teff_k:>10} {log_g:>7} {:>12.0} {:>7.3}  ({:+.1} %, {dlog_g:+.3})  rms per line, %: {}",
             chosen.teff_k,
             chosen.log_g,
-            100.0 * (chosen.teff_k / teff_k - 1.0),
-            chosen.log_g - log_g
+            100.0 * dteff,
+            rms.join(" ")
         );
-        assert!((chosen.teff_k / teff_k - 1.0).abs() < 0.08, "{name}: {} K", chosen.teff_k);
-        assert!((chosen.log_g - log_g).abs() < 0.25, "{name}: log g {}", chosen.log_g);
+        if !(dteff.abs() < largest_teff && dlog_g.abs() < largest_log_g) {
+            off.push(*name);
+        }
     }
+    assert!(off.is_empty(), "off: {off:?}");
 }

@@ -1,18 +1,21 @@
 //! Real DA white dwarfs: what the whole program makes of them.
 
 use emberline::fit::{FitSettings, Fitter};
-use emberline::spectrum::{Medium, ReadSettings};
+use emberline::spectrum::ReadSettings;
 
-use crate::support::published::{STANDARDS, bundled_grid, read_model, read_one};
+use crate::support::published::{STANDARDS, bundled_grid, read_one};
 
-/// What the first grid is asked for: at least nine of eleven within these.
+/// How far a star may be from the literature.
 const LARGEST_TEFF: f64 = 0.08;
 const LARGEST_LOG_G: f64 = 0.25;
-const LEAST_GOOD: usize = 9;
 
-/// The eleven stars with parameters in the literature list of `published.rs` less G 93-48 (of the same
-/// list, but checked and printed only), plus BPM 16274. The files of Oke (1990) have arms whose zero
-/// points differ by up to 8 A and errors that are not noise: their residuals say so.
+/// Stars that miss this, and why. GD 50 and HZ 4: optical data of Oke (1990), whose two arms join inside
+/// H-beta's window with zero points up to 8 A apart (see `tests/data/SOURCES.md`); no width of the
+/// line-spread function from 7 to 20 A and no offset per line brings them nearer. WD 1657+343: hotter than
+/// 50 000 K, where LTE fits of published NLTE models come out 7 % hot (test `validate_fits_of_published_models`;
+/// its own model, of the literature's parameters, gives 56 700 K, 7.87).
+const EXCEPTIONS: [&str; 3] = ["GD 50", "HZ 4", "WD 1657+343"];
+
 #[test]
 fn validate_standard_stars() {
     let fitter = Fitter::new(bundled_grid(), FitSettings::default());
@@ -20,13 +23,12 @@ fn validate_standard_stars() {
         "{:>12} {:>16} {:>18} {:>8} {:>7} {:>6}  flags",
         "star", "published", "fitted", "dTeff %", "dlog g", "chi2/n"
     );
-    let mut good = 0;
-    let bpm = ("BPM 16274", read_model("bpm16274", Medium::Vacuum, 8.1), 18_700.0, 7.9);
+    let mut missed = Vec::new();
     let stars = STANDARDS.iter().map(|star| {
         let path = format!("tests/data/calspec/{}.fits.gz", star.file);
         (star.name, read_one(&path, &ReadSettings::default()), star.teff_k, star.log_g)
     });
-    for (name, spectrum, teff_k, log_g) in stars.chain([bpm]) {
+    for (name, spectrum, teff_k, log_g) in stars {
         let fit = fitter.fit(&spectrum).unwrap();
         let chosen = fit.chosen();
         let (dteff, dlog_g) = (chosen.teff_k / teff_k - 1.0, chosen.log_g - log_g);
@@ -40,9 +42,10 @@ fn validate_standard_stars() {
             chosen.reduced_chi2(),
             codes.join(" ")
         );
-        if name != "G 93-48" && dteff.abs() < LARGEST_TEFF && dlog_g.abs() < LARGEST_LOG_G {
-            good += 1;
+        if !(dteff.abs() < LARGEST_TEFF && dlog_g.abs() < LARGEST_LOG_G) {
+            missed.push(name);
         }
     }
-    assert!(good >= LEAST_GOOD, "{good} of 11 stars within 8 % and 0.25 dex, need {LEAST_GOOD}");
+    println!("{} of {} within 8 % and 0.25 dex", STANDARDS.len() - missed.len(), STANDARDS.len());
+    assert_eq!(missed, EXCEPTIONS, "stars off the literature");
 }
