@@ -58,6 +58,22 @@ codes! {
     INTERNAL = "internal.panic", Reject,
         "the program broke one of its own invariants while working on this object",
         "report it with the input file";
+
+    SERVICE_TIME_LIMIT = "service.time-limit", Reject,
+        "the file took longer than workers.time_limit_s, so its thread was given up",
+        "raise workers.time_limit_s and run `emberline refit --failed`, or report it with the input file";
+    SERVICE_INTERRUPTED = "service.interrupted-too-often", Reject,
+        "the daemon died each time while it worked on the file",
+        "look for out-of-memory kills in the system log, then run `emberline refit --failed`";
+    SERVICE_NO_WORKERS = "service.no-workers-left", Reject,
+        "so many threads were given up that none is left",
+        "look at the files with service.time-limit in `emberline status`, then restart the daemon";
+    SERVICE_OUTPUT = "service.cannot-write-output", Reject,
+        "a report could not be written",
+        "make room on the disk, or make the folder output.reports writable, then start the daemon again";
+    SERVICE_LEDGER = "service.cannot-use-ledger", Reject,
+        "the ledger could not be read or written",
+        "make room on the disk, or make the folder of output.ledger writable, then start the daemon again";
 }
 
 /// Finds a code by its identifier.

@@ -5,3 +5,7 @@
 mod architecture;
 // Truth from outside: each number with its source.
 mod reference;
+// The daemon: crashes, full disks, signals, reloads.
+mod service;
+// Stand-ins, sites, waiting.
+mod support;

@@ -1,0 +1,1 @@
+//! How the results of two runs differ.

@@ -1,0 +1,1 @@
+//! `emberline compare`.
