@@ -201,6 +201,16 @@ impl Ledger {
         Ok((queued, given_up))
     }
 
+    /// The highest arrival number given so far; numbers go on from there after a restart.
+    ///
+    /// # Errors
+    /// The database cannot be read.
+    pub fn last_arrival(&self) -> Result<u64> {
+        let last: Option<i64> =
+            self.connection.query_row("SELECT max(arrival) FROM jobs", [], |row| row.get(0))?;
+        Ok(last.unwrap_or(0) as u64)
+    }
+
     /// Whether the file at `path` is recorded with this signature and its job under `fingerprint` exists.
     ///
     /// # Errors
@@ -225,6 +235,7 @@ impl Ledger {
     }
 
     /// Records that `path` holds the content `blake3`, and queues a job for it unless it has one.
+    /// `arrival` is the order in which files were noticed; see [`Ledger::last_arrival`].
     ///
     /// # Errors
     /// The database cannot be written.
@@ -234,6 +245,7 @@ impl Ledger {
         signature: &Signature,
         blake3: &str,
         fingerprint: &str,
+        arrival: u64,
         now_s: f64,
     ) -> Result<Recorded> {
         let path = path.as_os_str().as_bytes();
@@ -269,10 +281,11 @@ impl Ledger {
         let recorded = match state.as_deref() {
             None => {
                 transaction.execute(
-                    "INSERT INTO jobs (blake3, fingerprint, path, state, priority, created_at_s)
+                    "INSERT INTO jobs (blake3, fingerprint, path, state, priority, arrival, created_at_s)
                      VALUES (?1, ?2, ?3, 'queued',
-                             EXISTS (SELECT 1 FROM jobs WHERE blake3 = ?1 AND state IN ('done', 'rejected', 'failed')), ?4)",
-                    params![blake3, fingerprint, path, now_s],
+                             EXISTS (SELECT 1 FROM jobs WHERE blake3 = ?1 AND state IN ('done', 'rejected', 'failed')),
+                             ?4, ?5)",
+                    params![blake3, fingerprint, path, arrival as i64, now_s],
                 )?;
                 Recorded::Queued
             }
@@ -287,9 +300,9 @@ impl Ledger {
             // Content that came back in place of another must win its `current` pointer back.
             Some(state) if state == "gone" || is_replacement => {
                 transaction.execute(
-                    "UPDATE jobs SET state = 'queued', path = ?3, attempts = 0, not_before_s = 0
+                    "UPDATE jobs SET state = 'queued', path = ?3, arrival = ?4, attempts = 0, not_before_s = 0
                      WHERE blake3 = ?1 AND fingerprint = ?2",
-                    params![blake3, fingerprint, path],
+                    params![blake3, fingerprint, path, arrival as i64],
                 )?;
                 Recorded::Queued
             }
@@ -306,17 +319,18 @@ impl Ledger {
     /// The database cannot be written.
     pub fn queue_stale(&mut self, fingerprint: &str, now_s: f64) -> Result<usize> {
         let transaction = self.connection.transaction()?;
-        transaction
-            .execute("DELETE FROM jobs WHERE state = 'queued' AND fingerprint <> ?1", [fingerprint])?;
         let queued = transaction.execute(
-            "INSERT INTO jobs (blake3, fingerprint, path, state, priority, created_at_s)
+            "INSERT INTO jobs (blake3, fingerprint, path, state, priority, arrival, created_at_s)
              SELECT blake3, ?1, min(path), 'queued',
-                    EXISTS (SELECT 1 FROM jobs WHERE blake3 = files.blake3 AND state IN ('done', 'rejected', 'failed')), ?2
+                    EXISTS (SELECT 1 FROM jobs WHERE blake3 = files.blake3 AND state IN ('done', 'rejected', 'failed')),
+                    coalesce((SELECT max(arrival) FROM jobs WHERE blake3 = files.blake3), 0), ?2
              FROM files
              WHERE NOT EXISTS (SELECT 1 FROM jobs WHERE blake3 = files.blake3 AND fingerprint = ?1)
              GROUP BY blake3",
             params![fingerprint, now_s],
         )?;
+        transaction
+            .execute("DELETE FROM jobs WHERE state = 'queued' AND fingerprint <> ?1", [fingerprint])?;
         transaction.commit()?;
         Ok(queued)
     }
@@ -346,7 +360,7 @@ impl Ledger {
             .prepare_cached(
                 "SELECT id, blake3, fingerprint, path, priority, attempts + 1 FROM jobs
                  WHERE fingerprint = ?1 AND state = 'queued' AND (not_before_s <= ?2 OR not_before_s > ?3)
-                 ORDER BY priority, id DESC LIMIT 1",
+                 ORDER BY priority, arrival DESC LIMIT 1",
             )?
             .query_row(params![fingerprint, now_s, now_s + max_delay_s], read_job)
             .optional()?;
@@ -589,7 +603,7 @@ impl Ledger {
     pub fn last_troubles(&self, fingerprint: &str, limit: u32) -> Result<Vec<Trouble>> {
         let mut query = self.connection.prepare_cached(
             "SELECT path, state, last_code, last_detail FROM jobs
-             WHERE fingerprint = ?1 AND last_code IS NOT NULL AND state <> 'done' ORDER BY id DESC LIMIT ?2",
+             WHERE fingerprint = ?1 AND last_code IS NOT NULL AND state <> 'done' ORDER BY arrival DESC LIMIT ?2",
         )?;
         let rows = query.query_map(params![fingerprint, limit], |row| {
             Ok(Trouble {

@@ -15,7 +15,7 @@ use super::ledger::LedgerError;
 const MIGRATIONS: [&str; 1] = [
     // files: what stands where, with the signature that tells whether it changed.
     // replaced: contents that once stood at a path; their reports lose `current` when the new
-    // content is done. jobs.id is the order of arrival, immune to clocks.
+    // content is done. jobs.arrival is the order in which files were noticed, immune to clocks.
     "CREATE TABLE files (
         path BLOB PRIMARY KEY,
         size INTEGER NOT NULL, modified_ns INTEGER NOT NULL, changed_ns INTEGER NOT NULL, inode INTEGER NOT NULL,
@@ -32,14 +32,15 @@ const MIGRATIONS: [&str; 1] = [
         blake3 TEXT NOT NULL, fingerprint TEXT NOT NULL,
         path BLOB NOT NULL,
         state TEXT NOT NULL CHECK (state IN ('queued', 'running', 'done', 'rejected', 'failed', 'gone')),
-        priority INTEGER NOT NULL,
+        priority INTEGER NOT NULL, arrival INTEGER NOT NULL,
         attempts INTEGER NOT NULL DEFAULT 0, interruptions INTEGER NOT NULL DEFAULT 0,
         not_before_s REAL NOT NULL DEFAULT 0,
         created_at_s REAL NOT NULL, started_at_s REAL, finished_at_s REAL,
         last_code TEXT, last_detail TEXT,
         UNIQUE (blake3, fingerprint)
      );
-     CREATE INDEX jobs_queue ON jobs (fingerprint, state, priority, id DESC);
+     CREATE INDEX jobs_queue ON jobs (fingerprint, state, priority, arrival DESC);
+     CREATE INDEX jobs_arrival ON jobs (arrival);
      CREATE TABLE documents (
         blake3 TEXT NOT NULL, fingerprint TEXT NOT NULL, ordinal INTEGER NOT NULL,
         object_name TEXT NOT NULL, verdict TEXT NOT NULL,

@@ -159,7 +159,7 @@ impl Daemon {
             ledger,
             options.clock.clone(),
             sender.clone(),
-        ));
+        )?);
         control::serve(&socket, shared.clone())
             .map_err(system(format!("opening the socket {}", socket.display())))?;
         let mut pool = Pool::new(shared.clone());

@@ -86,7 +86,8 @@ pub struct Inbox {
     news: Receiver<News>,
     has_lost_events: Arc<AtomicBool>,
     wholeness: Wholeness,
-    ready: Vec<PathBuf>,
+    /// Files that are whole, with their numbers in the order of arrival.
+    ready: Vec<(u64, PathBuf)>,
     scans: Vec<Scan>,
     is_full_scan: bool,
     needs_full_scan: bool,
@@ -248,7 +249,7 @@ impl Inbox {
                 News::Announced(path) => {
                     self.wholeness.forget(&path);
                     if self.ready.len() < MAX_READY {
-                        self.ready.push(path);
+                        self.ready.push((self.shared.next_arrival(), path));
                     } else {
                         self.needs_full_scan = true;
                     }
@@ -283,7 +284,7 @@ impl Inbox {
                     Instant::now(),
                     seconds(self.config.still_s),
                 ) {
-                    self.ready.push(path.to_owned());
+                    self.ready.push((self.shared.next_arrival(), path.to_owned()));
                 }
             }
             Look::Folder => {}
@@ -304,7 +305,7 @@ impl Inbox {
         // Now and then the news come first.
         const STEP: usize = 16;
         for _ in 0..STEP {
-            let Some(path) = self.ready.pop() else { break };
+            let Some((arrival, path)) = self.ready.pop() else { break };
             let Some(root) = self.root_of(&path) else { continue };
             let signature = match self.rules.look(&root, &self.real_roots, &path) {
                 Look::File(signature) => signature,
@@ -323,7 +324,7 @@ impl Inbox {
                 continue;
             }
             match hash_file(&path, &signature, || self.shared.beat_inbox()) {
-                Ok(Some(blake3)) => self.shared.record_file(&path, &signature, &blake3)?,
+                Ok(Some(blake3)) => self.shared.record_file(&path, &signature, &blake3, arrival)?,
                 Ok(None) => self.look_at(&root, &path)?,
                 Err(error) if error.kind() == std::io::ErrorKind::NotFound => {}
                 Err(error) => {

@@ -108,6 +108,7 @@ pub struct Shared {
     started: Instant,
     is_stopping: AtomicBool,
     ended_since_start: AtomicU64,
+    last_arrival: AtomicU64,
     inbox_beat_ms: AtomicU64,
     commands: Sender<Command>,
     inbox: Mutex<InboxStatus>,
@@ -123,8 +124,17 @@ pub(super) fn lock<T>(mutex: &Mutex<T>) -> MutexGuard<'_, T> {
 
 impl Shared {
     /// Gathers the parts.
-    pub fn new(settings: Settings, ledger: Ledger, clock: Clock, commands: Sender<Command>) -> Shared {
-        Shared {
+    ///
+    /// # Errors
+    /// The ledger cannot be read.
+    pub fn new(
+        settings: Settings,
+        ledger: Ledger,
+        clock: Clock,
+        commands: Sender<Command>,
+    ) -> Result<Shared, LedgerError> {
+        Ok(Shared {
+            last_arrival: AtomicU64::new(ledger.last_arrival()?),
             settings: RwLock::new(Arc::new(settings)),
             ledger: Mutex::new(ledger),
             work: Condvar::new(),
@@ -137,7 +147,12 @@ impl Shared {
             inbox: Mutex::default(),
             workers: Mutex::default(),
             last_reload: Mutex::default(),
-        }
+        })
+    }
+
+    /// The next number in the order of arrival.
+    pub fn next_arrival(&self) -> u64 {
+        self.last_arrival.fetch_add(1, Ordering::Relaxed) + 1
     }
 
     /// The settings in force.
@@ -185,13 +200,19 @@ impl Shared {
     ///
     /// # Errors
     /// The ledger cannot be used.
-    pub fn record_file(&self, path: &Path, signature: &Signature, blake3: &str) -> Result<(), Fault> {
+    pub fn record_file(
+        &self,
+        path: &Path,
+        signature: &Signature,
+        blake3: &str,
+        arrival: u64,
+    ) -> Result<(), Fault> {
         let now_s = self.now_s();
         // The fingerprint is read under the ledger's lock, where a reload also queues what is stale:
         // a file is either recorded before and found stale, or recorded under the new one.
         let recorded = self.with_ledger(|ledger| {
             let fingerprint = self.settings().fingerprint.clone();
-            ledger.record_file(path, signature, blake3, &fingerprint, now_s)
+            ledger.record_file(path, signature, blake3, &fingerprint, arrival, now_s)
         })?;
         if recorded == Recorded::Queued {
             tracing::debug!(path = %path.display(), blake3, "queued");

@@ -20,7 +20,8 @@ fn signature(inode: u64) -> Signature {
 }
 
 fn record(ledger: &mut Ledger, path: &str, blake3: &str, fingerprint: &str) -> Recorded {
-    ledger.record_file(Path::new(path), &signature(1), blake3, fingerprint, 100.0).unwrap()
+    let arrival = ledger.last_arrival().unwrap() + 1;
+    ledger.record_file(Path::new(path), &signature(1), blake3, fingerprint, arrival, 100.0).unwrap()
 }
 
 fn document(pointer: &str) -> DocumentRecord {

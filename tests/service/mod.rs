@@ -1,7 +1,9 @@
 //! The daemon as a process: what arrives, what goes wrong, what is left behind.
 
 mod config;
+mod flood;
 mod inbox;
+mod kill;
 mod ledger;
 
 use crate::support::site;
