@@ -502,23 +502,25 @@ impl Ledger {
         Ok(())
     }
 
-    /// The content no longer stands at the job's path. If it stands elsewhere the job follows it, else
-    /// the job is over until the content comes back.
+    /// The file at the job's path is not what was recorded. If a file is recorded with the job's content
+    /// the job goes there (it may have been recorded anew, or moved), else it is over until the
+    /// content comes back.
     ///
     /// # Errors
     /// The database cannot be written.
     pub fn lose(&mut self, job: &Job, now_s: f64) -> Result<()> {
-        let elsewhere: Option<Vec<u8>> = self
+        /// The records may be behind the disk, so this must end; a scan finds what really stands there.
+        const MOST_ATTEMPTS: u32 = 4;
+        let recorded_at: Option<Vec<u8>> = self
             .connection
             .query_row(
-                "SELECT path FROM files WHERE blake3 = ?1 AND path <> ?2 ORDER BY seen_at_s DESC LIMIT 1",
+                "SELECT path FROM files WHERE blake3 = ?1 ORDER BY path = ?2, seen_at_s DESC LIMIT 1",
                 params![job.blake3, job.path.as_os_str().as_bytes()],
                 |row| row.get(0),
             )
             .optional()?;
-        // Each move to another path is an attempt, so two paths that both are stale cannot alternate for ever.
-        match elsewhere {
-            Some(path) if job.attempts < 4 => {
+        match recorded_at {
+            Some(path) if job.attempts < MOST_ATTEMPTS => {
                 self.connection.execute(
                     "UPDATE jobs SET state = 'queued', path = ?2 WHERE id = ?1",
                     params![job.id, path],

@@ -194,7 +194,10 @@ impl Daemon {
                     stop_by.get_or_insert_with(|| self.begin_stop());
                 }
                 Ok(Command::Reload { failed, reply }) => {
-                    let outcome = self.reload(failed);
+                    let outcome = match stop_by {
+                        None => self.reload(failed),
+                        Some(_) => Err("the daemon is stopping".to_owned()),
+                    };
                     if let Some(reply) = reply {
                         // Whoever asked may have gone.
                         let _ = reply.send(outcome);

@@ -174,6 +174,8 @@ impl Inbox {
         self.has_lost_events = has_lost_events;
         self.wholeness = Wholeness::default();
         self.ready.clear();
+        self.scans.clear();
+        self.is_full_scan = false;
         self.folders = self
             .config
             .folders
@@ -220,7 +222,7 @@ impl Inbox {
     /// Takes in what the kernel told; waits a little when there is nothing else to do. Says whether
     /// there was nothing.
     fn hear(&mut self) -> Result<bool, Fault> {
-        let is_busy = !self.ready.is_empty() || !self.scans.is_empty() || self.needs_full_scan;
+        let is_busy = !self.ready.is_empty() || !self.scans.is_empty() || self.wants_full_scan();
         let now = Instant::now();
         let mut wait = self.next_folder_check.min(self.next_full_scan).saturating_duration_since(now);
         if !self.wholeness.is_empty() {
@@ -377,14 +379,17 @@ impl Inbox {
         Ok(())
     }
 
+    /// While as many files as may be are watched for stillness a scan could add none.
+    fn wants_full_scan(&self) -> bool {
+        self.needs_full_scan && !self.wholeness.is_full()
+    }
+
     fn begin_scans(&mut self) {
         let now = Instant::now();
         if self.is_full_scan || !self.scans.is_empty() {
             return;
         }
-        // While as many files as may be are watched for stillness a scan could add none.
-        let is_wanted = self.needs_full_scan && !self.wholeness.is_full();
-        if is_wanted || now >= self.next_full_scan {
+        if self.wants_full_scan() || now >= self.next_full_scan {
             self.needs_full_scan = false;
             self.is_full_scan = true;
             self.counts_of_scan = ExclusionCounts::default();

@@ -78,15 +78,18 @@ impl Pool {
     /// # Errors
     /// The system gives no thread.
     pub fn resize(&mut self, count: usize) -> std::io::Result<()> {
-        while self.slots.len() < count {
+        while self.kept().count() < count {
             self.add()?;
         }
-        // Given up are those that ended or were abandoned first; they left the list already.
-        for slot in self.slots.drain(count..) {
+        for slot in self.kept().skip(count) {
             slot.is_surplus.store(true, Ordering::Release);
         }
         self.shared.wake_workers();
         Ok(())
+    }
+
+    fn kept(&self) -> impl Iterator<Item = &Arc<Slot>> {
+        self.slots.iter().filter(|slot| !slot.is_surplus.load(Ordering::Acquire))
     }
 
     fn add(&mut self) -> std::io::Result<()> {
@@ -123,7 +126,7 @@ impl Pool {
                     if let State::Analysing { job, settings, .. } =
                         std::mem::replace(&mut *state, State::Abandoned)
                     {
-                        overdue.push((job, settings));
+                        overdue.push((job, settings, slot.is_surplus.load(Ordering::Acquire)));
                     }
                     false
                 }
@@ -131,10 +134,11 @@ impl Pool {
                     health = PoolHealth::CannotWrite;
                     true
                 }
+                State::Ended => !slot.is_surplus.load(Ordering::Acquire),
                 _ => true,
             }
         });
-        for (job, settings) in overdue {
+        for (job, settings, is_surplus) in overdue {
             self.abandoned += 1;
             let fault = Fault::reject(
                 &codes::SERVICE_TIME_LIMIT,
@@ -142,7 +146,8 @@ impl Pool {
             );
             tracing::error!(path = %job.path.display(), abandoned = self.abandoned, "thread given up: {fault}");
             conclude_fault(&self.shared, &settings, &job, &fault)?;
-            if self.abandoned <= limits.max_abandoned
+            if !is_surplus
+                && self.abandoned <= limits.max_abandoned
                 && let Err(error) = self.add()
             {
                 tracing::error!(%error, "no thread for the one that was given up");
@@ -159,7 +164,7 @@ impl Pool {
         let is_busy =
             |slot: &&Arc<Slot>| matches!(*lock(&slot.state), State::Analysing { .. } | State::Writing { .. });
         WorkerCounts {
-            threads: self.slots.len(),
+            threads: self.kept().count(),
             busy: self.slots.iter().filter(is_busy).count(),
             abandoned: self.abandoned,
         }

@@ -1,10 +1,13 @@
 //! The daemon as a process: what arrives, what goes wrong, what is left behind.
 
+mod comparison;
 mod config;
+mod failures;
 mod flood;
 mod inbox;
 mod kill;
 mod ledger;
+mod running;
 
 use crate::support::site;
 

@@ -118,7 +118,8 @@ impl Site {
         let mut command = self.command();
         command.stderr(File::options().create(true).append(true).open(&log).unwrap());
         adapt(&mut command);
-        DaemonProcess { child: command.spawn().unwrap(), socket: self.config().socket_path(), log }
+        let socket = emberline::service::config::beside(&self.ledger, ".socket");
+        DaemonProcess { child: command.spawn().unwrap(), socket, log }
     }
 
     pub fn spawn(&self) -> DaemonProcess {
