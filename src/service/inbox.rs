@@ -439,7 +439,7 @@ impl Inbox {
                     let is_missing =
                         error.io_error().is_some_and(|e| e.kind() == std::io::ErrorKind::NotFound);
                     if let (Some(path), false) = (error.path(), is_missing) {
-                        self.leave_alone(&path.to_owned(), Reason::Unreadable);
+                        self.leave_alone(path, Reason::Unreadable);
                     }
                 }
             }

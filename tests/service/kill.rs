@@ -16,7 +16,7 @@ const KILLS: usize = 200;
 const FILES: usize = 2_000;
 
 /// Longest life of a daemon: start-up takes a part of it, so both are hit.
-const MAX_LIFE_MS: u64 = 200;
+const MAX_LIFE_MS: u64 = 150;
 
 /// Fewest jobs that must have been in work at a kill for the test to mean anything.
 const LEAST_INTERRUPTED: i64 = 20;
