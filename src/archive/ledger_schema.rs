@@ -47,8 +47,7 @@ const MIGRATIONS: [&str; 1] = [
         report TEXT NOT NULL, pointer TEXT NOT NULL,
         catalogue_row TEXT NOT NULL,
         PRIMARY KEY (blake3, fingerprint, ordinal)
-     ) WITHOUT ROWID;
-     CREATE TABLE settings (name TEXT PRIMARY KEY, value TEXT NOT NULL) WITHOUT ROWID;",
+     ) WITHOUT ROWID;",
 ];
 
 /// Takes the lock beside the database; it is free again when the file is dropped or the process dies.

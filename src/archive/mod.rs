@@ -6,5 +6,8 @@ pub mod ledger;
 /// Opening and migrating the ledger's database.
 mod ledger_schema;
 
+/// What the ledger tells.
+mod ledger_views;
+
 /// How the results of two runs differ.
 pub mod comparison;

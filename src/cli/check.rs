@@ -1,7 +1,7 @@
 //! `emberline check`: validates a configuration and shows what is in effect.
 
 use std::io::{self, Write};
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 
 use clap::Args;
@@ -48,10 +48,19 @@ pub fn run(args: &CheckArgs) -> Result<ExitCode, CheckError> {
             }
         }
     }
-    let shown = toml::to_string(&config).map_err(io::Error::other)?;
-    let mut out = io::stdout().lock();
-    writeln!(out, "# in effect after {} and the environment", path.display())?;
-    writeln!(out, "# fingerprint of what can change an answer: {}", config.answer_fingerprint())?;
-    write!(out, "{shown}")?;
+    io::stdout().lock().write_all(render(&path, &config)?.as_bytes())?;
     Ok(ExitCode::SUCCESS)
+}
+
+/// The effective configuration as TOML, which parses to the same configuration.
+///
+/// # Errors
+/// A path in it is not UTF-8.
+pub fn render(path: &Path, config: &Config) -> io::Result<String> {
+    let shown = toml::to_string(config).map_err(io::Error::other)?;
+    Ok(format!(
+        "# in effect after {} and the environment\n# fingerprint of what can change an answer: {}\n{shown}",
+        path.display(),
+        config.answer_fingerprint()
+    ))
 }

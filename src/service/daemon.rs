@@ -19,6 +19,7 @@ use crate::codes;
 use crate::service::analyst::{AnalystFactory, Fault};
 use crate::service::config::{Config, ConfigError, seconds};
 use crate::service::control;
+use crate::service::file_system::is_on_network;
 use crate::service::inbox::Inbox;
 use crate::service::logging::LogHandle;
 use crate::service::output::{self, ReportPlace};
@@ -138,6 +139,12 @@ impl Daemon {
         output::check_writable(&reports).map_err(system(format!("writing to {}", reports.display())))?;
         if let Some(folder) = config.output.ledger.parent() {
             std::fs::create_dir_all(folder).map_err(system(format!("making {}", folder.display())))?;
+            if is_on_network(folder) {
+                tracing::warn!(
+                    folder = %folder.display(),
+                    "the ledger is on a network file system, where SQLite may lose it (put output.ledger on a local one)"
+                );
+            }
         }
         let mut ledger = Ledger::open(&config.output.ledger)?;
         let analyst = (options.analysts)(&config)?;

@@ -20,6 +20,7 @@ use walkdir::{DirEntry, WalkDir};
 use crate::service::analyst::Fault;
 use crate::service::config::{InboxConfig, Polling, seconds};
 use crate::service::exclusion::{ExclusionCounts, Look, Reason, Rules, hash_file};
+use crate::service::file_system::is_on_network;
 use crate::service::shared::{FolderStatus, Shared};
 use crate::service::wholeness::Wholeness;
 
@@ -34,23 +35,6 @@ const SCAN_STEP: usize = 64;
 
 /// Time between two checks that the watched folders are still the same folders.
 const FOLDER_CHECK: Duration = Duration::from_millis(500);
-
-/// File systems whose changes the kernel does not tell (`f_type` of statfs(2), Linux's magic.h):
-/// NFS, SMB, CIFS, SMB2, FUSE, 9P, AFS, Ceph, Lustre, GPFS, OCFS2, GFS2.
-const NETWORK_FILE_SYSTEMS: [u32; 12] = [
-    0x6969,
-    0x517b,
-    0xff53_4d42,
-    0xfe53_4d42,
-    0x6573_5546,
-    0x0102_1997,
-    0x5346_414f,
-    0x00c3_6400,
-    0x0bd0_0bd0,
-    0x4750_4653,
-    0x7461_636f,
-    0x0116_1970,
-];
 
 /// What an event says of a path.
 #[derive(Debug)]
@@ -509,8 +493,4 @@ fn forward(event: notify::Result<Event>, sender: &SyncSender<News>, has_lost_eve
 fn identity(path: &Path) -> Option<(u64, u64)> {
     let metadata = fs::metadata(path).ok().filter(fs::Metadata::is_dir)?;
     Some((metadata.dev(), metadata.ino()))
-}
-
-fn is_on_network(path: &Path) -> bool {
-    rustix::fs::statfs(path).is_ok_and(|found| NETWORK_FILE_SYSTEMS.contains(&(found.f_type as u32)))
 }

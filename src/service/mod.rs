@@ -14,6 +14,9 @@ pub mod analyst;
 /// Where the log goes.
 pub mod logging;
 
+/// Local or network.
+pub mod file_system;
+
 /// Which files are looked at.
 pub mod exclusion;
 

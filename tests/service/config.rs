@@ -1,7 +1,9 @@
 //! The configuration: the sample, unknown keys, overrides, instruments.
 
 use std::path::Path;
+use std::process::ExitCode;
 
+use emberline::cli::check::{self, CheckArgs};
 use emberline::service::config::{Config, ConfigError, Medium, known_keys};
 
 const SAMPLE: &str = include_str!("../../config/emberline.toml");
@@ -91,6 +93,21 @@ fn the_environment_overrides_paths_only() {
     assert_eq!(config.inbox.folders, [Path::new("/a"), Path::new("/b c")]);
     assert_eq!(config.output.ledger, Path::new("/l.sqlite"));
     assert_eq!(config.socket_path(), Path::new("/l.sqlite.socket"));
+}
+
+#[test]
+fn check_shows_a_configuration_that_parses_to_itself() {
+    for text in [SAMPLE.to_owned(), sample_with_instrument()] {
+        let config = parse(&text).unwrap();
+        let shown = check::render(Path::new("test.toml"), &config).unwrap();
+        assert_eq!(parse(&shown).unwrap(), config);
+    }
+    let site = crate::support::site::Site::new();
+    let args = CheckArgs { config: Some(site.config_path.clone()), for_daemon: true };
+    assert_eq!(check::run(&args).unwrap(), ExitCode::SUCCESS);
+    std::fs::remove_dir(&site.inbox).unwrap();
+    let refusal = check::run(&args).unwrap_err().to_string();
+    assert!(refusal.contains("no folder there") && refusal.contains("`inbox.folders`"), "{refusal}");
 }
 
 #[test]

@@ -93,6 +93,27 @@ fn a_file_that_is_being_written_is_left_alone_until_it_is_closed() {
 }
 
 #[test]
+fn a_file_whose_event_the_kernel_lost_is_found_by_a_full_scan() {
+    /// The kernel's queue holds 16 384 events (fs.inotify.max_queued_events) by default.
+    const RENAMES: usize = 20_000;
+    let site = Site::new();
+    site.configure("inbox.rescan_interval_s = 36000.0");
+    let daemon = site.start();
+    daemon.wait_until_idle();
+    daemon.signal(rustix::process::Signal::STOP);
+    let (here, there) = (site.inbox.join("a.txt"), site.inbox.join("b.txt"));
+    fs::write(&here, "").unwrap();
+    for _ in 0..RENAMES / 2 {
+        fs::rename(&here, &there).unwrap();
+        fs::rename(&there, &here).unwrap();
+    }
+    site.drop_file("late.fits", "object late");
+    daemon.signal(rustix::process::Signal::CONT);
+    site.wait_for_report("late");
+    assert!(daemon.status().inbox.lost_events >= 1);
+}
+
+#[test]
 fn polling_finds_the_same_files() {
     let site = Site::new();
     site.configure("inbox.polling = \"always\"\ninbox.poll_interval_s = 0.05");
