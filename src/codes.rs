@@ -241,6 +241,27 @@ codes! {
     COVARIANCE_UNUSABLE = "star.covariance-unusable", Review,
         "the covariance of temperature and gravity is not one, so the values have no errors",
         "look at the fit";
+    SERVICE_TABLES = "service.cannot-read-tables", Reject,
+        "the model spectra or the evolutionary tracks could not be read",
+        "check them with `emberline grid check` and `emberline tracks check`, then start the daemon again";
+    SERVICE_INSTRUMENT = "service.instrument-not-supported", Reject,
+        "an instrument section asks for something that the readers cannot do",
+        "change the section; `emberline check` shows it";
+    SERVICE_TIME_LIMIT = "service.time-limit", Reject,
+        "the file took longer than workers.time_limit_s, so its thread was given up",
+        "raise workers.time_limit_s and run `emberline refit --failed`, or report it with the input file";
+    SERVICE_INTERRUPTED = "service.interrupted-too-often", Reject,
+        "the daemon died each time while it worked on the file",
+        "look for out-of-memory kills in the system log, then run `emberline refit --failed`";
+    SERVICE_NO_WORKERS = "service.no-workers-left", Reject,
+        "so many threads were given up that none is left",
+        "look at the files with service.time-limit in `emberline status`, then restart the daemon";
+    SERVICE_OUTPUT = "service.cannot-write-output", Reject,
+        "a report could not be written",
+        "make room on the disk, or make the folder output.reports writable, then start the daemon again";
+    SERVICE_LEDGER = "service.cannot-use-ledger", Reject,
+        "the ledger could not be read or written",
+        "make room on the disk, or make the folder of output.ledger writable, then start the daemon again";
 }
 
 /// Finds a code by its identifier.

@@ -11,6 +11,8 @@ mod science;
 mod cli;
 // Reading: values, decisions, refusals, mutated files.
 mod spectrum;
+// The daemon: crashes, full disks, signals, reloads.
+mod service;
 // The report document.
 mod report;
 // FITS byte writer, folders.

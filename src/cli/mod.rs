@@ -3,14 +3,20 @@
 //! Results go to stdout, everything else to stderr. Exit codes: 0 all done, 2 wrong use or
 //! configuration, 3 some input failed (its report says why).
 
+mod analyst;
+pub mod check;
 mod codes;
+pub mod compare;
 pub mod fit;
 mod grid;
+pub mod refit;
 mod rehearse;
 mod schema;
+pub mod status;
 mod tables;
 pub mod tracks;
 pub mod tracks_figure;
+pub mod watch;
 
 use std::error::Error;
 use std::io::{self, IsTerminal, Write};
@@ -45,6 +51,16 @@ enum Command {
     Grid(grid::GridArguments),
     /// Build, verify, describe, read or draw the evolutionary tracks.
     Tracks(tracks::TracksArgs),
+    /// Watch folders and fit every spectrum that arrives.
+    Watch(watch::WatchArgs),
+    /// Have a running daemon take over its configuration and fit again what that makes stale.
+    Refit(refit::RefitArgs),
+    /// Ask a running daemon how it is.
+    Status(status::StatusArgs),
+    /// Check a configuration and show what is in effect.
+    Check(check::CheckArgs),
+    /// Compare the reports of two runs.
+    Compare(compare::CompareArgs),
     /// List the stable codes of faults and flags with their meaning and remedy.
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
@@ -60,12 +76,20 @@ pub fn run() -> ExitCode {
         Ok(arguments) => arguments,
         Err(refusal) => return print_refusal(&refusal),
     };
-    start_log();
+    // The daemon's log follows its configuration.
+    if !matches!(arguments.command, Command::Watch(_) | Command::Refit(_)) {
+        start_log();
+    }
     let outcome = match arguments.command {
         Command::Fit(arguments) => fit::run(&arguments),
         Command::Rehearse(arguments) => rehearse::run(&arguments),
         Command::Grid(arguments) => grid::run(&arguments),
         Command::Tracks(arguments) => tracks::run(&arguments).map_err(Into::into),
+        Command::Watch(arguments) => watch::run(&arguments, analyst::factory()).map_err(Into::into),
+        Command::Refit(arguments) => refit::run(&arguments, analyst::factory()).map_err(Into::into),
+        Command::Status(arguments) => status::run(&arguments).map_err(Into::into),
+        Command::Check(arguments) => check::run(&arguments).map_err(Into::into),
+        Command::Compare(arguments) => compare::run(&arguments).map_err(Into::into),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
     };

@@ -1,0 +1,571 @@
+//! The configuration: one TOML file, defaults for every key, unknown keys refused.
+//!
+//! `config/emberline.toml` holds every key with its default (test
+//! `the_sample_equals_the_defaults`). The known keys are those of the structs below, read through
+//! their JSON schema, so a key is defined once. Paths may be overridden from the environment.
+//! [`Config::answer_fingerprint`] covers only what can change an answer.
+
+use std::collections::BTreeMap;
+use std::path::{Path, PathBuf};
+use std::time::Duration;
+
+use schemars::JsonSchema;
+use serde::{Deserialize, Serialize};
+
+/// Where the daemon looks when `--config` is not given.
+pub const PLACES: [&str; 2] = ["config/emberline.toml", "/etc/emberline/emberline.toml"];
+
+/// The configuration could not be used.
+#[derive(Debug, thiserror::Error)]
+pub enum ConfigError {
+    /// No file was named and none stands at the usual places.
+    #[error("cannot find a configuration: looked at {} (name one with --config)", PLACES.join(", "))]
+    NotFound,
+    /// The file could not be read.
+    #[error("cannot read the configuration {}", path.display())]
+    Unreadable {
+        /// The file.
+        path: PathBuf,
+        /// Why.
+        source: std::io::Error,
+    },
+    /// The text is not TOML, or a value has the wrong type.
+    #[error("cannot use the configuration {}", path.display())]
+    Syntax {
+        /// The file.
+        path: PathBuf,
+        /// Where and why.
+        source: toml::de::Error,
+    },
+    /// A key that means nothing.
+    #[error("cannot use the configuration: unknown key `{key}`{}", suggestion(nearest))]
+    UnknownKey {
+        /// Full name of the key.
+        key: String,
+        /// The known key that is spelled most alike.
+        nearest: Option<String>,
+    },
+    /// A value outside of what makes sense.
+    #[error("cannot use the configuration: `{key}` is {found}, need {need}")]
+    OutOfRange {
+        /// Full name of the key.
+        key: &'static str,
+        /// The value.
+        found: String,
+        /// What would do.
+        need: &'static str,
+    },
+}
+
+fn suggestion(nearest: &Option<String>) -> String {
+    nearest.as_ref().map(|name| format!(" (did you mean `{name}`?)")).unwrap_or_default()
+}
+
+/// Everything that can be configured. Field documentation: `config/emberline.toml`.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct Config {
+    /// What is watched.
+    pub inbox: InboxConfig,
+    /// Where results go.
+    pub output: OutputConfig,
+    /// The fitting threads.
+    pub workers: WorkersConfig,
+    /// What happens to faults that may pass.
+    pub retry: RetryConfig,
+    /// The running daemon.
+    pub service: ServiceConfig,
+    /// What is told.
+    pub log: LogConfig,
+    /// What is known of instruments, in order of precedence.
+    pub instrument: Vec<InstrumentConfig>,
+}
+
+/// What is watched, and when a file counts as whole.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct InboxConfig {
+    /// Folders to watch.
+    pub folders: Vec<PathBuf>,
+    /// Whether folders inside them are watched too.
+    pub recursive: bool,
+    /// Patterns, relative to the folder, one of which must match.
+    pub include: Vec<String>,
+    /// Patterns of what is left alone.
+    pub exclude: Vec<String>,
+    /// Kernel events or polling.
+    pub polling: Polling,
+    /// Seconds between looks at a polled folder.
+    pub poll_interval_s: f64,
+    /// Seconds between full scans of folders with events.
+    pub rescan_interval_s: f64,
+    /// Seconds of stillness that make an unannounced file whole.
+    pub still_s: f64,
+    /// Largest file, in 1e6 bytes.
+    pub max_file_mb: f64,
+}
+
+impl Default for InboxConfig {
+    fn default() -> Self {
+        InboxConfig {
+            folders: Vec::new(),
+            recursive: true,
+            include: vec!["**".to_owned()],
+            exclude: Vec::new(),
+            polling: Polling::Auto,
+            poll_interval_s: 10.0,
+            rescan_interval_s: 300.0,
+            still_s: 5.0,
+            max_file_mb: 1000.0,
+        }
+    }
+}
+
+/// Kernel events or polling.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "lowercase")]
+pub enum Polling {
+    /// By the type of the file system.
+    Auto,
+    /// Everywhere.
+    Always,
+    /// Nowhere.
+    Never,
+}
+
+/// Where results go.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct OutputConfig {
+    /// Folder of the reports.
+    pub reports: PathBuf,
+    /// The ledger file.
+    pub ledger: PathBuf,
+}
+
+/// The fitting threads.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct WorkersConfig {
+    /// Number of threads; 0 means one per core.
+    pub threads: usize,
+    /// Seconds that one file may take.
+    pub time_limit_s: f64,
+    /// Given-up threads that are replaced.
+    pub max_abandoned: usize,
+}
+
+impl Default for WorkersConfig {
+    fn default() -> Self {
+        WorkersConfig { threads: 0, time_limit_s: 120.0, max_abandoned: 8 }
+    }
+}
+
+impl WorkersConfig {
+    /// The number of threads that `threads` means on this machine.
+    pub fn thread_count(&self) -> usize {
+        match self.threads {
+            0 => std::thread::available_parallelism().map_or(1, usize::from),
+            count => count,
+        }
+    }
+}
+
+/// What happens to faults that may pass.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct RetryConfig {
+    /// Attempts in all.
+    pub attempts: u32,
+    /// Seconds before the second attempt.
+    pub first_delay_s: f64,
+    /// Longest wait, in seconds.
+    pub max_delay_s: f64,
+    /// Deaths of the daemon that one file may be present at.
+    pub interruptions: u32,
+}
+
+impl Default for RetryConfig {
+    fn default() -> Self {
+        RetryConfig { attempts: 5, first_delay_s: 10.0, max_delay_s: 3600.0, interruptions: 20 }
+    }
+}
+
+impl RetryConfig {
+    /// Seconds to wait after so many failed attempts: doubling, up to the longest.
+    pub fn delay_s(&self, failed_attempts: u32) -> f64 {
+        let doublings = failed_attempts.saturating_sub(1).min(60);
+        (self.first_delay_s * 2f64.powi(doublings as i32)).min(self.max_delay_s)
+    }
+}
+
+/// The running daemon.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct ServiceConfig {
+    /// Unix socket; empty means beside the ledger.
+    pub socket: PathBuf,
+    /// Seconds that running fits get at the end.
+    pub drain_deadline_s: f64,
+}
+
+impl Default for ServiceConfig {
+    fn default() -> Self {
+        ServiceConfig { socket: PathBuf::new(), drain_deadline_s: 60.0 }
+    }
+}
+
+/// What is told.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct LogConfig {
+    /// Level or filter.
+    pub level: String,
+    /// Journal or stderr.
+    pub destination: LogDestination,
+    /// Text or JSON.
+    pub format: LogFormat,
+}
+
+impl Default for LogConfig {
+    fn default() -> Self {
+        LogConfig { level: "info".to_owned(), destination: LogDestination::Auto, format: LogFormat::Text }
+    }
+}
+
+/// Where the log goes.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "lowercase")]
+pub enum LogDestination {
+    /// The journal when systemd listens there, else stderr.
+    Auto,
+    /// The systemd journal.
+    Journal,
+    /// Standard error.
+    Stderr,
+}
+
+/// How the log is written to stderr.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "lowercase")]
+pub enum LogFormat {
+    /// Lines for people.
+    Text,
+    /// One JSON object per line.
+    Json,
+}
+
+/// What is known of an instrument and stands above what its files say.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct InstrumentConfig {
+    /// Name, for reports.
+    pub name: String,
+    /// Header keywords and the pattern that each value must match.
+    #[serde(rename = "match")]
+    pub keywords: BTreeMap<String, String>,
+    /// lambda / FWHM.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub resolving_power: Option<f64>,
+    /// Constant FWHM in angstrom.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub resolution_fwhm_aa: Option<f64>,
+    /// Medium of the wavelengths.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub medium: Option<Medium>,
+    /// Rest frame of the wavelengths.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub velocity_frame: Option<VelocityFrame>,
+    /// Ranges never used, vacuum angstrom, low before high.
+    pub masks_vac_aa: Vec<[f64; 2]>,
+    /// Factor on the errors of the file.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub error_scale: Option<f64>,
+}
+
+impl InstrumentConfig {
+    /// Whether a header, given as a look-up of keyword values, belongs to this instrument.
+    pub fn is_match(&self, value_of: impl Fn(&str) -> Option<String>) -> bool {
+        self.keywords.iter().all(|(keyword, pattern)| {
+            value_of(keyword).is_some_and(|value| {
+                header_pattern(pattern).is_ok_and(|pattern| pattern.is_match(value.trim()))
+            })
+        })
+    }
+}
+
+fn header_pattern(pattern: &str) -> Result<globset::GlobMatcher, globset::Error> {
+    Ok(globset::GlobBuilder::new(pattern.trim()).case_insensitive(true).build()?.compile_matcher())
+}
+
+/// What the light travelled through when its wavelength was measured.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "lowercase")]
+pub enum Medium {
+    /// Standard air.
+    Air,
+    /// Vacuum.
+    Vacuum,
+}
+
+/// Rest frame of the wavelengths.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
+#[serde(rename_all = "lowercase")]
+pub enum VelocityFrame {
+    /// As observed from the ground.
+    Topocentric,
+    /// Of the Sun.
+    Heliocentric,
+    /// Of the solar system's barycentre.
+    Barycentric,
+}
+
+impl Config {
+    /// Reads the file named on the command line, or the first at the usual places, and applies the
+    /// overrides of the environment.
+    ///
+    /// # Errors
+    /// No file, an unreadable file, or one that [`Config::parse`] refuses.
+    pub fn read(named: Option<&Path>) -> Result<(PathBuf, Config), ConfigError> {
+        let path = match named {
+            Some(path) => path.to_owned(),
+            None => PLACES.iter().map(PathBuf::from).find(|p| p.exists()).ok_or(ConfigError::NotFound)?,
+        };
+        let text = std::fs::read_to_string(&path)
+            .map_err(|source| ConfigError::Unreadable { path: path.clone(), source })?;
+        let config = Config::parse(&text, &path, |name| std::env::var(name).ok())?;
+        Ok((path, config))
+    }
+
+    /// Parses and checks a configuration; `environment` looks up the overrides, `path` is for messages.
+    ///
+    /// # Errors
+    /// Not TOML, a wrong type, an unknown key, or a value out of range.
+    pub fn parse(
+        text: &str,
+        path: &Path,
+        environment: impl Fn(&str) -> Option<String>,
+    ) -> Result<Config, ConfigError> {
+        let syntax = |source| ConfigError::Syntax { path: path.to_owned(), source };
+        let table: toml::Table = toml::from_str(text).map_err(syntax)?;
+        check_keys(&table)?;
+        // From the text again, not from the table, because only then errors carry line and column.
+        let mut config: Config = toml::from_str(text).map_err(syntax)?;
+        config.override_paths(environment);
+        config.check()?;
+        Ok(config)
+    }
+
+    fn override_paths(&mut self, environment: impl Fn(&str) -> Option<String>) {
+        if let Some(folders) = environment("EMBERLINE_INBOX_FOLDERS") {
+            self.inbox.folders = std::env::split_paths(&folders).collect();
+        }
+        for (name, path) in [
+            ("EMBERLINE_OUTPUT_REPORTS", &mut self.output.reports),
+            ("EMBERLINE_OUTPUT_LEDGER", &mut self.output.ledger),
+            ("EMBERLINE_SERVICE_SOCKET", &mut self.service.socket),
+        ] {
+            if let Some(value) = environment(name) {
+                *path = PathBuf::from(value);
+            }
+        }
+    }
+
+    fn check(&self) -> Result<(), ConfigError> {
+        let in_range = |key, value: f64, low: f64, high: f64, need| {
+            // Written so that NaN is refused.
+            if value >= low && value <= high {
+                Ok(())
+            } else {
+                Err(ConfigError::OutOfRange { key, found: value.to_string(), need })
+            }
+        };
+        const YEAR_S: f64 = 3.2e7;
+        let inbox = &self.inbox;
+        in_range("inbox.poll_interval_s", inbox.poll_interval_s, 0.05, YEAR_S, "0.05 s to a year")?;
+        in_range("inbox.rescan_interval_s", inbox.rescan_interval_s, 0.05, YEAR_S, "0.05 s to a year")?;
+        in_range("inbox.still_s", inbox.still_s, 0.0, 86400.0, "0 s to a day")?;
+        in_range("inbox.max_file_mb", inbox.max_file_mb, 1e-6, 1e6, "up to 1e6 MB, above 0")?;
+        in_range("workers.threads", self.workers.threads as f64, 0.0, 1024.0, "0 to 1024")?;
+        in_range("workers.time_limit_s", self.workers.time_limit_s, 0.01, 86400.0, "0.01 s to a day")?;
+        in_range("retry.attempts", self.retry.attempts.into(), 1.0, 1000.0, "1 to 1000")?;
+        in_range("retry.first_delay_s", self.retry.first_delay_s, 0.0, YEAR_S, "0 s to a year")?;
+        in_range("retry.max_delay_s", self.retry.max_delay_s, 0.0, YEAR_S, "0 s to a year")?;
+        in_range("retry.interruptions", self.retry.interruptions.into(), 1.0, 1e6, "1 to 1e6")?;
+        in_range("service.drain_deadline_s", self.service.drain_deadline_s, 0.0, 86400.0, "0 s to a day")?;
+        for (key, patterns) in
+            [("inbox.include", &self.inbox.include), ("inbox.exclude", &self.inbox.exclude)]
+        {
+            for pattern in patterns {
+                if globset::Glob::new(pattern).is_err() {
+                    let need = "a pattern such as \"night-*/**\"";
+                    return Err(ConfigError::OutOfRange { key, found: format!("{pattern:?}"), need });
+                }
+            }
+        }
+        if tracing_subscriber::EnvFilter::try_new(&self.log.level).is_err() {
+            let need = "a level such as \"info\" or a filter such as \"info,emberline::fit=debug\"";
+            return Err(ConfigError::OutOfRange {
+                key: "log.level",
+                found: format!("{:?}", self.log.level),
+                need,
+            });
+        }
+        self.instrument.iter().try_for_each(InstrumentConfig::check)
+    }
+
+    /// Refuses a configuration that a daemon cannot run with.
+    ///
+    /// # Errors
+    /// A path that a daemon needs is missing.
+    pub fn check_for_daemon(&self) -> Result<(), ConfigError> {
+        let missing = |key, need| Err(ConfigError::OutOfRange { key, found: "empty".to_owned(), need });
+        if self.inbox.folders.is_empty() {
+            return missing("inbox.folders", "at least one folder to watch");
+        }
+        if self.output.reports.as_os_str().is_empty() {
+            return missing("output.reports", "a folder for the reports");
+        }
+        if self.output.ledger.as_os_str().is_empty() {
+            return missing("output.ledger", "a file for the ledger");
+        }
+        Ok(())
+    }
+
+    /// Names everything in this configuration that can change an answer, as 64 hex digits.
+    pub fn answer_fingerprint(&self) -> String {
+        // Serialising structs of strings and finite numbers cannot fail; an empty text would only
+        // make all configurations look the same, which the tests would see.
+        let text = serde_json::to_string(&self.instrument).unwrap_or_default();
+        blake3::hash(text.as_bytes()).to_hex().to_string()
+    }
+
+    /// The first instrument whose keywords match the header.
+    pub fn instrument_for(&self, value_of: impl Fn(&str) -> Option<String>) -> Option<&InstrumentConfig> {
+        self.instrument.iter().find(|instrument| instrument.is_match(&value_of))
+    }
+
+    /// The socket of the running daemon.
+    pub fn socket_path(&self) -> PathBuf {
+        if self.service.socket.as_os_str().is_empty() {
+            beside(&self.output.ledger, ".socket")
+        } else {
+            self.service.socket.clone()
+        }
+    }
+}
+
+impl InstrumentConfig {
+    fn check(&self) -> Result<(), ConfigError> {
+        let refuse = |key, found: String, need| Err(ConfigError::OutOfRange { key, found, need });
+        if self.name.is_empty() {
+            return refuse("instrument.name", "empty".to_owned(), "a name");
+        }
+        if self.keywords.is_empty() {
+            return refuse("instrument.match", "empty".to_owned(), "at least one header keyword");
+        }
+        for pattern in self.keywords.values() {
+            if header_pattern(pattern).is_err() {
+                return refuse("instrument.match", format!("{pattern:?}"), "a pattern such as \"KFS-*\"");
+            }
+        }
+        if self.resolving_power.is_some() && self.resolution_fwhm_aa.is_some() {
+            let need = "only one of resolving_power and resolution_fwhm_aa";
+            return refuse("instrument.resolution_fwhm_aa", "set twice".to_owned(), need);
+        }
+        for (key, value) in [
+            ("instrument.resolving_power", self.resolving_power),
+            ("instrument.resolution_fwhm_aa", self.resolution_fwhm_aa),
+            ("instrument.error_scale", self.error_scale),
+        ] {
+            if let Some(value) = value
+                && !(value.is_finite() && value > 0.0)
+            {
+                return refuse(key, value.to_string(), "a positive number");
+            }
+        }
+        for [low, high] in &self.masks_vac_aa {
+            if !(low.is_finite() && high.is_finite() && low < high) {
+                return refuse("instrument.masks_vac_aa", format!("[{low}, {high}]"), "[low, high]");
+            }
+        }
+        Ok(())
+    }
+}
+
+/// `path` with `suffix` appended to its file name.
+pub fn beside(path: &Path, suffix: &str) -> PathBuf {
+    let mut name = path.as_os_str().to_owned();
+    name.push(suffix);
+    PathBuf::from(name)
+}
+
+/// The full names of all keys, such as `inbox.still_s` and `instrument.medium`, sorted.
+pub fn known_keys() -> Vec<String> {
+    let schema = schemars::schema_for!(Config).to_value();
+    let mut keys = Vec::new();
+    collect_keys(&schema, &schema, "", &mut keys);
+    keys.sort();
+    keys
+}
+
+fn collect_keys(root: &serde_json::Value, node: &serde_json::Value, prefix: &str, keys: &mut Vec<String>) {
+    let node = match node.get("$ref").and_then(|reference| reference.as_str()) {
+        Some(reference) => root.pointer(reference.trim_start_matches('#')).unwrap_or(node),
+        None => node.get("items").unwrap_or(node),
+    };
+    if let Some(reference) = node.get("$ref") {
+        let wrapped = serde_json::json!({ "$ref": reference });
+        return collect_keys(root, &wrapped, prefix, keys);
+    }
+    let Some(properties) = node.get("properties").and_then(|p| p.as_object()) else { return };
+    for (name, child) in properties {
+        let key = if prefix.is_empty() { name.clone() } else { format!("{prefix}.{name}") };
+        collect_keys(root, child, &key, keys);
+        keys.push(key);
+    }
+}
+
+fn check_keys(table: &toml::Table) -> Result<(), ConfigError> {
+    let known = known_keys();
+    let mut found = Vec::new();
+    list_keys(table, "", &known, &mut found);
+    match found.into_iter().find(|key| !known.contains(key)) {
+        None => Ok(()),
+        Some(key) => {
+            let nearest = known
+                .iter()
+                .map(|candidate| (strsim::jaro_winkler(candidate, &key), candidate))
+                // Common practice: below 0.8 a suggestion puzzles more than it helps.
+                .filter(|(likeness, _)| *likeness > 0.8)
+                .max_by(|a, b| a.0.total_cmp(&b.0))
+                .map(|(_, candidate)| candidate.clone());
+            Err(ConfigError::UnknownKey { key, nearest })
+        }
+    }
+}
+
+fn list_keys(table: &toml::Table, prefix: &str, known: &[String], found: &mut Vec<String>) {
+    for (name, value) in table {
+        let key = if prefix.is_empty() { name.clone() } else { format!("{prefix}.{name}") };
+        // `instrument.match` holds header keywords, not keys of ours.
+        let is_free = !known.iter().any(|candidate| candidate.starts_with(&format!("{key}.")));
+        found.push(key.clone());
+        match value {
+            toml::Value::Table(inner) if !is_free => list_keys(inner, &key, known, found),
+            toml::Value::Array(items) if !is_free => {
+                for item in items {
+                    if let toml::Value::Table(inner) = item {
+                        list_keys(inner, &key, known, found);
+                    }
+                }
+            }
+            _ => {}
+        }
+    }
+}
+
+/// Seconds as a [`Duration`]; the value was checked when the configuration was parsed.
+pub fn seconds(value_s: f64) -> Duration {
+    Duration::try_from_secs_f64(value_s).unwrap_or(Duration::MAX)
+}

@@ -1,0 +1,46 @@
+//! Where the log goes: the journal or stderr, as text or JSON; the level can change while running.
+
+use tracing_subscriber::layer::SubscriberExt;
+use tracing_subscriber::util::SubscriberInitExt;
+use tracing_subscriber::{EnvFilter, Layer, Registry, fmt, reload};
+
+use crate::service::config::{LogConfig, LogDestination, LogFormat};
+
+/// Changes the level of the running log.
+#[derive(Debug, Clone)]
+pub struct LogHandle {
+    filter: reload::Handle<EnvFilter, Registry>,
+}
+
+impl LogHandle {
+    /// Puts another level or filter in force; it was checked when the configuration was parsed.
+    pub fn set_level(&self, level: &str) {
+        if let Ok(filter) = EnvFilter::try_new(level) {
+            // Fails only when the subscriber is gone, and then nothing is told anyway.
+            let _ = self.filter.reload(filter);
+        }
+    }
+}
+
+/// Starts the log of this process and sends panics there too.
+pub fn start(config: &LogConfig) -> LogHandle {
+    let (filter, handle) =
+        reload::Layer::new(EnvFilter::try_new(&config.level).unwrap_or_else(|_| EnvFilter::new("info")));
+    let wants_journal = match config.destination {
+        LogDestination::Journal => true,
+        LogDestination::Stderr => false,
+        // systemd sets it when stderr already goes to the journal.
+        LogDestination::Auto => std::env::var_os("JOURNAL_STREAM").is_some(),
+    };
+    let to_stderr = fmt::layer().with_writer(std::io::stderr).with_ansi(false);
+    let sink: Box<dyn Layer<_> + Send + Sync> =
+        match (wants_journal.then(tracing_journald::layer), config.format) {
+            (Some(Ok(journal)), _) => Box::new(journal),
+            (_, LogFormat::Text) => Box::new(to_stderr),
+            (_, LogFormat::Json) => Box::new(to_stderr.json()),
+        };
+    // A second start in one process (tests) keeps the first log.
+    let _ = tracing_subscriber::registry().with(filter).with(sink).try_init();
+    std::panic::set_hook(Box::new(|panic| tracing::error!("{panic}")));
+    LogHandle { filter: handle }
+}
