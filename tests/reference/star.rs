@@ -290,19 +290,22 @@ fn validate_three_d_corrections() {
     assert_eq!(correct_3d(40_000.0, 6.0), Some((0.0, 0.0)));
 }
 
-/// Lookup in less than 20 microseconds, mean over many (loose where the machine is busy: three times).
+/// Lookup in less than 20 microseconds: the best of many batches, which other work on the machine does not reach.
 #[test]
 fn verif_lookup_speed() {
-    let start = Instant::now();
-    let mut sum = 0.0;
-    let count = 20_000;
-    for i in 0..count {
-        let x = f64::from(i) / f64::from(count);
-        sum += TRACKS.at(6000.0 + 40_000.0 * x, 7.6 + 1.4 * x, HydrogenLayer::Thick).unwrap().mass_msun;
+    let (batches, count) = (100, 200);
+    let mut best_us = f64::INFINITY;
+    for batch in 0..batches {
+        let start = Instant::now();
+        for i in 0..count {
+            let x = f64::from(i * batches + batch) / f64::from(count * batches);
+            let point = TRACKS.at(6000.0 + 40_000.0 * x, 7.6 + 1.4 * x, HydrogenLayer::Thick);
+            std::hint::black_box(point).unwrap();
+        }
+        best_us = best_us.min(start.elapsed().as_secs_f64() * 1e6 / f64::from(count));
     }
-    let each_us = start.elapsed().as_secs_f64() * 1e6 / f64::from(count);
-    println!("a lookup takes {each_us:.2} us (mean mass {:.3})", sum / f64::from(count));
-    assert!(each_us < 60.0);
+    println!("a lookup takes {best_us:.2} us");
+    assert!(best_us < 20.0, "{best_us}");
 }
 
 /// The figure holds every curve and both stars, and nothing that is no number.
