@@ -52,6 +52,20 @@ fn a_hang_costs_one_object_and_its_thread_is_replaced() {
 }
 
 #[test]
+fn a_thread_that_was_given_up_and_comes_back_may_no_longer_write() {
+    let site = Site::new();
+    site.configure("workers.time_limit_s = 0.2");
+    let gate = site.folder.path().join("gate");
+    let daemon = site.start();
+    site.drop_file("slow.fits", &format!("object too-late\nuntil {}", gate.display()));
+    site.wait_for_report("slow");
+    fs::write(gate, "").unwrap();
+    wait_until("the thread comes back", AMPLE, || site.log().contains("its answer is dropped"));
+    assert!(site.current_report("too-late").is_none());
+    assert_eq!(daemon.wait_until_idle().jobs.rejected, 1);
+}
+
+#[test]
 fn when_every_thread_hangs_the_daemon_stops_with_an_error() {
     let site = Site::new();
     site.configure(
@@ -322,7 +336,7 @@ fn a_second_daemon_on_one_ledger_refuses_and_the_first_goes_on() {
     assert!(site.log().contains("another emberline works with it (stop that one first)"), "{}", site.log());
     site.drop_file("a.fits", "object KF-1");
     site.wait_for_report("KF-1");
-    assert_eq!(first.status().jobs.done, 1, "its socket is still there");
+    assert_eq!(first.wait_until_idle().jobs.done, 1, "its socket is still there");
     assert_eq!(first.stop(), 0);
 }
 
