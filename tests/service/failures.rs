@@ -341,6 +341,27 @@ fn a_second_daemon_on_one_ledger_refuses_and_the_first_goes_on() {
 }
 
 #[test]
+fn a_lost_ledger_is_made_again_from_the_folders_and_changes_no_report() {
+    let site = Site::new();
+    for index in 0..5 {
+        site.drop_file(&format!("{index}.fits"), &format!("object KF-{index}"));
+    }
+    assert_eq!(site.drain(), 0);
+    let written = |path: &PathBuf| fs::symlink_metadata(path).unwrap().modified().unwrap();
+    let before: Vec<_> = site.all_reports().iter().map(|path| (path.clone(), written(path))).collect();
+    for suffix in ["", "-wal", "-shm"] {
+        let _ = fs::remove_file(emberline::service::config::beside(&site.ledger, suffix));
+    }
+    assert_eq!(site.drain(), 0);
+    let after: Vec<_> = site.all_reports().iter().map(|path| (path.clone(), written(path))).collect();
+    assert_eq!(after, before, "nothing was written anew");
+    let database = Connection::open(&site.ledger).unwrap();
+    let done: i64 =
+        database.query_row("SELECT count(*) FROM jobs WHERE state = 'done'", [], |row| row.get(0)).unwrap();
+    assert_eq!(done, 5);
+}
+
+#[test]
 fn a_mistake_in_the_configuration_ends_with_exit_code_2() {
     let site = Site::new();
     site.configure("inbox.foldrs = []");
