@@ -48,6 +48,9 @@ enum News {
 }
 
 struct Folder {
+    /// As configured, absolute.
+    named: PathBuf,
+    /// Where that leads, links resolved: the kernel tells nothing of a watched link's target.
     path: PathBuf,
     /// Device and inode of what is watched; `None` while it is missing.
     identity: Option<(u64, u64)>,
@@ -164,10 +167,9 @@ impl Inbox {
             .config
             .folders
             .iter()
-            .map(|path| Folder {
-                path: std::path::absolute(path).unwrap_or_else(|_| path.clone()),
-                identity: None,
-                is_polled: false,
+            .map(|path| {
+                let named = std::path::absolute(path).unwrap_or_else(|_| path.clone());
+                Folder { path: named.clone(), named, identity: None, is_polled: false }
             })
             .collect();
         (0..self.folders.len()).for_each(|index| self.watch(index));
@@ -177,7 +179,8 @@ impl Inbox {
     /// Watches a folder that is new, or is no longer what it was.
     fn watch(&mut self, index: usize) {
         let folder = &mut self.folders[index];
-        folder.identity = identity(&folder.path);
+        folder.identity = identity(&folder.named);
+        folder.path = fs::canonicalize(&folder.named).unwrap_or_else(|_| folder.named.clone());
         if folder.identity.is_some() {
             folder.is_polled = match self.config.polling {
                 Polling::Always => true,
@@ -200,7 +203,7 @@ impl Inbox {
         } else {
             tracing::warn!(folder = %folder.path.display(), "cannot watch: no folder there, waiting for it");
         }
-        self.real_roots = self.folders.iter().filter_map(|f| fs::canonicalize(&f.path).ok()).collect();
+        self.real_roots = self.folders.iter().map(|folder| folder.path.clone()).collect();
     }
 
     /// Takes in what the kernel told; waits a little when there is nothing else to do. Says whether
@@ -334,7 +337,7 @@ impl Inbox {
         }
         self.next_folder_check = Instant::now() + FOLDER_CHECK;
         for index in 0..self.folders.len() {
-            let present = identity(&self.folders[index].path);
+            let present = identity(&self.folders[index].named);
             if present == self.folders[index].identity {
                 continue;
             }
@@ -441,7 +444,7 @@ impl Inbox {
             .folders
             .iter()
             .map(|folder| FolderStatus {
-                path: folder.path.display().to_string(),
+                path: folder.named.display().to_string(),
                 mode: match (folder.identity, folder.is_polled) {
                     (None, _) => "missing",
                     (Some(_), true) => "polling",

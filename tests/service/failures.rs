@@ -52,6 +52,20 @@ fn a_hang_costs_one_object_and_its_thread_is_replaced() {
 }
 
 #[test]
+fn a_thread_that_was_given_up_and_comes_back_may_no_longer_write() {
+    let site = Site::new();
+    site.configure("workers.time_limit_s = 0.2");
+    let gate = site.folder.path().join("gate");
+    let daemon = site.start();
+    site.drop_file("slow.fits", &format!("object too-late\nuntil {}", gate.display()));
+    site.wait_for_report("slow");
+    fs::write(gate, "").unwrap();
+    wait_until("the thread comes back", AMPLE, || site.log().contains("its answer is dropped"));
+    assert!(site.current_report("too-late").is_none());
+    assert_eq!(daemon.wait_until_idle().jobs.rejected, 1);
+}
+
+#[test]
 fn when_every_thread_hangs_the_daemon_stops_with_an_error() {
     let site = Site::new();
     site.configure(
@@ -322,8 +336,29 @@ fn a_second_daemon_on_one_ledger_refuses_and_the_first_goes_on() {
     assert!(site.log().contains("another emberline works with it (stop that one first)"), "{}", site.log());
     site.drop_file("a.fits", "object KF-1");
     site.wait_for_report("KF-1");
-    assert_eq!(first.status().jobs.done, 1, "its socket is still there");
+    assert_eq!(first.wait_until_idle().jobs.done, 1, "its socket is still there");
     assert_eq!(first.stop(), 0);
+}
+
+#[test]
+fn a_lost_ledger_is_made_again_from_the_folders_and_changes_no_report() {
+    let site = Site::new();
+    for index in 0..5 {
+        site.drop_file(&format!("{index}.fits"), &format!("object KF-{index}"));
+    }
+    assert_eq!(site.drain(), 0);
+    let written = |path: &PathBuf| fs::symlink_metadata(path).unwrap().modified().unwrap();
+    let before: Vec<_> = site.all_reports().iter().map(|path| (path.clone(), written(path))).collect();
+    for suffix in ["", "-wal", "-shm"] {
+        let _ = fs::remove_file(emberline::service::config::beside(&site.ledger, suffix));
+    }
+    assert_eq!(site.drain(), 0);
+    let after: Vec<_> = site.all_reports().iter().map(|path| (path.clone(), written(path))).collect();
+    assert_eq!(after, before, "nothing was written anew");
+    let database = Connection::open(&site.ledger).unwrap();
+    let done: i64 =
+        database.query_row("SELECT count(*) FROM jobs WHERE state = 'done'", [], |row| row.get(0)).unwrap();
+    assert_eq!(done, 5);
 }
 
 #[test]

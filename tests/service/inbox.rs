@@ -114,6 +114,21 @@ fn a_file_whose_event_the_kernel_lost_is_found_by_a_full_scan() {
 }
 
 #[test]
+fn a_watched_folder_may_itself_be_a_link() {
+    let site = Site::new();
+    let real = site.folder.path().join("real");
+    fs::create_dir(&real).unwrap();
+    fs::remove_dir(&site.inbox).unwrap();
+    symlink(&real, &site.inbox).unwrap();
+    fs::write(real.join("before.fits"), "object before\nEND\n").unwrap();
+    let daemon = site.start();
+    site.wait_for_report("before");
+    site.drop_file("after.fits", "object after");
+    site.wait_for_report("after");
+    assert_eq!(daemon.status().inbox.folders[0].mode, "events");
+}
+
+#[test]
 fn polling_finds_the_same_files() {
     let site = Site::new();
     site.configure("inbox.polling = \"always\"\ninbox.poll_interval_s = 0.05");

@@ -175,6 +175,20 @@ fn a_drain_that_leaves_files_for_a_later_try_says_so() {
     assert!(site.current_report("good").is_some());
 }
 
+#[test]
+fn the_log_can_be_json_with_one_span_per_object() {
+    let site = Site::new();
+    site.configure("log.format = \"json\"");
+    let path = site.drop_file("a.fits", "object KF-1");
+    assert_eq!(site.drain(), 0);
+    let lines: Vec<serde_json::Value> =
+        site.log().lines().map(|line| serde_json::from_str(line).unwrap()).collect();
+    let done: Vec<_> = lines.iter().filter(|line| line["span"]["name"] == "object").collect();
+    assert_eq!(done.len(), 1, "{lines:?}");
+    assert_eq!(done[0]["span"]["path"], path.canonicalize().unwrap().to_string_lossy().as_ref());
+    assert_eq!(done[0]["fields"]["message"], "done");
+}
+
 /// The socket that systemd gives to its services.
 struct Manager {
     socket: UnixDatagram,
