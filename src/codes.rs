@@ -216,6 +216,13 @@ codes! {
         "probably an A or B star or a hot subdwarf";
     SCREEN_NOT_EXPLAINED = "screen.not-explained", Reject,
         "no DA model comes near the data", "not a DA white dwarf, or a failed reduction";
+    SCREEN_CONTINUUM = "screen.continuum-disagrees", Review,
+        "the slope of the calibrated continuum contradicts the temperature of the lines",
+        "not a DA white dwarf, strong reddening, or a wrong flux calibration";
+    SCREEN_HELIUM = "screen.helium-lines", Review,
+        "helium absorption beside the Balmer lines", "a DAB, DAO or hot subdwarf candidate: pure-hydrogen values are biased";
+    SCREEN_CALCIUM = "screen.calcium-line", Note,
+        "calcium K absorption", "a DAZ candidate, or calcium between the stars";
 
     // star
     OUTSIDE_TRACKS = "star.outside-tracks", Review,

@@ -133,7 +133,7 @@ impl<'g> Fitter<'g> {
                 .map(|data| data.pixels.iter().map(|pixel| pixel.wave_vac_aa).collect())
                 .collect(),
         };
-        fit.flags = screen(&fit, &objective, self.grid);
+        fit.flags = screen(&fit, &objective, spectrum, self.grid);
         Ok(fit)
     }
 

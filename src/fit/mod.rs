@@ -5,6 +5,7 @@
 
 mod errors;
 mod fitter;
+mod foreign_lines;
 pub mod line_spread;
 mod objective;
 mod screening;
@@ -14,6 +15,7 @@ mod windows;
 
 pub use errors::{EXTERNAL_LOG_G, EXTERNAL_TEFF};
 pub use fitter::{Fitter, equivalent_width_aa};
+pub use foreign_lines::{FOREIGN_LINES, ForeignLine, ForeignStrength};
 pub use objective::Seen;
 pub use settings::FitSettings;
 pub use solution::{Branch, Fit, FitFault, LineResult, Solution};

@@ -3,10 +3,12 @@
 //! Each test states what it measured; the table of codes says what it does to the verdict. Thresholds
 //! are common practice unless a source is named; `rehearse` measures what they cost.
 
+use super::foreign_lines::FOREIGN_LINES;
 use super::objective::Objective;
 use super::solution::Fit;
 use crate::codes::{self, Flag};
 use crate::grid::FluxGrid;
+use crate::spectrum::Spectrum;
 
 /// Significance (chi-square gained by the lines) below which there are none.
 const LEAST_LINE_GAIN: f64 = 49.0;
@@ -29,8 +31,14 @@ const NARROW_MARGIN: f64 = 0.06;
 /// Statistical error of Teff (relative) and log g beyond which the parameters say nothing.
 const LARGEST_ERROR: (f64, f64) = (0.15, 0.5);
 
+/// Tilt of data against model, natural logarithm between H-beta and H8, beyond which a calibrated continuum
+/// contradicts the lines. Bluer than the model: three times the 0.08 that calibration is trusted to. Redder:
+/// E(B-V) = 0.3 more, which reddens that range by 0.3 (common practice).
+const TILT_BLUE: f64 = 0.24;
+const TILT_RED: f64 = -0.54;
+
 /// All flags of a fit.
-pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag> {
+pub fn screen(fit: &Fit, objective: &Objective<'_>, spectrum: &Spectrum, grid: &FluxGrid) -> Vec<Flag> {
     let mut flags = Vec::new();
     let chosen = fit.chosen();
     let snr = fit.snr();
@@ -86,6 +94,22 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, grid: &FluxGrid) -> Vec<Flag
             chosen.teff_k, chosen.probability, other.teff_k, other.probability
         );
         flags.push(Flag::new(&codes::FIT_WEAK_CHOICE, detail));
+    }
+    if let Some(tilt) = chosen.tilt.filter(|tilt| !(TILT_RED..=TILT_BLUE).contains(tilt)) {
+        let colour = if tilt > 0.0 { "bluer" } else { "redder" };
+        let detail =
+            format!("data {colour} than the model by {:.0} % between H-beta and H8", 100.0 * tilt.abs());
+        flags.push(Flag::new(&codes::SCREEN_CONTINUUM, detail));
+    }
+    for line in &FOREIGN_LINES {
+        let Some(strength) = line.measure(spectrum, grid, chosen) else { continue };
+        if line.is_detected(strength) {
+            let detail = format!(
+                "{} with an equivalent width of {:.2} +- {:.2} A",
+                line.name, strength.equivalent_width_aa, strength.sigma_aa
+            );
+            flags.push(Flag::new(line.code, detail));
+        }
     }
     if chosen.teff_k > NLTE_TEFF_K {
         flags.push(Flag::new(&codes::FIT_NLTE, format!("Teff {:.0} K", chosen.teff_k)));
