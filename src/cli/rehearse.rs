@@ -12,7 +12,7 @@ use serde_json::json;
 
 use super::{CommandResult, Tables};
 use crate::fit::FitSettings;
-use crate::rehearsal::{Region, Summary, observe, score};
+use crate::rehearsal::{Region, Summary, observe, score, truth_table};
 use crate::report::{Analysis, report_observation, write_atomically};
 use crate::spectrum::{ObjectRecord, Observation, SourceRecord};
 
@@ -25,7 +25,7 @@ pub struct RehearseArguments {
     /// Seed of the random numbers: the same seed gives the same night.
     #[arg(long, default_value_t = 1)]
     seed: u64,
-    /// Folder for the reports, one JSON file per object; made if missing.
+    /// Folder for the reports, one JSON file per object, and truth.csv; made if missing.
     #[arg(long, value_name = "DIR")]
     into: Option<PathBuf>,
     /// End with one line of JSON instead of a table.
@@ -71,6 +71,8 @@ pub fn run(arguments: &RehearseArguments) -> CommandResult {
             let file = folder.join(format!("{}.json", sighting.name.replace(' ', "-")));
             write_atomically(&file, &serde_json::to_vec_pretty(report)?)?;
         }
+        let sightings = night.iter().map(|(sighting, _)| sighting);
+        write_atomically(&folder.join("truth.csv"), truth_table(sightings).as_bytes())?;
     }
     let (summary, regions) = score(&night, seconds);
     let mut out = io::stdout().lock();

@@ -9,10 +9,13 @@ use std::ops::Range;
 
 use statrs::function::erf::erf;
 
+use crate::physics::constants::LIGHT_SPEED_KM_S;
 use crate::physics::wavelength::doppler_factor;
 
 /// The kernel is followed to this many standard deviations: beyond, 1e-6 of it is left.
 const REACH_SIGMA: f64 = 5.0;
+/// Peak of the unit Gaussian, 1 / sqrt(2 pi).
+const GAUSS_PEAK: f64 = std::f64::consts::FRAC_2_SQRT_PI * std::f64::consts::FRAC_1_SQRT_2 / 2.0;
 
 /// Rows of pixels over columns of model wavelengths.
 #[derive(Debug, Clone, Default)]
@@ -35,31 +38,45 @@ pub struct Pixel {
     pub fwhm_aa: f64,
 }
 
-/// Velocity step of the derivative of the weights, km/s.
-const VELOCITY_STEP_KM_S: f64 = 0.5;
-
 impl LineSpread {
     /// Builds the operator of pixels that see a star receding with `radial_velocity_km_s`, on model
     /// wavelengths (vacuum A, ascending) that must reach beyond all kernels: see [`model_range`].
     pub fn new(pixels: &[Pixel], model_wave_vac_aa: &[f64], radial_velocity_km_s: f64) -> Self {
         let mut operator = LineSpread::default();
-        let rest = doppler_factor(radial_velocity_km_s);
-        let redder = doppler_factor(radial_velocity_km_s + VELOCITY_STEP_KM_S);
-        let mut scratch = Vec::new();
+        let beta = radial_velocity_km_s / LIGHT_SPEED_KM_S;
+        let doppler = doppler_factor(radial_velocity_km_s);
+        // d ln(Doppler factor) / dv.
+        let stretch_per_km_s = 1.0 / (LIGHT_SPEED_KM_S * (1.0 - beta * beta));
         for pixel in pixels {
-            let shape = Kernel::new(pixel, rest);
-            let range = covered(model_wave_vac_aa, shape.centre, shape.reach());
+            let kernel = Kernel::new(pixel, doppler);
+            let range = covered(model_wave_vac_aa, kernel.centre, kernel.reach());
             operator.rows.push((range.start, operator.weight.len()));
-            let start = operator.weight.len();
-            push_weights(&mut operator.weight, &mut scratch, &model_wave_vac_aa[range.clone()], shape);
-            let moved = Kernel::new(pixel, redder);
-            push_weights(&mut operator.per_km_s, &mut scratch, &model_wave_vac_aa[range], moved);
-            for (slope, weight) in operator.per_km_s[start..].iter_mut().zip(&operator.weight[start..]) {
-                *slope = (*slope - weight) / VELOCITY_STEP_KM_S;
-            }
+            operator.push_row(&model_wave_vac_aa[range], kernel, kernel.centre * stretch_per_km_s);
         }
         operator.rows.push((0, operator.weight.len()));
         operator
+    }
+
+    /// Appends the weights of model points, second differences of the twice-integrated kernel, and their
+    /// change when the kernel's centre moves blueward by `shift_per_km_s`; the outermost points take what
+    /// lies beyond them. The kernel's own width changes a thousand times less and is left.
+    fn push_row(&mut self, waves: &[f64], kernel: Kernel, shift_per_km_s: f64) {
+        let mut before = Integrals { twice: 0.0, once: 0.0 };
+        let (mut slope_before, mut change_before) = (0.0, 0.0);
+        for (i, wave) in waves.iter().enumerate() {
+            let here = kernel.integrals(wave - kernel.centre);
+            if i > 0 {
+                let inverse = 1.0 / (wave - waves[i - 1]);
+                let slope = (here.twice - before.twice) * inverse;
+                let change = (here.once - before.once) * inverse * shift_per_km_s;
+                self.weight.push(slope - slope_before);
+                self.per_km_s.push(change - change_before);
+                (slope_before, change_before) = (slope, change);
+            }
+            before = here;
+        }
+        self.weight.push(1.0 - slope_before);
+        self.per_km_s.push(-change_before);
     }
 
     /// Folds a model; `seen` has one entry per pixel.
@@ -117,18 +134,26 @@ impl Kernel {
         REACH_SIGMA * self.sigma + self.half_width
     }
 
-    /// The kernel integrated twice, at a distance from its centre.
-    fn twice_integrated(&self, x: f64) -> f64 {
-        let third = |x: f64| {
-            // Gaussian integrated three times: ((x^2 + s^2) Phi + x s^2 g) / 2.
+    /// The kernel integrated once and twice, at a distance from its centre.
+    fn integrals(&self, x: f64) -> Integrals {
+        // The Gaussian integrated twice: x Phi + s^2 g; three times: ((x^2 + s^2) Phi + x s^2 g) / 2.
+        let sigma2 = self.sigma * self.sigma;
+        let ends = [x + self.half_width, x - self.half_width].map(|x| {
             let z = x / self.sigma;
             let phi = 0.5 * (1.0 + erf(z * std::f64::consts::FRAC_1_SQRT_2));
-            let gauss = (-0.5 * z * z).exp() / (self.sigma * (2.0 * std::f64::consts::PI).sqrt());
-            let sigma2 = self.sigma * self.sigma;
-            0.5 * ((x * x + sigma2) * phi + x * sigma2 * gauss)
-        };
-        (third(x + self.half_width) - third(x - self.half_width)) / (2.0 * self.half_width)
+            let gauss = GAUSS_PEAK * self.sigma * (-0.5 * z * z).exp();
+            (x * phi + gauss, 0.5 * ((x * x + sigma2) * phi + x * gauss))
+        });
+        let inverse = 0.5 / self.half_width;
+        Integrals { once: (ends[0].0 - ends[1].0) * inverse, twice: (ends[0].1 - ends[1].1) * inverse }
     }
+}
+
+/// Integrals of a kernel up to one place.
+#[derive(Clone, Copy)]
+struct Integrals {
+    once: f64,
+    twice: f64,
 }
 
 /// Model points that a kernel touches, with one more on either side.
@@ -136,20 +161,6 @@ fn covered(waves: &[f64], centre: f64, reach: f64) -> Range<usize> {
     let start = waves.partition_point(|wave| *wave < centre - reach).saturating_sub(1);
     let end = (waves.partition_point(|wave| *wave <= centre + reach) + 1).min(waves.len());
     start..end.max(start + 2).min(waves.len())
-}
-
-/// Appends the weights of model points; the outermost ones take what lies beyond them.
-fn push_weights(weights: &mut Vec<f64>, scratch: &mut Vec<f64>, waves: &[f64], kernel: Kernel) {
-    scratch.clear();
-    scratch.extend(waves.iter().map(|wave| kernel.twice_integrated(wave - kernel.centre)));
-    let last = waves.len() - 1;
-    let mut slope_before = 0.0;
-    for i in 0..=last {
-        let slope_after =
-            if i < last { (scratch[i + 1] - scratch[i]) / (waves[i + 1] - waves[i]) } else { 1.0 };
-        weights.push(slope_after - slope_before);
-        slope_before = slope_after;
-    }
 }
 
 #[cfg(test)]

@@ -6,5 +6,5 @@
 mod night;
 mod score;
 
-pub use night::{Sighting, Truth, observe};
+pub use night::{Sighting, Truth, observe, truth_table};
 pub use score::{Region, Summary, score};

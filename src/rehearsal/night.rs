@@ -101,6 +101,23 @@ pub fn observe(grid: &FluxGrid, seed: u64, number: u64) -> Result<Sighting, Spec
     Ok(Sighting { name: format!("KF {seed:04}-{number:05}"), truth, fwhm_aa, snr, spectrum })
 }
 
+/// The truth of a night as comma-separated values, one line per object; parameters only of DA white dwarfs.
+pub fn truth_table<'s>(night: impl Iterator<Item = &'s Sighting>) -> String {
+    let mut table = "name,kind,teff_k,log_g,radial_velocity_km_s,fwhm_aa,snr\n".to_owned();
+    for Sighting { name, truth, fwhm_aa, snr, .. } in night {
+        let what = match truth {
+            Truth::Da { teff_k, log_g, radial_velocity_km_s } => {
+                format!("da,{teff_k:.1},{log_g:.4},{radial_velocity_km_s:.2}")
+            }
+            Truth::Featureless => "featureless,,,".to_owned(),
+            Truth::NarrowLined => "narrow-lined,,,".to_owned(),
+            Truth::Emission => "emission,,,".to_owned(),
+        };
+        table.push_str(&format!("{name},{what},{fwhm_aa},{snr:.2}\n"));
+    }
+    table
+}
+
 fn draw_truth(random: &mut ChaCha8Rng) -> Truth {
     if random.random::<f64>() < CONTAMINANTS {
         return match random.random_range(0..3) {
