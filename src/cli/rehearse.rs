@@ -89,14 +89,14 @@ fn print_table(out: &mut impl Write, seed: u64, summary: &Summary, regions: &[Re
     writeln!(out)?;
     writeln!(
         out,
-        "{:>15} {:>6}  {:>16}  {:>16}  {:>14}  {:>20}",
-        "true Teff, K", "stars", "dTeff/Teff, %", "dlog g", "dv, km/s", "pull widths T, g, v"
+        "{:>15} {:>6}  {:>16}  {:>16}  {:>14}  {:>20}  {:>11}",
+        "true Teff, K", "stars", "dTeff/Teff, %", "dlog g", "dv, km/s", "pull widths T, g, v", "in 68, 95 %"
     )?;
     for region in regions {
         let [teff, log_g, velocity] = region.pull_widths;
         writeln!(
             out,
-            "{:>6.0} - {:>6.0} {:>6}  {:>+7.2} +- {:>5.2}  {:>+7.3} +- {:>5.3}  {:>+5.1} +- {:>5.1}  {:>6.2} {:>6.2} {:>6.2}",
+            "{:>6.0} - {:>6.0} {:>6}  {:>+7.2} +- {:>5.2}  {:>+7.3} +- {:>5.3}  {:>+5.1} +- {:>5.1}  {:>6.2} {:>6.2} {:>6.2}  {:>5.0} {:>5.0}",
             region.teff_k.0,
             region.teff_k.1,
             region.stars,
@@ -108,7 +108,9 @@ fn print_table(out: &mut impl Write, seed: u64, summary: &Summary, regions: &[Re
             region.radial_velocity_km_s.1,
             teff,
             log_g,
-            velocity
+            velocity,
+            100.0 * region.coverage.0,
+            100.0 * region.coverage.1
         )?;
     }
     writeln!(out)?;
@@ -123,8 +125,25 @@ fn print_table(out: &mut impl Write, seed: u64, summary: &Summary, regions: &[Re
         summary.pull_mean_radial_velocity,
         summary.pull_width_radial_velocity
     )?;
-    writeln!(out, "hot and cold mistaken: {}", percent(summary.wrong_solution_fraction))?;
-    writeln!(out, "not a DA, but accepted: {}", percent(summary.contaminants_accepted_fraction))?;
+    writeln!(
+        out,
+        "within 1 and 1.96 standard deviations: {} and {}",
+        percent(summary.coverage_68),
+        percent(summary.coverage_95)
+    )?;
+    writeln!(
+        out,
+        "hot and cold mistaken: {}; of S/N 20 or more: {}; and accepted: {}",
+        percent(summary.wrong_solution_fraction),
+        percent(summary.wrong_solution_fraction_bright),
+        percent(summary.wrong_solution_accepted_fraction)
+    )?;
+    writeln!(
+        out,
+        "not a DA, but accepted: {} of {}",
+        percent(summary.contaminants_accepted_fraction),
+        summary.contaminants
+    )?;
     writeln!(out, "DA of S/N 15 or more, not accepted: {}", percent(summary.good_not_accepted_fraction))?;
     writeln!(out, "speed: {:.0} spectra per second", summary.spectra_per_s)
 }

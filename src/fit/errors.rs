@@ -21,6 +21,8 @@ pub struct Errors {
     pub covariance: [[f64; 3]; 3],
     /// Pixels less all free parameters, those of the normalisation included.
     pub dof: u64,
+    /// By how much the covariance was scaled up, at least 1.
+    pub inflation: f64,
 }
 
 /// Inverse curvature with the normalisation projected out, scaled up where the residuals scatter more
@@ -31,7 +33,11 @@ pub fn compute_errors(objective: &Objective<'_>, at: &Linearisation<3>, views: &
     let inflation = (at.chi2 / dof as f64).max(1.0) * correlation_factor(views);
     let covariance =
         at.curvature.try_inverse().unwrap_or_else(|| Matrix3::from_element(f64::NAN)) * inflation;
-    Errors { covariance: std::array::from_fn(|i| std::array::from_fn(|j| covariance[(i, j)])), dof }
+    Errors {
+        covariance: std::array::from_fn(|i| std::array::from_fn(|j| covariance[(i, j)])),
+        dof,
+        inflation,
+    }
 }
 
 /// 1 + 2 sum of the autocorrelation at positive lags up to the first insignificant one: how much fewer

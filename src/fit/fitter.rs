@@ -6,10 +6,11 @@
 //!    explain one by one are set aside, and the refinement repeated. 4. The choice between the solutions
 //!    uses chi-square and, where the flux is calibrated, the slope of the continuum.
 
-use nalgebra::Vector3;
+use nalgebra::{Matrix3, Vector3};
 
 use super::errors::{Errors, compute_errors};
 use super::objective::{LARGEST_VELOCITY_KM_S, Objective, Seen};
+use super::profile::{Bottom, profiled_covariance};
 use super::screening::screen;
 use super::settings::FitSettings;
 use super::solution::{Branch, Fit, FitFault, LineResult, Solution};
@@ -32,6 +33,10 @@ const MOST_ITERATIONS: u64 = 60;
 const MOST_MINIMA: usize = 4;
 /// Solutions closer than this are one: relative in Teff, absolute in log g.
 const SAME_SOLUTION: (f64, f64) = (0.01, 0.05);
+/// Solutions this many standard deviations of Teff from the ridge, or nearer, have their errors from a
+/// profile, unless their Teff differs from it by more than this factor.
+const RIDGE_SIGMA: f64 = 8.0;
+const RIDGE_FACTOR: f64 = 1.7;
 /// A line's velocity disagrees with the others' from this on, km/s and standard deviations: more than any
 /// asymmetry of Stark-broadened lines makes.
 const OFFSET_KM_S: f64 = 60.0;
@@ -114,6 +119,7 @@ impl<'g> Fitter<'g> {
             solutions = self.refine_all(&mut objective, &starts)?;
         }
         self.choose(&mut solutions, &mut objective, spectrum.is_flux_calibrated())?;
+        self.profile_near_ridge(&mut solutions, &mut objective)?;
         objective.set_velocity(solutions[0].radial_velocity_km_s);
         let views = objective.view(&solutions[0].vector()).map_err(FitFault::Model)?;
         let lines =
@@ -230,13 +236,58 @@ impl<'g> Fitter<'g> {
         Ok(solutions)
     }
 
+    fn bounds(&self) -> Bounds<3> {
+        let (teff_first_k, teff_last_k) = self.grid.teff_range_k();
+        let (log_g_first, log_g_last) = self.grid.log_g_range();
+        Bounds {
+            lower: Vector3::new(teff_first_k, log_g_first, -LARGEST_VELOCITY_KM_S),
+            upper: Vector3::new(teff_last_k, log_g_last, LARGEST_VELOCITY_KM_S),
+        }
+    }
+
+    /// Errors of solutions that reach the ridge, from the profile of chi-square out to the half-way point
+    /// (in ln Teff) to the next solution.
+    fn profile_near_ridge(
+        &self,
+        solutions: &mut [Solution],
+        objective: &mut Objective<'g>,
+    ) -> Result<(), FitFault> {
+        let temperatures: Vec<f64> = solutions.iter().map(|solution| solution.teff_k).collect();
+        let (teff_first_k, teff_last_k) = self.grid.teff_range_k();
+        for solution in solutions {
+            let ridge_k = self.ridge_k(solution.log_g);
+            let reaches_ridge = (solution.teff_k - ridge_k).abs() < RIDGE_SIGMA * solution.sigma(0)
+                && (ridge_k / RIDGE_FACTOR..ridge_k * RIDGE_FACTOR).contains(&solution.teff_k);
+            if !reaches_ridge || solution.is_at_edge {
+                continue;
+            }
+            let mut range_k = (teff_first_k, teff_last_k);
+            for other in &temperatures {
+                let middle = (other * solution.teff_k).sqrt();
+                if *other < solution.teff_k {
+                    range_k.0 = range_k.0.max(middle);
+                } else if *other > solution.teff_k {
+                    range_k.1 = range_k.1.min(middle);
+                }
+            }
+            objective.set_velocity(solution.radial_velocity_km_s);
+            let bottom = Bottom {
+                at: solution.vector(),
+                chi2: solution.chi2,
+                covariance: Matrix3::from_fn(|i, j| solution.covariance[i][j]),
+                inflation: solution.inflation,
+            };
+            let covariance =
+                profiled_covariance(objective, &bottom, &self.bounds(), range_k).map_err(FitFault::Model)?;
+            solution.covariance = std::array::from_fn(|i| std::array::from_fn(|j| covariance[(i, j)]));
+        }
+        Ok(())
+    }
+
     fn refine(&self, objective: &mut Objective<'g>, start: Vector3<f64>) -> Result<Solution, FitFault> {
         let (teff_first_k, teff_last_k) = self.grid.teff_range_k();
         let (log_g_first, log_g_last) = self.grid.log_g_range();
-        let bounds = Bounds {
-            lower: Vector3::new(teff_first_k, log_g_first, -LARGEST_VELOCITY_KM_S),
-            upper: Vector3::new(teff_last_k, log_g_last, LARGEST_VELOCITY_KM_S),
-        };
+        let bounds = self.bounds();
         let mut at = start;
         let mut iterations = 0;
         let mut round = 0;
@@ -254,7 +305,7 @@ impl<'g> Fitter<'g> {
             }
         };
         let views = objective.view(&at).map_err(FitFault::Model)?;
-        let Errors { covariance, dof } = compute_errors(objective, &fitted.at, &views);
+        let Errors { covariance, dof, inflation } = compute_errors(objective, &fitted.at, &views);
         let edge_teff = |node: f64| (at[0] / node - 1.0).abs() < EDGE.0;
         let edge_log_g = |node: f64| (at[1] - node).abs() < EDGE.1;
         let ridge_k = self.ridge_k(at[1]);
@@ -263,6 +314,7 @@ impl<'g> Fitter<'g> {
             log_g: at[1],
             radial_velocity_km_s: at[2],
             covariance,
+            inflation,
             chi2: fitted.at.chi2,
             dof,
             probability: 1.0,

@@ -9,6 +9,7 @@ use std::ops::Range;
 
 use statrs::function::erf::erf;
 
+use crate::numerics::dot::dot;
 use crate::physics::constants::LIGHT_SPEED_KM_S;
 use crate::physics::wavelength::doppler_factor;
 
@@ -109,7 +110,7 @@ pub fn model_range(
 fn fold(rows: &[(usize, usize)], weights: &[f64], model: &[f64], seen: &mut [f64]) {
     for (pair, output) in rows.windows(2).zip(seen) {
         let weights = &weights[pair[0].1..pair[1].1];
-        *output = weights.iter().zip(&model[pair[0].0..]).map(|(weight, value)| weight * value).sum();
+        *output = dot(weights, &model[pair[0].0..]);
     }
 }
 

@@ -15,6 +15,7 @@ use nalgebra::{Matrix3, Vector3};
 use super::line_spread::{LineSpread, Pixel, model_range};
 use super::windows::Window;
 use crate::grid::FluxGrid;
+use crate::numerics::dot::dot;
 use crate::numerics::least_squares::{LeastSquares, Linearisation};
 use crate::physics::wavelength::doppler_factor;
 use crate::spectrum::Spectrum;
@@ -387,8 +388,4 @@ fn legendre(order: usize, x: f64) -> f64 {
         1 => x,
         _ => 1.5 * x * x - 0.5,
     }
-}
-
-fn dot(a: &[f64], b: &[f64]) -> f64 {
-    a.iter().zip(b).map(|(a, b)| a * b).sum()
 }

@@ -36,6 +36,8 @@ pub struct Solution {
     pub radial_velocity_km_s: f64,
     /// Statistical covariance of the three, in this order.
     pub covariance: [[f64; 3]; 3],
+    /// By how much the covariance was scaled up for large or correlated residuals, at least 1.
+    pub inflation: f64,
     /// Chi-square.
     pub chi2: f64,
     /// Degrees of freedom.

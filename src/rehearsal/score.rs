@@ -10,6 +10,8 @@ const WRONG_LN_TEFF: f64 = 0.12;
 const WRONG_SIGMA: f64 = 5.0;
 /// Good stars must be accepted from this signal-to-noise ratio.
 const GOOD_SNR: f64 = 15.0;
+/// From this signal-to-noise ratio on the wrong choice must be very rare.
+const BRIGHT_SNR: f64 = 20.0;
 
 /// The summary of a night; the keys are stable.
 #[derive(Debug, Clone, PartialEq, Serialize)]
@@ -30,6 +32,16 @@ pub struct Summary {
     pub pull_width_radial_velocity: f64,
     /// White dwarfs for which the wrong one of hot and cold was chosen.
     pub wrong_solution_fraction: f64,
+    /// The same among those of S/N 20 or more.
+    pub wrong_solution_fraction_bright: f64,
+    /// White dwarfs with the wrong solution and the verdict `accepted`.
+    pub wrong_solution_accepted_fraction: f64,
+    /// Share of all Teff, log g and velocities within one standard deviation of the truth.
+    pub coverage_68: f64,
+    /// The same within 1.96 standard deviations.
+    pub coverage_95: f64,
+    /// Objects that are no DA white dwarfs.
+    pub contaminants: usize,
     /// Contaminants with the verdict `accepted`.
     pub contaminants_accepted_fraction: f64,
     /// White dwarfs of S/N 15 or more without the verdict `accepted`.
@@ -53,6 +65,8 @@ pub struct Region {
     pub radial_velocity_km_s: (f64, f64),
     /// Widths of the pulls of the three.
     pub pull_widths: [f64; 3],
+    /// Shares within 1 and 1.96 standard deviations, over the three.
+    pub coverage: (f64, f64),
 }
 
 /// Ends of the regions, K: cool, convective, the ridge, hot, hottest.
@@ -64,6 +78,8 @@ struct Comparison {
     difference: [f64; 3],
     sigma: [f64; 3],
     is_wrong: bool,
+    is_accepted: bool,
+    snr: f64,
 }
 
 impl Comparison {
@@ -80,7 +96,8 @@ impl Comparison {
         let sigma = [0, 1, 2].map(|i| f64::sqrt(covariance[i][i]));
         let is_wrong = (chosen.teff_k? / teff_k).ln().abs() > WRONG_LN_TEFF
             && difference[0].abs() > WRONG_SIGMA * sigma[0];
-        Some(Comparison { teff_k, difference, sigma, is_wrong })
+        let is_accepted = report.verdict == Verdict::Accepted;
+        Some(Comparison { teff_k, difference, sigma, is_wrong, is_accepted, snr: sighting.snr })
     }
 
     fn pull(&self, parameter: usize) -> f64 {
@@ -100,6 +117,12 @@ pub fn score(night: &[(Sighting, Report)], seconds: f64) -> (Summary, Vec<Region
         chosen.iter().filter(|(_, report)| is(report)).count() as f64 / chosen.len().max(1) as f64
     };
     let is_accepted = |report: &Report| report.verdict == Verdict::Accepted;
+    let (coverage_68, coverage_95) = coverage(&right);
+    let wrong_among = |of: &dyn Fn(&Comparison) -> bool, is: &dyn Fn(&Comparison) -> bool| {
+        let all = compared.iter().filter(|comparison| of(comparison));
+        let wrong = all.clone().filter(|comparison| comparison.is_wrong && is(comparison)).count();
+        wrong as f64 / all.count().max(1) as f64
+    };
     let summary = Summary {
         stars: night.len(),
         pull_mean_teff: pulls[0].0,
@@ -108,7 +131,12 @@ pub fn score(night: &[(Sighting, Report)], seconds: f64) -> (Summary, Vec<Region
         pull_width_log_g: pulls[1].1,
         pull_mean_radial_velocity: pulls[2].0,
         pull_width_radial_velocity: pulls[2].1,
-        wrong_solution_fraction: 1.0 - right.len() as f64 / compared.len().max(1) as f64,
+        wrong_solution_fraction: wrong_among(&|_| true, &|_| true),
+        wrong_solution_fraction_bright: wrong_among(&|comparison| comparison.snr >= BRIGHT_SNR, &|_| true),
+        wrong_solution_accepted_fraction: wrong_among(&|_| true, &|comparison| comparison.is_accepted),
+        coverage_68,
+        coverage_95,
+        contaminants: night.iter().filter(|(sighting, _)| !is_da(sighting)).count(),
         contaminants_accepted_fraction: share(&|sighting| !is_da(sighting), &is_accepted),
         good_not_accepted_fraction: share(
             &|sighting| is_da(sighting) && sighting.snr >= GOOD_SNR,
@@ -121,8 +149,11 @@ pub fn score(night: &[(Sighting, Report)], seconds: f64) -> (Summary, Vec<Region
 }
 
 fn region(teff_k: (f64, f64), compared: &[&Comparison]) -> Region {
-    let inside: Vec<_> =
-        compared.iter().filter(|comparison| (teff_k.0..teff_k.1).contains(&comparison.teff_k)).collect();
+    let inside: Vec<&Comparison> = compared
+        .iter()
+        .copied()
+        .filter(|comparison| (teff_k.0..teff_k.1).contains(&comparison.teff_k))
+        .collect();
     let of = |value: &dyn Fn(&Comparison) -> f64| mean_and_width(inside.iter().map(|c| value(c)));
     Region {
         teff_k,
@@ -131,7 +162,17 @@ fn region(teff_k: (f64, f64), compared: &[&Comparison]) -> Region {
         log_g: of(&|c| c.difference[1]),
         radial_velocity_km_s: of(&|c| c.difference[2]),
         pull_widths: [0, 1, 2].map(|i| of(&|c| c.pull(i)).1),
+        coverage: coverage(&inside),
     }
+}
+
+/// Shares of all parameters within 1 and 1.96 standard deviations of the truth.
+fn coverage(compared: &[&Comparison]) -> (f64, f64) {
+    let pulls: Vec<f64> =
+        compared.iter().flat_map(|comparison| [0, 1, 2].map(|i| comparison.pull(i).abs())).collect();
+    let within =
+        |limit: f64| pulls.iter().filter(|pull| **pull < limit).count() as f64 / pulls.len().max(1) as f64;
+    (within(1.0), within(1.96))
 }
 
 fn mean_and_width(values: impl Iterator<Item = f64>) -> (f64, f64) {
