@@ -3,13 +3,15 @@
 //! 1. Scan of a coarse subset of the grid's nodes at one velocity; the velocity is found first, by shifting
 //!    the best node's model. 2. Every distinct minimum of the scan, and at least one on each side
 //!    of the ridge where Balmer lines are strongest, is refined. 3. Pixels that the best solution cannot
-//!    explain one by one are set aside, and the refinement repeated. 4. The choice between the solutions
+//!    explain are set aside, the worst first; lines whose wavelengths disagree are aligned; then scan and
+//!    refinement are repeated without them. 4. The choice between the solutions
 //!    uses chi-square and, where the flux is calibrated, the slope of the continuum.
 
 use nalgebra::{Matrix3, Vector3};
 
 use super::errors::{Errors, compute_errors};
 use super::objective::{LARGEST_VELOCITY_KM_S, Objective, Seen};
+use super::outliers::set_worst_aside;
 use super::profile::{Bottom, profiled_covariance};
 use super::screening::screen;
 use super::settings::FitSettings;
@@ -44,11 +46,7 @@ const OFFSET_SIGMA: f64 = 4.0;
 const MOST_ALIGNMENTS: usize = 6;
 /// Largest change of an offset in one round, km/s.
 const LARGEST_ALIGNMENT_KM_S: f64 = 250.0;
-/// A pixel is set aside when it misses the best model by this many standard deviations, scaled by the
-/// scatter of all pixels.
-const OUTLIER_SIGMA: f64 = 5.0;
-/// At most this share of the pixels is set aside; more is a poor model, not bad pixels.
-const MOST_OUTLIERS: f64 = 0.03;
+const MOST_OUTLIER_ROUNDS: usize = 6;
 /// Tilt of the flux calibration and of unknown reddening between H-beta and H8 together, one standard
 /// deviation of the natural logarithm (E(B-V) = 0.05 reddens that range by 5 %; common practice).
 const TILT_SIGMA: f64 = 0.08;
@@ -108,16 +106,20 @@ impl<'g> Fitter<'g> {
         }
         let starts = self.scan(spectrum, &wanted, &mut objective);
         let mut solutions = self.refine_all(&mut objective, &starts)?;
+        // What bent the first fit is found before it can look like a wrong wavelength scale.
+        self.set_outliers_aside(&mut objective, solutions[0].vector())?;
         let largest_offset_km_s = self.align_windows(&mut objective, &solutions[0])?;
-        if largest_offset_km_s.is_some() {
+        if objective.set_aside() > 0 || largest_offset_km_s.is_some() {
+            // The other side of the ridge may have been lost to the same defects: it gets its starts again.
+            let mut starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
+            starts.extend(self.pick_starts(&self.scan_nodes(&objective), objective.velocity_km_s()));
+            solutions = self.refine_all(&mut objective, &starts)?;
+            objective.take_all_pixels();
+            self.set_outliers_aside(&mut objective, solutions[0].vector())?;
             let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
             solutions = self.refine_all(&mut objective, &starts)?;
         }
-        let rejected = self.set_outliers_aside(&mut objective, &solutions);
-        if rejected > 0 {
-            let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
-            solutions = self.refine_all(&mut objective, &starts)?;
-        }
+        let rejected = objective.set_aside();
         self.choose(&mut solutions, &mut objective, spectrum.is_flux_calibrated())?;
         self.profile_near_ridge(&mut solutions, &mut objective)?;
         objective.set_velocity(solutions[0].radial_velocity_km_s);
@@ -358,33 +360,18 @@ impl<'g> Fitter<'g> {
         Ok(largest)
     }
 
-    /// Gives the worst isolated pixels no weight; returns their number.
-    fn set_outliers_aside(&self, objective: &mut Objective<'g>, solutions: &[Solution]) -> usize {
-        let Some(best) = solutions.first() else { return 0 };
-        objective.set_velocity(best.radial_velocity_km_s);
-        let Ok(views) = objective.view(&best.vector()) else { return 0 };
-        let mut sizes: Vec<f64> =
-            views.iter().flat_map(|seen| seen.residual.iter().map(|residual| residual.abs())).collect();
-        if sizes.is_empty() {
-            return 0;
-        }
-        let middle = sizes.len() / 2;
-        let median = *sizes.select_nth_unstable_by(middle, f64::total_cmp).1;
-        // Median of |x| of a unit Gaussian.
-        let limit = OUTLIER_SIGMA * (median / 0.674_49).max(1.0);
-        let outliers: usize =
-            views.iter().map(|seen| seen.residual.iter().filter(|r| r.abs() > limit).count()).sum();
-        if outliers == 0 || outliers as f64 > MOST_OUTLIERS * sizes.len() as f64 {
-            return 0;
-        }
-        for (data, seen) in objective.windows.iter_mut().zip(&views) {
-            for (weight, residual) in data.inverse_sigma.iter_mut().zip(&seen.residual) {
-                if residual.abs() > limit {
-                    *weight = 0.0;
-                }
+    /// Sets outliers aside round by round, refining in between, from a start.
+    fn set_outliers_aside(&self, objective: &mut Objective<'g>, start: Vector3<f64>) -> Result<(), FitFault> {
+        let mut at = start;
+        for _ in 0..MOST_OUTLIER_ROUNDS {
+            objective.set_velocity(at[2]);
+            let views = objective.view(&at).map_err(FitFault::Model)?;
+            if set_worst_aside(objective, &views) == 0 {
+                break;
             }
+            at = self.refine(objective, at)?.vector();
         }
-        outliers
+        Ok(())
     }
 
     /// Orders the solutions by probability.

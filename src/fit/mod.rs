@@ -8,6 +8,7 @@ mod fitter;
 mod foreign_lines;
 pub mod line_spread;
 mod objective;
+mod outliers;
 mod profile;
 mod screening;
 mod settings;

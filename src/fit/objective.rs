@@ -40,6 +40,8 @@ pub struct WindowData {
     pub flux: Vec<f64>,
     /// 1 / standard deviation; 0 for pixels that were set aside by the fit.
     pub inverse_sigma: Vec<f64>,
+    /// 1 / standard deviation as the spectrum gives it.
+    given_inverse_sigma: Vec<f64>,
     /// Pixels that the spectrum's mask took away.
     pub masked: usize,
     /// Wavelength error of this window against the others, as a velocity, km/s.
@@ -139,6 +141,18 @@ impl<'g> Objective<'g> {
     pub fn counts(&self) -> (usize, usize) {
         let used = |data: &WindowData| data.inverse_sigma.iter().filter(|weight| **weight > 0.0).count();
         (self.windows.iter().map(used).sum(), self.windows.iter().map(|data| data.window.coefficients).sum())
+    }
+
+    /// Gives all pixels that were set aside their weight back.
+    pub fn take_all_pixels(&mut self) {
+        for data in &mut self.windows {
+            data.inverse_sigma.clone_from(&data.given_inverse_sigma);
+        }
+    }
+
+    /// Number of pixels that were set aside.
+    pub fn set_aside(&self) -> usize {
+        self.windows.iter().flat_map(|data| &data.inverse_sigma).filter(|weight| **weight == 0.0).count()
     }
 
     /// Chi-square of a model without lines: what the polynomials alone can do.
@@ -277,6 +291,7 @@ impl WindowData {
             pixels: Vec::new(),
             flux: Vec::new(),
             inverse_sigma: Vec::new(),
+            given_inverse_sigma: Vec::new(),
             masked: 0,
             offset_km_s: 0.0,
             position: Vec::new(),
@@ -300,6 +315,7 @@ impl WindowData {
             data.inverse_sigma.push(1.0 / sigma);
             data.position.push(2.0 * (waves[i] - blue) / (red - blue) - 1.0);
         }
+        data.given_inverse_sigma.clone_from(&data.inverse_sigma);
         let (first, last) = (*data.pixels.first()?, *data.pixels.last()?);
         let covered = (last.wave_vac_aa - first.wave_vac_aa) / (red - blue);
         if data.pixels.len() < FEWEST_PIXELS || covered < LEAST_COVERAGE {

@@ -3,14 +3,14 @@
 
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
-use rand_distr::{Distribution, Normal};
+use rand_distr::{Distribution, Normal, Poisson};
 
 use crate::fit::line_spread::{LineSpread, Pixel, model_range};
 use crate::grid::FluxGrid;
 use crate::physics::constants::LIGHT_SPEED_CM_S;
 use crate::physics::hydrogen::Line;
 use crate::physics::planck::planck_per_hz;
-use crate::spectrum::{Resolution, Spectrum, SpectrumFault};
+use crate::spectrum::{FWHM_PER_SIGMA, Resolution, Spectrum, SpectrumFault};
 
 /// Share of the objects that are not DA white dwarfs.
 const CONTAMINANTS: f64 = 0.02;
@@ -33,6 +33,26 @@ const LOG_G_LIMITS: (f64, f64) = (7.2, 9.3);
 const VELOCITY_KM_S: f64 = 60.0;
 /// Wavelength at which the signal-to-noise ratio is meant, A.
 const SNR_WAVE_AA: f64 = 4600.0;
+
+/// Share of the spectra without flux calibration, and the slope that the spectrograph's response then has
+/// over the whole range, one standard deviation of the natural logarithm.
+const UNCALIBRATED: f64 = 0.2;
+const RESPONSE_SLOPE: f64 = 0.5;
+/// Slope and bend that flux calibration leaves over the whole range, one standard deviation of the natural
+/// logarithm (common practice: 5 %).
+const CALIBRATION_ERROR: f64 = 0.05;
+/// Mean colour excess E(B-V) along the invented lines of sight, and the change of ln flux from the red to the
+/// blue end of the range per magnitude of it (about 1.3 mag of A per 1 000 A there; common practice).
+const MEAN_COLOUR_EXCESS: f64 = 0.02;
+const EXTINCTION_SLOPE: f64 = 1.3;
+/// Mean number of cosmic rays that the reduction overlooked, and how far they rise, standard deviations.
+const COSMIC_RAYS: f64 = 1.0;
+const COSMIC_RAY_SIGMA: (f64, f64) = (8.0, 80.0);
+/// Share of the spectra with residuals of the sky's mercury lines, their vacuum wavelengths (A; NIST Atomic
+/// Spectra Database), and their height, one standard deviation in units of the noise.
+const SKY_RESIDUALS: f64 = 0.1;
+const SKY_LINES_AA: [f64; 2] = [4047.70, 4359.56];
+const SKY_SIGMA: f64 = 4.0;
 
 /// What an object is.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -88,17 +108,60 @@ pub fn observe(grid: &FluxGrid, seed: u64, number: u64) -> Result<Sighting, Spec
         }
         other => see_contaminant(other, &pixels, log_even(&mut random, (8000.0, 25_000.0))),
     };
+    let is_flux_calibrated = random.random::<f64>() >= UNCALIBRATED;
+    let clean = respond(&clean, is_flux_calibrated, &mut random);
     let at = pixels.partition_point(|pixel| pixel.wave_vac_aa < SNR_WAVE_AA);
     // Photon noise: the variance follows the flux.
     let reference = clean[at];
     let sigma: Vec<f64> =
         clean.iter().map(|flux| reference / snr * (flux.max(0.0) / reference).sqrt().max(0.05)).collect();
-    let flux =
+    let mut flux: Vec<f64> =
         clean.iter().zip(&sigma).map(|(flux, sigma)| flux + sigma * unit_normal(&mut random)).collect();
+    spoil(&mut flux, &sigma, &pixels, &mut random);
     let waves: Vec<f64> = pixels.iter().map(|pixel| pixel.wave_vac_aa).collect();
     let good = vec![true; waves.len()];
-    let spectrum = Spectrum::new(waves, flux, sigma, good, Resolution::FwhmAa(fwhm_aa), true)?;
+    let spectrum = Spectrum::new(waves, flux, sigma, good, Resolution::FwhmAa(fwhm_aa), is_flux_calibrated)?;
     Ok(Sighting { name: format!("KF {seed:04}-{number:05}"), truth, fwhm_aa, snr, spectrum })
+}
+
+/// Reddening and the spectrograph's response: smooth factors over the whole range.
+fn respond(clean: &[f64], is_flux_calibrated: bool, random: &mut ChaCha8Rng) -> Vec<f64> {
+    let excess = -MEAN_COLOUR_EXCESS * (1.0 - random.random::<f64>()).ln();
+    let width = if is_flux_calibrated { CALIBRATION_ERROR } else { RESPONSE_SLOPE };
+    let slope = width * unit_normal(random) + EXTINCTION_SLOPE * excess;
+    let bend = CALIBRATION_ERROR * unit_normal(random);
+    let last = (clean.len() - 1) as f64;
+    clean
+        .iter()
+        .enumerate()
+        .map(|(i, flux)| {
+            let x = i as f64 / last - 0.5;
+            flux * (slope * x + 4.0 * bend * x * x).exp()
+        })
+        .collect()
+}
+
+/// Cosmic rays and sky residuals, which the errors know nothing of.
+fn spoil(flux: &mut [f64], sigma: &[f64], pixels: &[Pixel], random: &mut ChaCha8Rng) {
+    let rays = Poisson::new(COSMIC_RAYS).map_or(0.0, |poisson| poisson.sample(random)) as usize;
+    for _ in 0..rays {
+        let at = random.random_range(0..flux.len());
+        let height = log_even(random, COSMIC_RAY_SIGMA);
+        flux[at] += height * sigma[at];
+        if let Some(next) = flux.get_mut(at + 1) {
+            *next += 0.3 * height * sigma[at];
+        }
+    }
+    if random.random::<f64>() >= SKY_RESIDUALS {
+        return;
+    }
+    for line_aa in SKY_LINES_AA {
+        let height = SKY_SIGMA * unit_normal(random);
+        for (i, pixel) in pixels.iter().enumerate() {
+            let x = (pixel.wave_vac_aa - line_aa) / (pixel.fwhm_aa / FWHM_PER_SIGMA);
+            flux[i] += height * sigma[i] * (-0.5 * x * x).exp();
+        }
+    }
 }
 
 /// The truth of a night as comma-separated values, one line per object; parameters only of DA white dwarfs.
