@@ -8,7 +8,7 @@ use super::windows::{WINDOWS, Window};
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 #[serde(default, deny_unknown_fields)]
 pub struct FitSettings {
-    /// Lines to fit, by name (`H-alpha`, `H-beta`, ... `H8`).
+    /// Lines to fit, by name (`H-alpha`, `H-beta`, ... `H8`, `H9`).
     #[serde(with = "names")]
     pub lines: Vec<Window>,
     /// Fewest lines that a spectrum must cover to be fitted at all.

@@ -19,14 +19,16 @@ pub struct Window {
 }
 
 /// All windows, redmost first. H-alpha is off by default: it forms highest, where departures from LTE
-/// begin, and many spectrographs cut it or mix it with sky.
-pub const WINDOWS: [Window; 6] = [
+/// begin, and many spectrographs cut it or mix it with sky. H9 is off by
+/// default: it says little that H8 does not, and it is where flux calibrations end.
+pub const WINDOWS: [Window; 7] = [
     Window { name: "H-alpha", upper: 3, range_vac_aa: (6414.0, 6714.0), coefficients: 3, is_default: false },
     Window { name: "H-beta", upper: 4, range_vac_aa: (4712.0, 5013.0), coefficients: 3, is_default: true },
     Window { name: "H-gamma", upper: 5, range_vac_aa: (4222.0, 4462.0), coefficients: 3, is_default: true },
     Window { name: "H-delta", upper: 6, range_vac_aa: (4020.0, 4186.0), coefficients: 2, is_default: true },
     Window { name: "H-epsilon", upper: 7, range_vac_aa: (3926.0, 4018.0), coefficients: 2, is_default: true },
     Window { name: "H8", upper: 8, range_vac_aa: (3862.0, 3924.0), coefficients: 2, is_default: true },
+    Window { name: "H9", upper: 9, range_vac_aa: (3818.0, 3861.0), coefficients: 2, is_default: false },
 ];
 
 impl Window {

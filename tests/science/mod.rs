@@ -3,5 +3,6 @@
 mod atmospheres;
 mod grid_file;
 mod models;
+mod not_da;
 mod recovery;
 mod standards;
