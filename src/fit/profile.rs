@@ -4,7 +4,8 @@
 //! one with a flat floor; the curvature at its bottom then promises too much. So chi-square is followed
 //! along temperature, gravity and velocity fitted anew at each step, and the covariance is taken from
 //! exp(-chi2 / 2) along that path (law of total covariance: the path's own spread, and that of gravity and
-//! velocity about it). Steps of one curvature sigma: the trapezoidal rule is exact to 1e-8 for a Gaussian.
+//! velocity about it). Steps of one curvature sigma at most: the
+//! trapezoidal rule is exact to 1e-8 for a Gaussian.
 //! `rehearse` measures the pulls; before this their width in Teff was 1.12 from 11 500 to 15 500 K.
 
 use argmin::core::Error;
@@ -15,7 +16,9 @@ use crate::numerics::least_squares::{Bounds, minimise};
 
 /// Chi-square above the minimum, in units of the inflation, beyond which nothing is left: exp(-6) = 0.2 %.
 const FAR: f64 = 12.0;
-const MOST_STEPS: usize = 10;
+const MOST_STEPS: usize = 20;
+/// Longest step, relative: on the ridge itself the curvature vanishes and its sigma is no scale.
+const LONGEST_STEP: f64 = 0.03;
 const MOST_ITERATIONS: u64 = 8;
 
 /// A minimum, as the curvature there describes it.
@@ -41,7 +44,7 @@ pub fn profiled_covariance(
     bounds: &Bounds<3>,
     range_k: (f64, f64),
 ) -> Result<Matrix3<f64>, Error> {
-    let step_k = bottom.covariance[(0, 0)].sqrt();
+    let step_k = bottom.covariance[(0, 0)].sqrt().min(LONGEST_STEP * bottom.at[0]);
     let mut total = 1.0;
     let mut sum = spread_about_path(&bottom.covariance);
     for direction in [-1.0, 1.0] {

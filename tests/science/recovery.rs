@@ -3,7 +3,7 @@
 use std::sync::OnceLock;
 
 use emberline::fit::line_spread::{LineSpread, Pixel, model_range};
-use emberline::fit::{Branch, Fit, FitSettings, Fitter};
+use emberline::fit::{Branch, Fit, FitSettings, Fitter, Solution};
 use emberline::grid::FluxGrid;
 use emberline::spectrum::{Resolution, Spectrum};
 use rand::SeedableRng;
@@ -109,6 +109,36 @@ fn verify_errors_are_honest() {
             (within(1.0) - 0.683).abs() < 0.09 && (within(2.0) - 0.954).abs() < 0.045,
             "{name}: coverage"
         );
+    }
+}
+
+/// Close to the ridge, where chi-square is no parabola: the chosen solution's error covers the truth as often
+/// as it says, unless the choice is flagged as weak; then one of the solutions covers it. True temperatures are
+/// spread over the ridge, because the estimate of a flat-floored minimum is drawn to its middle and covers the
+/// truth only on average over it. On the toy grid both sides of the ridge have the same lines, so that many
+/// choices must be weak. Limits: three standard errors.
+#[test]
+fn verify_errors_cover_the_truth_near_the_ridge() {
+    let log_g = 8.1;
+    let (mut clear, mut weak) = (Vec::new(), Vec::new());
+    for seed in 0..300_u64 {
+        // Evenly over the logarithm (golden-ratio sequence).
+        let teff_k = 9500.0 * (18_000.0_f64 / 9500.0).powf((seed as f64 * 0.618_034).fract());
+        let fit = fitter().fit(&noisy(&clean(teff_k, log_g, 0.0), 30.0, 1000 + seed, true)).unwrap();
+        let pull = |solution: &Solution| ((solution.teff_k - teff_k) / solution.sigma(0)).abs();
+        if codes(&fit).contains(&"fit.weak-choice") {
+            weak.push(fit.solutions.iter().map(pull).fold(f64::INFINITY, f64::min));
+        } else {
+            clear.push(pull(fit.chosen()));
+        }
+    }
+    for (name, pulls) in [("clear", clear), ("weak", weak)] {
+        let count = pulls.len() as f64;
+        let within = |limit: f64| pulls.iter().filter(|pull| **pull < limit).count() as f64 / count;
+        println!("{name}: {count} fits, {:.3} within 1 sigma, {:.3} within 1.96", within(1.0), within(1.96));
+        let limit = |share: f64| share - 3.0 * (share * (1.0 - share) / count).sqrt();
+        assert!(count > 20.0, "{name}: {count} fits");
+        assert!(within(1.0) > limit(0.683) && within(1.96) > limit(0.95), "{name}: truth not covered");
     }
 }
 
