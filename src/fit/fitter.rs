@@ -33,8 +33,6 @@ const MOST_VELOCITY_ROUNDS: usize = 6;
 const MOST_ITERATIONS: u64 = 60;
 /// Most minima that are refined.
 const MOST_MINIMA: usize = 4;
-/// Solutions closer than this are one: relative in Teff, absolute in log g.
-const SAME_SOLUTION: (f64, f64) = (0.01, 0.05);
 /// Solutions this many standard deviations of Teff from the ridge, or nearer, have their errors from a
 /// profile, unless their Teff differs from it by more than this factor.
 const RIDGE_SIGMA: f64 = 8.0;
@@ -105,15 +103,18 @@ impl<'g> Fitter<'g> {
             });
         }
         let starts = self.scan(spectrum, &wanted, &mut objective);
-        let mut solutions = self.refine_all(&mut objective, &starts)?;
-        // What bent the first fit is found before it can look like a wrong wavelength scale.
-        self.set_outliers_aside(&mut objective, solutions[0].vector())?;
-        let largest_offset_km_s = self.align_windows(&mut objective, &solutions[0])?;
+        let first = self.refine(&mut objective, starts[0])?;
+        // What bends the fit is found before it can look like a wrong wavelength scale.
+        self.set_outliers_aside(&mut objective, first.vector())?;
+        let largest_offset_km_s = self.align_windows(&mut objective, &first)?;
+        let mut starts = starts;
         if objective.set_aside() > 0 || largest_offset_km_s.is_some() {
             // The other side of the ridge may have been lost to the same defects: it gets its starts again.
-            let mut starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
-            starts.extend(self.pick_starts(&self.scan_nodes(&objective), objective.velocity_km_s()));
-            solutions = self.refine_all(&mut objective, &starts)?;
+            starts = self.pick_starts(&self.scan_nodes(&objective), objective.velocity_km_s());
+        }
+        starts.push(first.vector());
+        let mut solutions = self.refine_all(&mut objective, &starts)?;
+        if !first.is_same(&solutions[0]) && objective.set_aside() > 0 {
             objective.take_all_pixels();
             self.set_outliers_aside(&mut objective, solutions[0].vector())?;
             let starts: Vec<_> = solutions.iter().map(Solution::vector).collect();
@@ -226,10 +227,7 @@ impl<'g> Fitter<'g> {
         let mut solutions: Vec<Solution> = Vec::new();
         for start in starts {
             let solution = self.refine(objective, *start)?;
-            let is_known = solutions.iter().any(|known| {
-                (known.teff_k / solution.teff_k - 1.0).abs() < SAME_SOLUTION.0
-                    && (known.log_g - solution.log_g).abs() < SAME_SOLUTION.1
-            });
+            let is_known = solutions.iter().any(|known| known.is_same(&solution));
             if !is_known {
                 solutions.push(solution);
             }

@@ -6,6 +6,9 @@ use super::fitter::equivalent_width_aa;
 use super::objective::{Seen, WindowData};
 use crate::codes::{self, Code, Flag};
 
+/// Solutions closer than this are one: relative in Teff, absolute in log g.
+const SAME_SOLUTION: (f64, f64) = (0.01, 0.05);
+
 /// Side of the ridge where Balmer lines are strongest.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Branch {
@@ -60,6 +63,12 @@ impl Solution {
     /// (Teff, log g, velocity).
     pub fn vector(&self) -> Vector3<f64> {
         Vector3::new(self.teff_k, self.log_g, self.radial_velocity_km_s)
+    }
+
+    /// Whether both are one minimum.
+    pub fn is_same(&self, other: &Solution) -> bool {
+        (self.teff_k / other.teff_k - 1.0).abs() < SAME_SOLUTION.0
+            && (self.log_g - other.log_g).abs() < SAME_SOLUTION.1
     }
 
     /// Standard deviation of parameter 0, 1 or 2.
