@@ -104,7 +104,6 @@ impl Equilibria {
 struct Densities {
     protons: f64,
     neutrals: f64,
-    ground: f64,
     h_minus: f64,
     h2: f64,
     h2_plus: f64,
@@ -118,14 +117,12 @@ impl Densities {
         // stays exact when H2+ vanishes.
         let quadratic = ground_per_proton * equilibria.h2_plus_cm3;
         let linear = 1.0 - ground_per_proton * equilibria.h_minus_cm3 * electrons;
-        let protons =
-            2.0 * electrons / (linear + (linear * linear + 4.0 * quadratic * electrons).sqrt());
+        let protons = 2.0 * electrons / (linear + (linear * linear + 4.0 * quadratic * electrons).sqrt());
         let neutrals = protons * electrons * neutral_per_pair;
         let ground = neutrals * ground_fraction;
         Densities {
             protons,
             neutrals,
-            ground,
             h_minus: ground * electrons * equilibria.h_minus_cm3,
             h2: ground * ground * equilibria.h2_cm3,
             h2_plus: ground * protons * equilibria.h2_plus_cm3,
@@ -180,8 +177,7 @@ impl State {
             }
         }
         let ground_fraction = boltzmann[0] * occupation[0] / partition;
-        let densities =
-            Densities::at(electrons, ionisation_factor * partition, ground_fraction, &equilibria);
+        let densities = Densities::at(electrons, ionisation_factor * partition, ground_fraction, &equilibria);
         let levels_per_cm3: [f64; LEVELS] = std::array::from_fn(|index| {
             densities.neutrals * boltzmann[index] * occupation[index] / partition
         });
@@ -197,9 +193,7 @@ impl State {
                 population * IONISATION_ERG * (1.0 - 1.0 / ((index + 1) as f64).powi(2))
             })
             .sum();
-        let energy_per_cm3 = 1.5 * pressure_cgs
-            + excitation
-            + IONISATION_ERG * densities.protons
+        let energy_per_cm3 = 1.5 * pressure_cgs + excitation + IONISATION_ERG * densities.protons
             - H_MINUS_BINDING_ERG * densities.h_minus
             + equilibria.h2_binding_erg * densities.h2
             + (IONISATION_ERG + equilibria.h2_plus_binding_erg) * densities.h2_plus;
@@ -276,8 +270,8 @@ impl Thermodynamics {
         let above = State::new(temperature_k * step.exp(), pressure_cgs);
         let below = State::new(temperature_k * (-step).exp(), pressure_cgs);
         let density = (above.density_g_cm3 * below.density_g_cm3).sqrt();
-        let heat_capacity_erg_g_k = (above.enthalpy_erg_g() - below.enthalpy_erg_g())
-            / (above.temperature_k - below.temperature_k);
+        let heat_capacity_erg_g_k =
+            (above.enthalpy_erg_g() - below.enthalpy_erg_g()) / (above.temperature_k - below.temperature_k);
         let expansion = -(above.density_g_cm3 / below.density_g_cm3).ln() / (2.0 * step);
         Thermodynamics {
             heat_capacity_erg_g_k,

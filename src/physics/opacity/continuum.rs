@@ -4,7 +4,7 @@
 //! multiplications per frequency.
 
 use super::bound_free::{cross_section_cm2, dissolved_fraction};
-use super::free_free::free_free_cm5;
+use super::free_free::FreeFree;
 use super::h_minus;
 use super::h2_plus::H2Plus;
 use super::scattering::{rayleigh_h_cm2, rayleigh_h2_cm2};
@@ -43,25 +43,23 @@ impl Continuum {
         let electron_pressure_cgs = state.electrons_per_cm3 * BOLTZMANN_ERG_K * state.temperature_k;
         let thomson_per_cm = state.electrons_per_cm3 * THOMSON_CM2;
         let ground = state.levels_per_cm3[0];
+        let free_free = FreeFree::new(state.temperature_k);
         let outputs = absorption_per_cm.iter_mut().zip(scattering_per_cm);
         for (point, (absorption, scattering)) in self.points.iter().zip(outputs) {
-            let emission = 1.0
-                - (-PLANCK_OVER_BOLTZMANN_K_S * point.frequency_hz / state.temperature_k).exp();
+            let emission =
+                1.0 - (-PLANCK_OVER_BOLTZMANN_K_S * point.frequency_hz / state.temperature_k).exp();
             let mut stimulated = point.bound_free_per_cm(state)
                 + state.electrons_per_cm3
                     * state.protons_per_cm3
-                    * free_free_cm5(point.frequency_hz, state.temperature_k)
+                    * free_free.cm5(point.frequency_hz)
                 + state.h_minus_per_cm3 * point.h_minus_cm2;
             if let Some(h2_plus) = point.h2_plus {
                 stimulated += ground * state.protons_per_cm3 * h2_plus.cm5(state.temperature_k);
             }
             *absorption = stimulated * emission
-                + ground
-                    * electron_pressure_cgs
-                    * point.h_minus_free_free.cm4_per_dyn(state.temperature_k);
-            *scattering = thomson_per_cm
-                + ground * point.rayleigh_h_cm2
-                + state.h2_per_cm3 * point.rayleigh_h2_cm2;
+                + ground * electron_pressure_cgs * point.h_minus_free_free.cm4_per_dyn(state.temperature_k);
+            *scattering =
+                thomson_per_cm + ground * point.rayleigh_h_cm2 + state.h2_per_cm3 * point.rayleigh_h2_cm2;
         }
     }
 }

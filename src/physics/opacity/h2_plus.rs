@@ -21,9 +21,13 @@ impl H2Plus {
         }
         let log_frequency = frequency_hz.ln();
         let units = frequency_hz / 1e15;
-        let polynomial = |coefficients: &[f64], x: f64| coefficients.iter().rev().fold(0.0, |sum, c| sum * x + c);
+        let polynomial =
+            |coefficients: &[f64], x: f64| coefficients.iter().rev().fold(0.0, |sum, c| sum * x + c);
         Some(H2Plus {
-            log_strength: polynomial(&[-3.0233e3, 3.7797e2, -1.82496e1, 3.9207e-1, -3.1672e-3], log_frequency),
+            log_strength: polynomial(
+                &[-3.0233e3, 3.7797e2, -1.82496e1, 3.9207e-1, -3.1672e-3],
+                log_frequency,
+            ),
             energy_ev: polynomial(&[-7.342e-3, -2.409, 1.028, -0.4230, 0.1224, -1.351e-2], units),
         })
     }
