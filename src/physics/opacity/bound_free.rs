@@ -1,7 +1,7 @@
 //! Photoionisation of hydrogen, and the pseudo-continuum of dissolved levels.
 
 use crate::physics::constants::{BOHR_RADIUS_CM, LIGHT_SPEED_CM_S, RYDBERG_H_PER_CM};
-use crate::physics::occupation::Surroundings;
+use crate::physics::occupation::{LEAST_OCCUPATION, LevelShape, Surroundings};
 use crate::physics::state::LEVELS;
 
 /// Ionisation frequency of the ground state, Hz.
@@ -76,33 +76,41 @@ fn asymptotic_gaunt(n: f64, u: f64) -> f64 {
     1.0 + 0.1728 * scale * (u - 1.0) - 0.0496 * scale * scale * (u * u + 4.0 * u / 3.0 + 1.0)
 }
 
-/// Fraction of transitions from a level that end in dissolved states, for photons between the
-/// series' first line and its limit; 1 above the limit, 0 below the first line.
-///
-/// The first line is where the pseudo-continuum ends: there is no bound level below its upper one
-/// that could be dissolved, and running the formula on would give the Lyman series an unphysical
-/// opacity in the optical.
-///
-/// # Reference
-/// Dappen, Anderson & Mihalas 1987, ApJ 319, 195: D = 1 - w(n*) / w(n).
-pub fn dissolved_fraction(
-    level: usize,
-    frequency_hz: f64,
-    occupation: &[f64; LEVELS],
-    surroundings: &Surroundings,
-) -> f64 {
-    let n = level as f64;
-    let inverse_square = 1.0 / (n * n) - frequency_hz / LYMAN_LIMIT_HZ;
-    if inverse_square <= 0.0 {
-        return 1.0;
+/// Transitions from a level below its series limit that may end in dissolved states.
+#[derive(Debug, Clone, Copy)]
+pub struct Dissolution {
+    /// Lower level, 1-based.
+    pub level: usize,
+    upper: LevelShape,
+}
+
+impl Dissolution {
+    /// `None` beyond the series limit, where all transitions are to the continuum, and to the red
+    /// of the series' first line.
+    ///
+    /// The first line is where the pseudo-continuum ends: there is no bound level below its upper
+    /// one that could be dissolved, and running the formula on would give the Lyman series an
+    /// unphysical opacity in the optical.
+    pub fn at(level: usize, frequency_hz: f64) -> Option<Self> {
+        let n = level as f64;
+        let inverse_square = 1.0 / (n * n) - frequency_hz / LYMAN_LIMIT_HZ;
+        if inverse_square <= 0.0 {
+            return None;
+        }
+        let effective_level = 1.0 / inverse_square.sqrt();
+        (effective_level > n + 1.0).then(|| Dissolution { level, upper: LevelShape::new(effective_level) })
     }
-    let effective_level = 1.0 / inverse_square.sqrt();
-    if effective_level <= n + 1.0 {
-        return 0.0;
+
+    /// Fraction of the transitions that end in dissolved states.
+    ///
+    /// # Reference
+    /// Dappen, Anderson & Mihalas 1987, ApJ 319, 195: D = 1 - w(n*) / w(n).
+    pub fn fraction(&self, occupation: &[f64; LEVELS], surroundings: &Surroundings) -> f64 {
+        let survival = occupation[self.level - 1];
+        // A level that is itself gone has no atoms to absorb.
+        if survival <= LEAST_OCCUPATION {
+            return 1.0;
+        }
+        (1.0 - surroundings.occupation_of(&self.upper) / survival).clamp(0.0, 1.0)
     }
-    // A level that is itself gone has no atoms to absorb.
-    if occupation[level - 1] < f64::MIN_POSITIVE {
-        return 1.0;
-    }
-    (1.0 - surroundings.occupation(effective_level) / occupation[level - 1]).clamp(0.0, 1.0)
 }

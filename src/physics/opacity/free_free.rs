@@ -21,36 +21,47 @@ const PHOTONS: usize = GAUNT[0].len();
 #[derive(Debug, Clone)]
 pub struct FreeFree {
     coefficient_cgs: f64,
-    photon_per_hz: f64,
+    /// log10 of h / kT, so that frequencies may come as logarithms.
+    log_photon_per_hz: f64,
     gaunt: [f64; PHOTONS],
 }
 
 impl FreeFree {
     /// Prepares a temperature, K.
     pub fn new(temperature_k: f64) -> Self {
-        let photon_per_hz = PLANCK_OVER_BOLTZMANN_K_S / temperature_k;
-        let log_gamma2 = (LYMAN_LIMIT_HZ * photon_per_hz).log10();
+        let log_photon_per_hz = (PLANCK_OVER_BOLTZMANN_K_S / temperature_k).log10();
+        let log_gamma2 = LYMAN_LIMIT_HZ.log10() + log_photon_per_hz;
         let (row, weights) = catmull_rom(log_gamma2, FIRST_LOG_GAMMA2, GAUNT.len());
         FreeFree {
             coefficient_cgs: KRAMERS_FREE_FREE_CGS / temperature_k.sqrt(),
-            photon_per_hz,
+            log_photon_per_hz,
             gaunt: std::array::from_fn(|photon| {
                 weights.iter().enumerate().map(|(i, weight)| weight * GAUNT[row + i][photon]).sum()
             }),
         }
     }
 
-    /// Thermally averaged Gaunt factor.
-    pub fn gaunt_factor(&self, frequency_hz: f64) -> f64 {
-        let log_photon = (self.photon_per_hz * frequency_hz).log10();
-        let (first, weights) = catmull_rom(log_photon, FIRST_LOG_PHOTON, PHOTONS);
+    /// Thermally averaged Gaunt factor at a frequency given as log10 of Hz.
+    pub fn gaunt_factor(&self, log_frequency: f64) -> f64 {
+        let (first, weights) = catmull_rom(self.log_photon_per_hz + log_frequency, FIRST_LOG_PHOTON, PHOTONS);
         weights.iter().zip(&self.gaunt[first..first + 4]).map(|(weight, value)| weight * value).sum()
     }
 
-    /// Absorption coefficient per electron and proton, cm^5, without stimulated emission.
-    pub fn cm5(&self, frequency_hz: f64) -> f64 {
-        self.coefficient_cgs / (frequency_hz * frequency_hz * frequency_hz) * self.gaunt_factor(frequency_hz)
+    /// Absorption coefficient per electron and proton, cm^5 Hz^3, to be divided by the cube of the
+    /// frequency; without stimulated emission.
+    pub fn cm5_hz3(&self, log_frequency: f64) -> f64 {
+        self.coefficient_cgs * self.gaunt_factor(log_frequency)
     }
+}
+
+/// Free-free absorption coefficient per electron and proton, cm^5, without stimulated emission.
+pub fn free_free_cm5(frequency_hz: f64, temperature_k: f64) -> f64 {
+    FreeFree::new(temperature_k).cm5_hz3(frequency_hz.log10()) / frequency_hz.powi(3)
+}
+
+/// Thermally averaged free-free Gaunt factor of hydrogen.
+pub fn gaunt_factor(frequency_hz: f64, temperature_k: f64) -> f64 {
+    FreeFree::new(temperature_k).gaunt_factor(frequency_hz.log10())
 }
 
 /// First of the four table points around a place, and their weights; clamped to the cells that
