@@ -5,6 +5,8 @@
 //! dissociation constant of H2 agrees with the JANAF tables to 3 % at 1 000 - 6 000 K
 //! (`validate_h2_dissociation_constant`).
 
+use std::sync::LazyLock;
+
 use super::constants::{BOLTZMANN_ERG_K, HYDROGEN_MASS_G, LIGHT_SPEED_CM_S, PLANCK_ERG_S};
 
 /// Second radiation constant, cm K: converts wavenumbers to temperatures.
@@ -50,6 +52,16 @@ const H2_PLUS: Diatomic = Diatomic {
     electronic_weight: 2.0,
 };
 
+/// A rotation-vibration level.
+struct Level {
+    weight: f64,
+    /// Energy above the lowest level, 1/cm.
+    energy: f64,
+}
+
+static H2_LEVELS: LazyLock<Vec<Level>> = LazyLock::new(|| H2.levels());
+static H2_PLUS_LEVELS: LazyLock<Vec<Level>> = LazyLock::new(|| H2_PLUS.levels());
+
 /// A molecule's equilibrium with its parts, and its mean internal energy.
 #[derive(Debug, Clone, Copy)]
 pub struct Equilibrium {
@@ -63,24 +75,25 @@ pub struct Equilibrium {
 
 /// H + H to H2; both atoms in the ground state (statistical weight 2 each).
 pub fn h2_equilibrium(temperature_k: f64) -> Equilibrium {
-    H2.equilibrium(temperature_k, 4.0)
+    equilibrium(temperature_k, &H2_LEVELS, H2.dissociation, 4.0)
 }
 
 /// H + H+ to H2+; the atom in the ground state (weight 2), the proton with weight 1.
 pub fn h2_plus_equilibrium(temperature_k: f64) -> Equilibrium {
-    H2_PLUS.equilibrium(temperature_k, 2.0)
+    equilibrium(temperature_k, &H2_PLUS_LEVELS, H2_PLUS.dissociation, 2.0)
 }
 
 impl Diatomic {
-    /// Partition function over ground-state-referenced levels (nuclear spin weights 1/4 and 3/4,
-    /// since the atoms' nuclear spin is left out too) and the mean internal energy in erg.
-    fn partition(&self, temperature_k: f64) -> (f64, f64) {
+    /// Levels below dissociation, with nuclear spin weights 1/4 and 3/4, since the atoms' nuclear
+    /// spin is left out too.
+    fn levels(&self) -> Vec<Level> {
         let vibrational = |v: f64| {
             let x = v + 0.5;
             x * (self.vibration - x * (self.anharmonicity - x * self.cubic_anharmonicity))
         };
         let zero_point = vibrational(0.0);
-        let (mut sum, mut energy_sum, mut previous) = (0.0, 0.0, -1.0);
+        let mut levels = Vec::new();
+        let mut previous = -1.0;
         for v in 0..40 {
             let v = f64::from(v);
             let base = vibrational(v) - zero_point;
@@ -96,32 +109,35 @@ impl Diatomic {
                 let jj = f64::from(j * (j + 1));
                 // Stretching as a quotient: B jj - D jj^2 + ..., which does not turn over at high J
                 // as the two terms alone do (that put 8 % too many levels in at 6 000 K).
-                let level = base + rotation * jj / (1.0 + self.stretching / rotation * jj);
-                if level > self.dissociation {
+                let energy = base + rotation * jj / (1.0 + self.stretching / rotation * jj);
+                if energy > self.dissociation {
                     break;
                 }
                 let spin_weight = if j % 2 == 0 { 0.25 } else { 0.75 };
-                let weight =
-                    spin_weight * f64::from(2 * j + 1) * (-WAVENUMBER_K * level / temperature_k).exp();
-                sum += weight;
-                energy_sum += weight * level;
+                let weight = self.electronic_weight * spin_weight * f64::from(2 * j + 1);
+                levels.push(Level { weight, energy });
             }
         }
-        let erg_per_wavenumber = PLANCK_ERG_S * LIGHT_SPEED_CM_S;
-        (self.electronic_weight * sum, energy_sum / sum * erg_per_wavenumber)
+        levels
     }
+}
 
-    /// Law of mass action; reduced mass of the parts is half a hydrogen atom's.
-    fn equilibrium(&self, temperature_k: f64, parts_weight: f64) -> Equilibrium {
-        let (partition, internal_energy_erg) = self.partition(temperature_k);
-        let reduced_mass_g = HYDROGEN_MASS_G / 2.0;
-        let thermal_wave2_cm2 = PLANCK_ERG_S.powi(2)
-            / (2.0 * std::f64::consts::PI * reduced_mass_g * BOLTZMANN_ERG_K * temperature_k);
-        let exponent = WAVENUMBER_K * self.dissociation / temperature_k;
-        Equilibrium {
-            association_cm3: thermal_wave2_cm2.powf(1.5) * partition / parts_weight * exponent.exp(),
-            internal_energy_erg,
-            dissociation_energy_erg: PLANCK_ERG_S * LIGHT_SPEED_CM_S * self.dissociation,
-        }
+/// Law of mass action; reduced mass of the parts is half a hydrogen atom's.
+fn equilibrium(temperature_k: f64, levels: &[Level], dissociation: f64, parts_weight: f64) -> Equilibrium {
+    let (mut partition, mut energy_sum) = (0.0, 0.0);
+    for level in levels {
+        let population = level.weight * (-WAVENUMBER_K * level.energy / temperature_k).exp();
+        partition += population;
+        energy_sum += population * level.energy;
+    }
+    let reduced_mass_g = HYDROGEN_MASS_G / 2.0;
+    let thermal_wave2_cm2 = PLANCK_ERG_S.powi(2)
+        / (2.0 * std::f64::consts::PI * reduced_mass_g * BOLTZMANN_ERG_K * temperature_k);
+    let erg_per_wavenumber = PLANCK_ERG_S * LIGHT_SPEED_CM_S;
+    Equilibrium {
+        association_cm3: thermal_wave2_cm2.powf(1.5) * partition / parts_weight
+            * (WAVENUMBER_K * dissociation / temperature_k).exp(),
+        internal_energy_erg: energy_sum / partition * erg_per_wavenumber,
+        dissociation_energy_erg: dissociation * erg_per_wavenumber,
     }
 }

@@ -30,10 +30,6 @@ pub const IONISATION_ERG: f64 = PLANCK_ERG_S * LIGHT_SPEED_CM_S * RYDBERG_H_PER_
 /// Electron affinity of hydrogen, erg: 0.754195 eV (Lykke, Murray & Lineberger 1991, PRA 43, 6104).
 const H_MINUS_BINDING_ERG: f64 = 0.754_195 * ELECTRON_VOLT_ERG;
 
-/// Above this temperature molecules are left out: their fraction is below 1e-12 in any
-/// white-dwarf photosphere.
-const HOTTEST_MOLECULES_K: f64 = 25_000.0;
-
 /// Bound on the iteration between densities and occupation probabilities.
 const MOST_ITERATIONS: usize = 200;
 
@@ -89,25 +85,20 @@ impl Equilibria {
         let thermal_volume_cm3 = (PLANCK_ERG_S.powi(2)
             / (2.0 * std::f64::consts::PI * ELECTRON_MASS_G * thermal_energy_erg))
             .powf(1.5);
-        let mut equilibria = Equilibria {
+        // At every temperature: left out above some limit, H2+ would end in a step (0.2 % of the
+        // density at 25 000 K and 1e9 dyn cm^-2).
+        let h2 = h2_equilibrium(temperature_k);
+        let h2_plus = h2_plus_equilibrium(temperature_k);
+        Equilibria {
             thermal_energy_erg,
             thermal_volume_cm3,
             // Weights: H- has 1, the atom and the electron have 2 each.
             h_minus_cm3: thermal_volume_cm3 / 4.0 * (H_MINUS_BINDING_ERG / thermal_energy_erg).exp(),
-            h2_cm3: 0.0,
-            h2_plus_cm3: 0.0,
-            h2_binding_erg: 0.0,
-            h2_plus_binding_erg: 0.0,
-        };
-        if temperature_k < HOTTEST_MOLECULES_K {
-            let h2 = h2_equilibrium(temperature_k);
-            let h2_plus = h2_plus_equilibrium(temperature_k);
-            equilibria.h2_cm3 = h2.association_cm3;
-            equilibria.h2_plus_cm3 = h2_plus.association_cm3;
-            equilibria.h2_binding_erg = h2.internal_energy_erg - h2.dissociation_energy_erg;
-            equilibria.h2_plus_binding_erg = h2_plus.internal_energy_erg - h2_plus.dissociation_energy_erg;
+            h2_cm3: h2.association_cm3,
+            h2_plus_cm3: h2_plus.association_cm3,
+            h2_binding_erg: h2.internal_energy_erg - h2.dissociation_energy_erg,
+            h2_plus_binding_erg: h2_plus.internal_energy_erg - h2_plus.dissociation_energy_erg,
         }
-        equilibria
     }
 }
 
@@ -126,7 +117,7 @@ impl Densities {
     fn at(electrons: f64, neutral_per_pair: f64, ground_fraction: f64, equilibria: &Equilibria) -> Self {
         let ground_per_proton = electrons * neutral_per_pair * ground_fraction;
         // Charge: n_e + n(H-) = n_p + n(H2+), quadratic in n_p; each root is written so that nothing
-        // cancels. Without H2+ there is no root where H- would outnumber the protons: infinite.
+        // cancels.
         let quadratic = ground_per_proton * equilibria.h2_plus_cm3;
         let linear = 1.0 - ground_per_proton * equilibria.h_minus_cm3 * electrons;
         let root = (linear * linear + 4.0 * quadratic * electrons).sqrt();

@@ -31,7 +31,7 @@ const EXACT_POLYNOMIALS: [&[f64]; EXACT_LEVELS] = [
 /// threshold; below it, the smooth continuation as nu^-3 that the pseudo-continuum needs.
 ///
 /// # Domain
-/// Above n = 4 the error is below 0.08 % from the threshold to twice its frequency, 0.5 % at ten
+/// Above n = 4 the error is below 0.08 % from the threshold to three times it, 0.5 % at ten
 /// times and grows beyond, where lower levels absorb all that matters
 /// (`validate_bound_free_gaunt_factors`).
 ///
