@@ -8,7 +8,7 @@ use crate::physics::state::LEVELS;
 pub const LYMAN_LIMIT_HZ: f64 = LIGHT_SPEED_CM_S * RYDBERG_H_PER_CM;
 
 /// Fine-structure constant (CODATA 2018).
-const FINE_STRUCTURE: f64 = 7.297_352_5693e-3;
+const FINE_STRUCTURE: f64 = 7.297_352_569_3e-3;
 
 /// Kramers cross-section of level 1 at its threshold, cm^2: 64 pi alpha a0^2 / (3 sqrt 3).
 const KRAMERS_THRESHOLD_CM2: f64 =
