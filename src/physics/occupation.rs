@@ -15,6 +15,10 @@ use super::constants::BOHR_RADIUS_CM;
 /// 8 000 K and nothing above 12 000 K.
 pub const NEUTRAL_RADIUS_FACTOR: f64 = 0.5;
 
+/// Where occupation probabilities end, so that a partition function of levels that are all gone is
+/// still a number to divide by.
+pub const LEAST_OCCUPATION: f64 = 1e-100;
+
 /// Critical field of n = 1 in units of the Holtsmark field at unit density:
 /// 1 / (16 a0^2 * 2.603), from F_crit = k_n e / (16 a0^2 n^4) and F0 = 2.603 e n_e^(2/3).
 pub const CRITICAL_FIELD_SCALE: f64 = 8.57e14;
@@ -24,14 +28,38 @@ pub const CRITICAL_FIELD_SCALE: f64 = 8.57e14;
 /// # Reference
 /// Hubeny, Hummer & Lanz 1994: k_n = 1 up to n = 3 and (16/3) n/(n+1)^2 above.
 pub fn critical_beta(level: f64, electron_density_per_cm3: f64) -> f64 {
-    let quantum_factor = if level <= 3.0 { 1.0 } else { 16.0 / 3.0 * level / (level + 1.0).powi(2) };
-    CRITICAL_FIELD_SCALE * quantum_factor / (level.powi(4) * electron_density_per_cm3.powf(2.0 / 3.0))
+    CRITICAL_FIELD_SCALE * quantum_factor(level) / (level.powi(4) * electron_density_per_cm3.powf(2.0 / 3.0))
+}
+
+/// What decides the fate of a level, with its powers taken once.
+#[derive(Debug, Clone, Copy)]
+pub struct LevelShape {
+    /// Critical field relative to that of n = 1, to the power 3/2.
+    critical_three_halves: f64,
+    /// Cube of the level's radius plus that of the ground state, in units of n = 1's.
+    volume: f64,
+}
+
+impl LevelShape {
+    /// A level, real-valued where a dissolved one is meant.
+    pub fn new(level: f64) -> Self {
+        let squared = level * level;
+        LevelShape {
+            critical_three_halves: (quantum_factor(level) / (squared * squared)).powf(1.5),
+            volume: (squared + 1.0).powi(3),
+        }
+    }
+}
+
+fn quantum_factor(level: f64) -> f64 {
+    if level <= 3.0 { 1.0 } else { 16.0 / 3.0 * level / (level + 1.0).powi(2) }
 }
 
 /// What decides the occupation probabilities at one place, with its powers taken once.
 #[derive(Debug, Clone, Copy)]
 pub struct Surroundings {
-    critical_scale: f64,
+    /// Critical field of n = 1 in units of the Holtsmark field, to the power 3/2.
+    critical_three_halves: f64,
     correlation: f64,
     neutral_volume_per_cm3: f64,
 }
@@ -42,7 +70,7 @@ impl Surroundings {
         let screening = 0.09 * electron_density_per_cm3.powf(1.0 / 6.0) / temperature_k.sqrt();
         let radius_cm = NEUTRAL_RADIUS_FACTOR * BOHR_RADIUS_CM;
         Surroundings {
-            critical_scale: CRITICAL_FIELD_SCALE / electron_density_per_cm3.powf(2.0 / 3.0),
+            critical_three_halves: CRITICAL_FIELD_SCALE.powf(1.5) / electron_density_per_cm3,
             correlation: (1.0 + screening).powf(3.15),
             neutral_volume_per_cm3: 4.0 * std::f64::consts::PI / 3.0
                 * neutral_density_per_cm3
@@ -50,17 +78,23 @@ impl Surroundings {
         }
     }
 
-    /// Occupation probability of a level, 0 to 1.
+    /// Excluded volume of a level times the density of neutral perturbers: -ln of the neutral factor.
+    pub fn neutral_exponent(&self, shape: &LevelShape) -> f64 {
+        self.neutral_volume_per_cm3 * shape.volume
+    }
+
+    /// Occupation probability of a level, [`LEAST_OCCUPATION`] to 1.
     pub fn occupation(&self, level: f64) -> f64 {
-        let squared = level * level;
-        let quantum_factor =
-            if level <= 3.0 { 1.0 } else { 16.0 / 3.0 * level / ((level + 1.0) * (level + 1.0)) };
-        let beta = self.critical_scale * quantum_factor / (squared * squared);
-        let beta_three_halves = beta * beta.sqrt();
-        let odds = 0.1402 * self.correlation * beta_three_halves * beta_three_halves
-            / (1.0 + 0.1285 * self.correlation * beta_three_halves);
-        let charged = if odds.is_finite() { odds / (1.0 + odds) } else { 1.0 };
-        let neutral = (-self.neutral_volume_per_cm3 * (squared + 1.0).powi(3)).exp();
-        charged * neutral
+        self.occupation_of(&LevelShape::new(level))
+    }
+
+    /// As [`Surroundings::occupation`], for a level whose powers are known.
+    pub fn occupation_of(&self, shape: &LevelShape) -> f64 {
+        // f / (1 + f) with f = alive / spread.
+        let beta_three_halves = self.critical_three_halves * shape.critical_three_halves;
+        let alive = 0.1402 * self.correlation * beta_three_halves * beta_three_halves;
+        let spread = 1.0 + 0.1285 * self.correlation * beta_three_halves;
+        let charged = if alive.is_finite() { alive / (spread + alive) } else { 1.0 };
+        (charged * (-self.neutral_exponent(shape)).exp()).max(LEAST_OCCUPATION)
     }
 }

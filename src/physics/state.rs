@@ -6,14 +6,20 @@
 //! [`super::occupation`] inside the partition function. Pressure is the ideal-gas pressure of all
 //! particles; the non-ideal part of the free energy enters through the populations only, which
 //! is the usual approximation in white-dwarf photospheres. H3+ is left out: it matters below
-//! 5 000 K. Domain 1 500 - 3e6 K.
+//! 5 000 K.
+//!
+//! Domain 1 500 - 3e6 K and photospheric densities. Every input up to 1e17 dyn cm^-2 gives finite
+//! numbers, and charge, pressure and nuclei add up, but above about 1e12 dyn cm^-2 (0.1 g cm^-3)
+//! a hydrogen gas that is not fully ionised is neither ideal nor made of free atoms, and hotter
+//! gas becomes degenerate: there the answer is a number, not physics (tests
+//! `verif_state_at_extremes`, `verif_energy_and_pressure_belong_together`).
 
 use super::constants::{
     BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, HYDROGEN_MASS_G, LIGHT_SPEED_CM_S, PLANCK_ERG_S,
     RYDBERG_H_PER_CM,
 };
 use super::molecule::{h2_equilibrium, h2_plus_equilibrium};
-use super::occupation::Surroundings;
+use super::occupation::{LevelShape, Surroundings};
 
 /// Highest bound level that is followed.
 pub const LEVELS: usize = 40;
@@ -24,9 +30,11 @@ pub const IONISATION_ERG: f64 = PLANCK_ERG_S * LIGHT_SPEED_CM_S * RYDBERG_H_PER_
 /// Electron affinity of hydrogen, erg: 0.754195 eV (Lykke, Murray & Lineberger 1991, PRA 43, 6104).
 const H_MINUS_BINDING_ERG: f64 = 0.754_195 * ELECTRON_VOLT_ERG;
 
-/// Above this temperature molecules are left out: their fraction is below 1e-12 in any
-/// white-dwarf photosphere.
-const HOTTEST_MOLECULES_K: f64 = 25_000.0;
+/// Bound on the iteration between densities and occupation probabilities.
+const MOST_ITERATIONS: usize = 200;
+
+/// After this many iterations, steps are halved: only pressure ionisation takes so long.
+const UNDAMPED_ITERATIONS: usize = 20;
 
 /// Hydrogen gas in equilibrium.
 #[derive(Debug, Clone)]
@@ -77,25 +85,20 @@ impl Equilibria {
         let thermal_volume_cm3 = (PLANCK_ERG_S.powi(2)
             / (2.0 * std::f64::consts::PI * ELECTRON_MASS_G * thermal_energy_erg))
             .powf(1.5);
-        let mut equilibria = Equilibria {
+        // At every temperature: left out above some limit, H2+ would end in a step (0.2 % of the
+        // density at 25 000 K and 1e9 dyn cm^-2).
+        let h2 = h2_equilibrium(temperature_k);
+        let h2_plus = h2_plus_equilibrium(temperature_k);
+        Equilibria {
             thermal_energy_erg,
             thermal_volume_cm3,
             // Weights: H- has 1, the atom and the electron have 2 each.
             h_minus_cm3: thermal_volume_cm3 / 4.0 * (H_MINUS_BINDING_ERG / thermal_energy_erg).exp(),
-            h2_cm3: 0.0,
-            h2_plus_cm3: 0.0,
-            h2_binding_erg: 0.0,
-            h2_plus_binding_erg: 0.0,
-        };
-        if temperature_k < HOTTEST_MOLECULES_K {
-            let h2 = h2_equilibrium(temperature_k);
-            let h2_plus = h2_plus_equilibrium(temperature_k);
-            equilibria.h2_cm3 = h2.association_cm3;
-            equilibria.h2_plus_cm3 = h2_plus.association_cm3;
-            equilibria.h2_binding_erg = h2.internal_energy_erg - h2.dissociation_energy_erg;
-            equilibria.h2_plus_binding_erg = h2_plus.internal_energy_erg - h2_plus.dissociation_energy_erg;
+            h2_cm3: h2.association_cm3,
+            h2_plus_cm3: h2_plus.association_cm3,
+            h2_binding_erg: h2.internal_energy_erg - h2.dissociation_energy_erg,
+            h2_plus_binding_erg: h2_plus.internal_energy_erg - h2_plus.dissociation_energy_erg,
         }
-        equilibria
     }
 }
 
@@ -113,11 +116,16 @@ impl Densities {
     /// `neutral_per_pair` is n(H I) / (n_e n_p) and `ground_fraction` n(1) / n(H I).
     fn at(electrons: f64, neutral_per_pair: f64, ground_fraction: f64, equilibria: &Equilibria) -> Self {
         let ground_per_proton = electrons * neutral_per_pair * ground_fraction;
-        // Charge: n_e + n(H-) = n_p + n(H2+), quadratic in n_p; the root is written so that it
-        // stays exact when H2+ vanishes.
+        // Charge: n_e + n(H-) = n_p + n(H2+), quadratic in n_p; each root is written so that nothing
+        // cancels.
         let quadratic = ground_per_proton * equilibria.h2_plus_cm3;
         let linear = 1.0 - ground_per_proton * equilibria.h_minus_cm3 * electrons;
-        let protons = 2.0 * electrons / (linear + (linear * linear + 4.0 * quadratic * electrons).sqrt());
+        let root = (linear * linear + 4.0 * quadratic * electrons).sqrt();
+        let protons = if linear > 0.0 {
+            2.0 * electrons / (linear + root)
+        } else {
+            (root - linear) / (2.0 * quadratic)
+        };
         let neutrals = protons * electrons * neutral_per_pair;
         let ground = neutrals * ground_fraction;
         Densities {
@@ -147,35 +155,38 @@ impl State {
         let ionisation_factor = equilibria.thermal_volume_cm3 / 2.0
             * (IONISATION_ERG / equilibria.thermal_energy_erg).min(600.0).exp();
 
+        let shapes: [LevelShape; LEVELS] = std::array::from_fn(|index| LevelShape::new((index + 1) as f64));
         let mut electrons = initial_electrons(total, ionisation_factor * boltzmann[0]);
-        let mut neutral_perturbers = (total - 2.0 * electrons).max(0.0);
+        let mut neutral_perturbers = (total - 2.0 * electrons).max(1e-30 * total);
         let mut occupation = [1.0; LEVELS];
         let mut partition = boltzmann[0];
         let mut surroundings = Surroundings::new(temperature_k, electrons, neutral_perturbers);
-        // The occupation probabilities barely depend on the densities, so this contracts fast.
-        for _ in 0..200 {
+        // In a photosphere the occupation probabilities barely depend on the densities and this
+        // contracts fast. Under pressure ionisation the neutrals push themselves out: the response
+        // is steep, and the step is damped by its slope, 2 ln(1 / w) where H2 dominates.
+        let mut solved = electrons;
+        for iteration in 0..MOST_ITERATIONS {
             surroundings = Surroundings::new(temperature_k, electrons, neutral_perturbers);
-            for (index, value) in occupation.iter_mut().enumerate() {
-                *value = surroundings.occupation((index + 1) as f64);
+            for (value, shape) in occupation.iter_mut().zip(&shapes) {
+                *value = surroundings.occupation_of(shape);
             }
             partition = boltzmann.iter().zip(&occupation).map(|(b, w)| b * w).sum();
             let ground_fraction = boltzmann[0] * occupation[0] / partition;
-            let solved = solve_electrons(
-                electrons,
-                total,
-                ionisation_factor * partition,
-                ground_fraction,
-                &equilibria,
-            );
-            let change = (solved / electrons - 1.0).abs();
-            electrons = solved;
-            let densities =
-                Densities::at(electrons, ionisation_factor * partition, ground_fraction, &equilibria);
-            neutral_perturbers = densities.neutrals + densities.h2;
+            let neutral_per_pair = ionisation_factor * partition;
+            solved = solve_electrons(electrons, total, neutral_per_pair, ground_fraction, &equilibria);
+            let densities = Densities::at(solved, neutral_per_pair, ground_fraction, &equilibria);
+            let perturbers = (densities.neutrals + densities.h2).max(f64::MIN_POSITIVE);
+            let change = (solved / electrons - 1.0).abs() + (perturbers - neutral_perturbers).abs() / total;
+            let slope = 2.0 * surroundings.neutral_exponent(&shapes[0]);
+            let stride = if iteration < UNDAMPED_ITERATIONS { 1.0 } else { 0.5 };
+            electrons *= (solved / electrons).powf(stride);
+            neutral_perturbers *= (perturbers / neutral_perturbers).powf(stride / (1.0 + slope));
             if change < 1e-13 {
                 break;
             }
         }
+        // Not the damped value: populations must add up even where the iteration gave out.
+        let electrons = solved;
         let ground_fraction = boltzmann[0] * occupation[0] / partition;
         let densities = Densities::at(electrons, ionisation_factor * partition, ground_fraction, &equilibria);
         let levels_per_cm3: [f64; LEVELS] = std::array::from_fn(|index| {
@@ -225,7 +236,8 @@ fn initial_electrons(total: f64, neutral_per_pair: f64) -> f64 {
     total / (1.0 + (1.0 + neutral_per_pair * total).sqrt())
 }
 
-/// Newton iteration on the logarithm of the electron density until the particle count fits.
+/// Newton iteration on the logarithm of the electron density until the particle count fits, kept
+/// inside a bracket that starts at no electrons and at nothing but electrons.
 fn solve_electrons(
     start: f64,
     total: f64,
@@ -238,12 +250,21 @@ fn solve_electrons(
         let densities = Densities::at(electrons, neutral_per_pair, ground_fraction, equilibria);
         (densities.particles(electrons) / total).ln()
     };
+    let (mut low, mut high) = (f64::MIN_POSITIVE.ln(), total.ln());
     let mut log_electrons = start.ln();
     for _ in 0..100 {
         let value = excess(log_electrons);
+        if value < 0.0 {
+            low = log_electrons;
+        } else {
+            high = log_electrons;
+        }
         let slope = (excess(log_electrons + 1e-5) - excess(log_electrons - 1e-5)) / 2e-5;
-        let step = (-value / slope).clamp(-2.0, 2.0);
-        log_electrons += step;
+        let newton = log_electrons - value / slope;
+        // A count that is infinite gives no slope.
+        let next = if newton >= low && newton <= high { newton } else { 0.5 * (low + high) };
+        let step = next - log_electrons;
+        log_electrons = next;
         if step.abs() < 1e-14 || value.abs() < 1e-15 {
             break;
         }

@@ -1,11 +1,14 @@
 //! Truth from outside: each number with its source beside it.
 
 mod constants;
-mod gas;
 mod hydrogen;
 mod interior;
 mod least_squares;
+mod molecule;
+mod opacity;
+mod planck;
 mod star;
 mod stark;
 mod stark_tables;
+mod state;
 mod wavelength;

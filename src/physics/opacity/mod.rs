@@ -3,14 +3,15 @@
 //! Everything is linear absorption or scattering, per cm, corrected for stimulated emission where
 //! it is true absorption.
 
-mod bound_free;
+pub mod bound_free;
 mod continuum;
-mod free_free;
-mod h2_plus;
-mod h_minus;
+pub mod free_free;
+mod free_free_table;
+pub mod h2_plus;
+pub mod h_minus;
 mod lines;
 mod rosseland;
-mod scattering;
+pub mod scattering;
 
 pub use bound_free::LYMAN_LIMIT_HZ;
 pub use continuum::Continuum;
