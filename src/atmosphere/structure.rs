@@ -211,9 +211,9 @@ impl Linear {
 /// Sums over frequency that the equations of condition are made of.
 struct Sums {
     /// d(flux at interval i) / dT_j, radiative, first-moment units.
-    flux_slope: DMatrix<f64>,
+    flux_slope: Array2<f64>,
     /// d(net emission of cell i) / dT_j.
-    balance_slope: DMatrix<f64>,
+    balance_slope: Array2<f64>,
     /// Radiative flux at interval i.
     flux: Vec<f64>,
     /// Net absorbed energy of cell i.
@@ -355,8 +355,8 @@ impl<'s, 't> Iteration<'s, 't> {
         let depths = self.column_g_cm2.len();
         let intervals = depths - 1;
         let mut sums = Sums {
-            flux_slope: DMatrix::zeros(intervals, depths),
-            balance_slope: DMatrix::zeros(depths, depths),
+            flux_slope: Array2::zeros((intervals, depths)),
+            balance_slope: Array2::zeros((depths, depths)),
             flux: vec![0.0; intervals],
             balance: vec![0.0; depths],
             momentum: vec![0.0; intervals],
@@ -683,8 +683,9 @@ impl Response {
             let excess = field.mean_intensity[i] - medium.planck[i];
             sums.balance[i] += weight * absorbing * excess;
             let row = &self.slope[i * depths..(i + 1) * depths];
-            for (j, slope) in row.iter().enumerate() {
-                sums.balance_slope[(i, j)] += weight * absorbing * slope;
+            let factor = weight * absorbing;
+            for (sum, slope) in sums.balance_slope.row_mut(i).iter_mut().zip(row) {
+                *sum += factor * slope;
             }
             for (offset, explicit) in self.balance_explicit[i].iter().enumerate() {
                 if let Some(j) = (i + offset).checked_sub(1).filter(|j| *j < depths) {
@@ -697,8 +698,8 @@ impl Response {
             let (above, below) = self.slope[i * depths..(i + 2) * depths].split_at(depths);
             let scale_above = weight * field.eddington[i] / interval;
             let scale_below = weight * field.eddington[i + 1] / interval;
-            for j in 0..depths {
-                sums.flux_slope[(i, j)] += scale_below * below[j] - scale_above * above[j];
+            for (sum, (above, below)) in sums.flux_slope.row_mut(i).iter_mut().zip(above.iter().zip(below)) {
+                *sum += scale_below * below - scale_above * above;
             }
             let factor = weight * self.flux[i] / interval;
             sums.flux_slope[(i, i)] -= factor * self.interval_above[i];

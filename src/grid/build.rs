@@ -18,7 +18,7 @@ use crate::physics::occupation::NEUTRAL_RADIUS_FACTOR;
 use crate::physics::stark::ProfileTable;
 
 /// Version of the physics inside the grid: raise it whenever a change of code changes a flux.
-pub const PHYSICS_VERSION: u32 = 1;
+pub const PHYSICS_VERSION: u32 = 2;
 
 /// What can stop a build.
 #[derive(Debug, thiserror::Error)]
@@ -49,17 +49,16 @@ pub struct Nodes {
 }
 
 impl Nodes {
-    /// The bundled grid: 45 x 13 nodes, densest in temperature where convection sets in and the
+    /// The bundled grid: 73 x 15 nodes, densest in temperature where convection sets in and the
     /// Balmer lines peak.
     pub fn bundled() -> Self {
-        let steps: [(f64, f64); 7] = [
-            (10_500.0, 500.0),
-            (14_000.0, 250.0),
-            (16_000.0, 500.0),
-            (20_000.0, 1000.0),
-            (32_000.0, 2000.0),
-            (40_000.0, 4000.0),
-            (80_000.0, 8000.0),
+        let steps: [(f64, f64); 6] = [
+            (16_000.0, 250.0),
+            (20_000.0, 500.0),
+            (30_000.0, 1000.0),
+            (40_000.0, 2000.0),
+            (60_000.0, 4000.0),
+            (80_000.0, 5000.0),
         ];
         let mut teff_k = vec![6000.0];
         for (last, step) in steps {
@@ -69,7 +68,7 @@ impl Nodes {
                 next += step;
             }
         }
-        Nodes { teff_k, log_g: (0..13).map(|i| 6.5 + 0.25 * f64::from(i)).collect() }
+        Nodes { teff_k, log_g: (0..15).map(|i| 6.0 + 0.25 * f64::from(i)).collect() }
     }
 
     fn pairs(&self) -> Vec<(f64, f64)> {

@@ -15,7 +15,7 @@ use std::path::{Path, PathBuf};
 
 const MAGIC: &[u8] = b"emberline stark profiles\n";
 /// Changes whenever the numbers in the file would.
-pub const PHYSICS_VERSION: &str = "unified-1";
+pub const PHYSICS_VERSION: &str = "unified-2";
 /// Largest file that is read, bytes.
 const LARGEST_FILE: u64 = 64 << 20;
 const HASH_BYTES: usize = 32;

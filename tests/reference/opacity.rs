@@ -4,6 +4,7 @@ use emberline::physics::constants::{
     BOHR_RADIUS_CM, BOLTZMANN_ERG_K, ELECTRON_MASS_G, ELECTRON_VOLT_ERG, ELEMENTARY_CHARGE_ESU,
     LIGHT_SPEED_CM_S, PLANCK_ERG_S, THOMSON_CM2,
 };
+use emberline::physics::hydrogen::Line;
 use emberline::physics::occupation::Surroundings;
 use emberline::physics::opacity::bound_free::{Dissolution, cross_section_cm2};
 use emberline::physics::opacity::free_free::{KRAMERS_FREE_FREE_CGS, gaunt_factor};
@@ -162,6 +163,29 @@ fn validate_bound_free_gaunt_factors() {
             let threshold_hz = LYMAN_LIMIT_HZ / (level * level) as f64;
             let found = cross_section_cm2(level, multiple * threshold_hz) / kramers_cm2(level, multiple);
             assert!((found / value - 1.0).abs() < tolerance, "n = {level}, {multiple}: {found} for {value}");
+        }
+    }
+}
+
+/// Below its threshold a cross-section is the strength of the lines spread over their spacing: at each
+/// line, sigma = (pi e^2 / m c) f 2 nu_1 / n^3, with oscillator strengths from the exact radial integrals.
+#[test]
+fn validate_cross_section_goes_on_as_lines() {
+    let unit = std::f64::consts::PI * ELEMENTARY_CHARGE_ESU.powi(2) / (ELECTRON_MASS_G * LIGHT_SPEED_CM_S);
+    // The asymptotic Gaunt factor is poorest at the first line.
+    for (lower, tolerance) in [(1, 1e-6), (2, 1e-6), (3, 1e-6), (4, 1e-6), (5, 0.02), (8, 0.02)] {
+        for upper in [lower + 1, lower + 2, lower + 4, lower + 9] {
+            let line = Line { lower, upper };
+            let inverse_square = |n: u32| 1.0 / f64::from(n * n);
+            let line_hz = LYMAN_LIMIT_HZ * (inverse_square(lower) - inverse_square(upper));
+            let spread =
+                unit * line.oscillator_strength() * f64::from(upper).powi(3) / (2.0 * LYMAN_LIMIT_HZ);
+            let found = cross_section_cm2(lower as usize, line_hz);
+            // 0.05 % for the infinite nuclear mass in the cross-section.
+            assert!(
+                (found / spread - 1.0).abs() < tolerance + 6e-4,
+                "{lower}-{upper}: {found:e} for {spread:e}"
+            );
         }
     }
 }

@@ -250,13 +250,14 @@ fn validate_occupation_is_cumulative_holtsmark() {
     }
 }
 
-/// Critical fields by their definition, F = k_n e / (16 a0^2 n^4), in units of 2.603 e n_e^(2/3).
+/// Critical fields in units of 2.603 e n_e^(2/3): the saddle e / (16 a0^2 n^4) up to n = 3, and above it the
+/// crossing of neighbouring Stark manifolds, (2 n + 1) / (6 n^4 (n + 1)^2) e / a0^2.
 #[test]
 fn validate_critical_field() {
     const TOLERANCE: f64 = 2e-3; // 8.57e14 has three digits
     let electrons = 1e17_f64;
     let holtsmark = 2.603 * ELEMENTARY_CHARGE_ESU * electrons.powf(2.0 / 3.0);
-    for (level, quantum_factor) in [(2.0_f64, 1.0), (3.0, 1.0), (4.0, 64.0 / 75.0), (9.0, 0.48)] {
+    for (level, quantum_factor) in [(2.0_f64, 1.0), (3.0, 1.0), (4.0, 0.96), (9.0, 152.0 / 300.0)] {
         let field = quantum_factor * ELEMENTARY_CHARGE_ESU / (16.0 * BOHR_RADIUS_CM.powi(2) * level.powi(4));
         let found = critical_beta(level, electrons);
         assert!((found / (field / holtsmark) - 1.0).abs() < TOLERANCE, "n = {level}: {found}");

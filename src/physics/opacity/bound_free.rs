@@ -27,25 +27,23 @@ const EXACT_POLYNOMIALS: [&[f64]; EXACT_LEVELS] = [
     &[1.0, 38.0, 1384.0 / 3.0, 6544.0 / 3.0, 39_808.0 / 9.0, 11_008.0 / 3.0, 1024.0],
 ];
 
-/// Photoionisation cross-section of level n averaged over its sublevels, cm^2, at or above its
-/// threshold; below it, the smooth continuation as nu^-3 that the pseudo-continuum needs.
+/// Photoionisation cross-section of level n averaged over its sublevels, cm^2. Below the threshold,
+/// where the pseudo-continuum needs it, it goes on as what the lines would be if their strength were spread
+/// over the spacing of the levels: sigma = (pi e^2 / m c) f dn*/dnu, the same formula with n* real.
 ///
 /// # Domain
-/// Above n = 4 the error is below 0.08 % from the threshold to three times it, 0.5 % at ten
-/// times and grows beyond, where lower levels absorb all that matters
+/// Photon energies above zero for n = 1 .. 4. Above n = 4 the error is below 0.2 % from the threshold to
+/// three times it, 0.5 % at ten times and grows beyond, where lower levels absorb all that matters
 /// (`validate_bound_free_gaunt_factors`).
 ///
 /// # Reference
 /// n = 1 .. 4 exactly (dipole integrals of hydrogen, as Stobbe 1930 and Karzas & Latter 1961; the
 /// polynomials were derived in 40-digit arithmetic from the closed radial integrals); n > 4
-/// Kramers with the asymptotic Gaunt factor (Menzel & Pekeris 1935).
+/// Kramers with the asymptotic Gaunt factor (Menzel & Pekeris 1935). Below the thresholds:
+/// `validate_cross_section_goes_on_as_lines`.
 pub fn cross_section_cm2(level: usize, frequency_hz: f64) -> f64 {
     let n = level as f64;
-    let threshold_hz = LYMAN_LIMIT_HZ / (n * n);
-    if frequency_hz < threshold_hz {
-        return cross_section_cm2(level, threshold_hz) * (threshold_hz / frequency_hz).powi(3);
-    }
-    let ratio = threshold_hz / frequency_hz;
+    let ratio = LYMAN_LIMIT_HZ / (n * n) / frequency_hz;
     if level <= EXACT_LEVELS {
         exact_cross_section_cm2(level, ratio)
     } else {
@@ -57,14 +55,16 @@ pub fn cross_section_cm2(level: usize, frequency_hz: f64) -> f64 {
 fn exact_cross_section_cm2(level: usize, ratio: f64) -> f64 {
     let n = level as f64;
     let common = 512.0 / 3.0 * std::f64::consts::PI.powi(2) * FINE_STRUCTURE * BOHR_RADIUS_CM.powi(2);
-    // Coulomb parameter of the ejected electron; infinite at threshold.
-    let excess = (1.0 / ratio - 1.0) / (n * n);
-    let exponential = if excess < 1e-10 {
-        (-4.0 * n).exp()
+    // Energy of the electron after the absorption, in units of the ionisation energy of n = 1.
+    let energy = (1.0 / ratio - 1.0) / (n * n);
+    let exponential = if energy > 1e-10 {
+        let coulomb = 1.0 / energy.sqrt();
+        (-4.0 * coulomb * (n / coulomb).atan()).exp() / (1.0 - (-std::f64::consts::TAU * coulomb).exp())
+    } else if energy < -1e-10 {
+        let effective_level = 1.0 / (-energy).sqrt();
+        (-4.0 * effective_level * (n / effective_level).atanh()).exp()
     } else {
-        let coulomb = 1.0 / excess.sqrt();
-        let arc_cotangent = (n / coulomb).atan();
-        (-4.0 * coulomb * arc_cotangent).exp() / (1.0 - (-std::f64::consts::TAU * coulomb).exp())
+        (-4.0 * n).exp()
     };
     let polynomial = EXACT_POLYNOMIALS[level - 1].iter().rev().fold(0.0, |sum, factor| sum * ratio + factor);
     common * n.powi(3) * ratio.powi(4) * polynomial * exponential

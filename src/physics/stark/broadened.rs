@@ -11,6 +11,7 @@ use crate::numerics::cubic::catmull_rom;
 use crate::physics::constants::{BOLTZMANN_ERG_K, HYDROGEN_MASS_G, LIGHT_SPEED_CM_S};
 use crate::physics::hydrogen::Line;
 use std::f64::consts::PI;
+use std::sync::OnceLock;
 
 /// Logarithmic slope of every Stark wing.
 pub const WING_SLOPE: f64 = -2.5;
@@ -20,6 +21,8 @@ const LN_STEP: f64 = 0.12;
 const FIRST_SIGMA: f64 = 0.15;
 /// Out to here, in sigmas, the Gaussian is summed directly.
 const NEAR_SIGMA: f64 = 8.0;
+/// Beyond this, in sigmas, three points do what seven do nearer in.
+const FAR_SIGMA: f64 = 40.0;
 /// Seven-point Gauss-Hermite rule for the unit normal distribution (Abramowitz & Stegun 1972, table
 /// 25.10, abscissae times sqrt 2, weights over sqrt pi): central weight, then (abscissa, weight).
 const HERMITE_CENTRE: f64 = 0.457_142_857_142_857_1;
@@ -84,6 +87,15 @@ impl StarkProfile {
         2.0 * sum + self.centre
     }
 
+    /// Whether a Lorentz profile of a half width (A) changes the profile by less than 1e-4: narrow
+    /// against the heat's sigma, and lost in the wing as far as the wing is tabulated.
+    fn is_blind_to(&self, hwhm: f64, sigma: f64) -> bool {
+        let last = self.ln_s.len() - 1;
+        let last_detuning = (self.ln_detuning_first + self.ln_detuning_step * last as f64).exp();
+        let lorentz_wing = hwhm / (PI * last_detuning * last_detuning);
+        hwhm < 1e-4 * sigma && lorentz_wing < 1e-4 * self.ln_s[last].exp()
+    }
+
     /// Folds with a Lorentz profile of a half width at half maximum, A.
     fn with_lorentz(&self, hwhm: f64) -> StarkProfile {
         let step = self.ln_detuning_step;
@@ -109,12 +121,7 @@ impl StarkProfile {
             .iter()
             .zip(&s)
             .map(|(x, own)| {
-                let mut sum = 0.0;
-                for ((u, s), weight) in u.iter().zip(&s).zip(&weights) {
-                    // Both sides of the profile at once: 1/near + 1/far with one division.
-                    let (near, far) = ((x - u) * (x - u) + square, (x + u) * (x + u) + square);
-                    sum += weight * (s - own) * (near + far) / (near * far);
-                }
+                let sum = lorentz_sum(*x, *own, square, &u, &s, &weights);
                 let core = 2.0 * u[0] * (s[0] - own) * lorentz(*x);
                 (own + core + hwhm / PI * sum + self.centre * lorentz(*x)).max(f64::MIN_POSITIVE).ln()
             })
@@ -127,6 +134,26 @@ impl StarkProfile {
             centre: 0.0,
         }
     }
+}
+
+/// Sum of weight (s - own) [1/((x-u)^2 + square) + 1/((x+u)^2 + square)] over the nodes, with one
+/// division each, in lanes that the compiler can keep in vector registers.
+fn lorentz_sum(x: f64, own: f64, square: f64, u: &[f64], s: &[f64], weights: &[f64]) -> f64 {
+    const LANES: usize = 4;
+    let term = |u: f64, s: f64, weight: f64| {
+        let (near, far) = ((x - u) * (x - u) + square, (x + u) * (x + u) + square);
+        weight * (s - own) * (near + far) / (near * far)
+    };
+    let mut lanes = [0.0; LANES];
+    let chunks = u.chunks_exact(LANES).zip(s.chunks_exact(LANES).zip(weights.chunks_exact(LANES)));
+    for (u, (s, weight)) in chunks {
+        for lane in 0..LANES {
+            lanes[lane] += term(u[lane], s[lane], weight[lane]);
+        }
+    }
+    let done = u.len() / LANES * LANES;
+    let rest: f64 = (done..u.len()).map(|i| term(u[i], s[i], weights[i])).sum();
+    lanes.iter().sum::<f64>() + rest
 }
 
 /// A profile ready for evaluation: per A of detuning, with integral 1.
@@ -146,27 +173,31 @@ impl Broadened {
         let wave_aa = line.wave_vac_aa();
         let sigma = wave_aa * thermal;
         let folded;
-        let profile = if lorentz_hwhm_aa > 0.0 {
+        let profile = if stark.is_blind_to(lorentz_hwhm_aa, sigma) {
+            stark
+        } else {
             folded = stark.with_lorentz(lorentz_hwhm_aa);
             &folded
-        } else {
-            stark
         };
         let ln_first = (FIRST_SIGMA * sigma).ln();
         // To where the Stark wing is a pure power law, or a whole wavelength away.
         let ln_wing = profile.ln_detuning_first + profile.ln_detuning_step * profile.ln_s.len() as f64;
         let count = ((wave_aa.ln().max(ln_wing) - ln_first) / LN_STEP).ceil() as usize;
-        let near = NearNodes::new(profile, sigma);
-        let ln_s: Vec<f64> = (0..count)
-            .map(|i| {
-                let x = (ln_first + LN_STEP * i as f64).exp();
-                let value =
-                    if x < NEAR_SIGMA * sigma { near.folded(x, sigma) } else { hermite(profile, x, sigma) };
-                value.max(f64::MIN_POSITIVE).ln()
-            })
+        let kernel = near_kernel();
+        let near = kernel.masses(profile, sigma);
+        let far = (kernel.rows.len()..count).map(|i| {
+            let x = (ln_first + LN_STEP * i as f64).exp();
+            hermite(profile, x, sigma)
+        });
+        let ln_s: Vec<f64> = kernel
+            .rows
+            .iter()
+            .map(|row| near.folded(row) / sigma)
+            .chain(far)
+            .map(|value| value.max(f64::MIN_POSITIVE).ln())
             .collect();
         let last_slope = (ln_s[count - 1] - ln_s[count - 2]) / LN_STEP;
-        let centre = near.folded(0.0, sigma);
+        let centre = near.folded(&kernel.centre) / sigma;
         Broadened { ln_first, inverse_step: 1.0 / LN_STEP, ln_s, last_slope, centre }
     }
 
@@ -190,8 +221,14 @@ impl Broadened {
     }
 }
 
+/// The profile folded with the Gaussian where it is smooth over a sigma.
 fn hermite(profile: &StarkProfile, x: f64, sigma: f64) -> f64 {
     let at = |u: f64| profile.ln_value(u.ln()).exp();
+    if x > FAR_SIGMA * sigma {
+        // Three points: a power law's error is below 1e-6 here.
+        let node = 3f64.sqrt() * sigma;
+        return 2.0 / 3.0 * at(x) + (at(x + node) + at(x - node)) / 6.0;
+    }
     let mut sum = HERMITE_CENTRE * at(x);
     for (node, weight) in HERMITE {
         sum += weight * (at(x + node * sigma) + at(x - node * sigma));
@@ -199,58 +236,74 @@ fn hermite(profile: &StarkProfile, x: f64, sigma: f64) -> f64 {
     sum
 }
 
-/// Nodes (detuning, mass on one side) for the sum with the Gaussian.
-struct NearNodes {
-    core_mass: f64,
+/// Sum with the Gaussian near the centre, everything in units of its sigma: which detunings of the
+/// Stark profile enter, and with which weight at each node of the result. The same for every line.
+struct NearKernel {
+    /// Detunings of the Stark profile, and the half widths of their cells.
     nodes: Vec<(f64, f64)>,
+    /// Weights of the core's mass and of the nodes' masses at the first nodes of the result.
+    rows: Vec<Vec<f64>>,
+    /// The same at the line's centre.
+    centre: Vec<f64>,
 }
 
-impl NearNodes {
-    fn new(profile: &StarkProfile, sigma: f64) -> Self {
-        const CORE: f64 = 0.06;
+/// What lies within so many sigmas of the centre counts as being at it.
+const CORE_SIGMA: f64 = 0.06;
+
+fn near_kernel() -> &'static NearKernel {
+    static KERNEL: OnceLock<NearKernel> = OnceLock::new();
+    KERNEL.get_or_init(|| {
         const GROWTH: f64 = 1.4;
         const LARGEST_CELL: f64 = 0.6;
-        let gauss = 1.0 / 3f64.sqrt();
-        let at = |u: f64| profile.ln_value(u.ln()).exp();
-        // What lies within the core counts as being at the centre.
-        let core = CORE * sigma;
+        let mut nodes = Vec::new();
+        let mut from = CORE_SIGMA;
+        while from < NEAR_SIGMA + 6.0 {
+            let to = (from * GROWTH).min(from + LARGEST_CELL);
+            let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
+            nodes.extend([-GAUSS_NODE, GAUSS_NODE].map(|node| (middle + node * half, half)));
+            from = to;
+        }
+        let gauss = |d: f64| (-0.5 * d * d).exp() / (2.0 * PI).sqrt();
+        let row = |x: f64| -> Vec<f64> {
+            let both_sides = nodes.iter().map(|(u, _)| gauss(x - u) + gauss(x + u));
+            std::iter::once(gauss(x)).chain(both_sides).collect()
+        };
+        let count = ((NEAR_SIGMA / FIRST_SIGMA).ln() / LN_STEP).ceil() as usize;
+        let rows = (0..count).map(|i| row(FIRST_SIGMA * (LN_STEP * i as f64).exp())).collect();
+        let centre = row(0.0);
+        NearKernel { nodes, rows, centre }
+    })
+}
+
+/// Two-point Gauss-Legendre rule on (-1, 1): both weights are 1.
+const GAUSS_NODE: f64 = 0.577_350_269_189_625_8; // 1/sqrt(3)
+
+impl NearKernel {
+    /// Masses that belong to the weights of a row.
+    fn masses(&self, profile: &StarkProfile, sigma: f64) -> NearMasses {
+        let core = CORE_SIGMA * sigma;
         let first = profile.ln_detuning_first.exp().min(core);
-        let mut mass = first * profile.ln_s[0].exp();
+        let mut core_mass = first * profile.ln_s[0].exp();
         let ln_ratio = (core / first).ln();
         let cells = (ln_ratio / 0.3).ceil() as usize;
         for cell in 0..cells {
             let half = 0.5 * ln_ratio / cells as f64;
             let middle = first.ln() + half * (2 * cell + 1) as f64;
-            for node in [-gauss, gauss] {
+            for node in [-GAUSS_NODE, GAUSS_NODE] {
                 let ln_u = middle + node * half;
-                mass += half * (ln_u + profile.ln_value(ln_u)).exp();
+                core_mass += half * (ln_u + profile.ln_value(ln_u)).exp();
             }
         }
-        let mut nodes = Vec::with_capacity(80);
-        let mut from = core;
-        while from < (NEAR_SIGMA + 6.0) * sigma {
-            let to = (from * GROWTH).min(from + LARGEST_CELL * sigma);
-            let (middle, half) = (0.5 * (from + to), 0.5 * (to - from));
-            for node in [-gauss, gauss] {
-                let u = middle + node * half;
-                nodes.push((u, half * at(u)));
-            }
-            from = to;
-        }
-        NearNodes { core_mass: 2.0 * mass + profile.centre, nodes }
+        let own = self.nodes.iter().map(|(u, half)| half * sigma * profile.ln_value((u * sigma).ln()).exp());
+        NearMasses(std::iter::once(2.0 * core_mass + profile.centre).chain(own).collect())
     }
+}
 
-    fn folded(&self, x: f64, sigma: f64) -> f64 {
-        let inverse = 1.0 / sigma;
-        let gauss = |d: f64| {
-            let y = d * inverse;
-            let square = 0.5 * y * y;
-            if square > 30.0 { 0.0 } else { (-square).exp() }
-        };
-        let mut sum = self.core_mass * gauss(x);
-        for (u, mass) in &self.nodes {
-            sum += mass * (gauss(x - u) + gauss(x + u));
-        }
-        sum * inverse / (2.0 * PI).sqrt()
+/// Mass of the core, then of one side's nodes.
+struct NearMasses(Vec<f64>);
+
+impl NearMasses {
+    fn folded(&self, row: &[f64]) -> f64 {
+        self.0.iter().zip(row).map(|(mass, weight)| mass * weight).sum()
     }
 }

@@ -53,19 +53,6 @@ pub fn debye_length_cm(temperature_k: f64, electron_density_per_cm3: f64) -> f64
     (BOLTZMANN_ERG_K * temperature_k / (4.0 * PI * electron_density_per_cm3)).sqrt() / ELEMENTARY_CHARGE_ESU
 }
 
-/// Field of the strongest non-overlapping Stark manifold of a level, in units of F0: above it the
-/// level is dissolved.
-///
-/// # Reference
-/// Hummer & Mihalas 1988, eq. 4.21: F_crit = k_n e/(16 a0^2 n^4), in the form of Hubeny, Hummer & Lanz
-/// 1994. Up to n = 3 it is the saddle of the Coulomb potential, e/(16 a0^2 n^4); above, the smaller
-/// field at which manifolds n and n + 1 meet gives k_n = (16/3) n/(n + 1)^2.
-pub fn critical_field(n: u32, electron_density_per_cm3: f64) -> f64 {
-    let nf = f64::from(n);
-    let k = if n <= 3 { 1.0 } else { 16.0 / 3.0 * nf / (nf + 1.0).powi(2) };
-    8.57e14 * k / nf.powi(4) / electron_density_per_cm3.powf(2.0 / 3.0)
-}
-
 /// One distribution W(beta), normalised to 1 over beta from 0 to infinity.
 #[derive(Debug, Clone)]
 pub struct Microfield {

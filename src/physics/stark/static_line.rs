@@ -14,6 +14,7 @@ use super::microfield::{self, Microfield};
 use super::shell::Pattern;
 use crate::physics::constants::{BOHR_RADIUS_CM, ELEMENTARY_CHARGE_ESU, LIGHT_SPEED_CM_S, PLANCK_ERG_S};
 use crate::physics::hydrogen::Line;
+use crate::physics::occupation::critical_beta;
 use std::f64::consts::PI;
 
 /// Field of both species together over that of the ions alone.
@@ -71,7 +72,7 @@ impl StaticLine {
             * BOTH_SPECIES
             * microfield::holtsmark_field_esu(electron_density_per_cm3);
         let beta_cut = if cut {
-            microfield::critical_field(self.line.upper, electron_density_per_cm3) / BOTH_SPECIES
+            critical_beta(f64::from(self.line.upper), electron_density_per_cm3) / BOTH_SPECIES
         } else {
             f64::INFINITY
         };

@@ -16,6 +16,7 @@ use super::static_line::shift_rad_s_per_esu;
 use crate::numerics::quadrature::panels;
 use crate::physics::constants::LIGHT_SPEED_CM_S;
 use crate::physics::hydrogen::Line;
+use crate::physics::occupation::critical_beta;
 use num_complex::Complex64;
 use std::f64::consts::PI;
 
@@ -92,7 +93,7 @@ impl<'a> Plasma<'a> {
         let unit_rad_s = shift_rad_s_per_esu() * microfield::holtsmark_field_esu(density);
         let field = Microfield::compute(microfield::screening(temperature_k, density));
         let field_cut =
-            if cut { microfield::critical_field(unified.line.upper, density) } else { f64::INFINITY };
+            if cut { critical_beta(f64::from(unified.line.upper), density) } else { f64::INFINITY };
         let norm = 1.0 / field.cumulative(field_cut);
         let operator = OperatorTable::new(&Electrons::new(temperature_k, density), &space.values, unit_rad_s);
         let components = components(space, &operator);
