@@ -245,6 +245,9 @@ codes! {
     ERRORS_TRUNCATED = "star.errors-truncated", Note,
         "part of the error ellipse lies outside the cooling tracks, so the intervals are too narrow",
         "quote the intervals as lower limits";
+    NO_MAGNITUDES = "star.no-magnitudes", Note,
+        "the magnitudes, and with them the distance, are null: the model spectra do not reach there, or are missing",
+        "none needed within the grid; `emberline grid check` verifies the model spectra";
     COVARIANCE_UNUSABLE = "star.covariance-unusable", Review,
         "the covariance of temperature and gravity is not one, so the values have no errors",
         "look at the fit";

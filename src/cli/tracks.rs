@@ -1,18 +1,21 @@
 //! `emberline tracks`: build, check, describe, ask and draw the table of cooling tracks.
 
 use std::io::{self, Write};
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 
 use clap::{Args, Subcommand, ValueEnum};
 use serde::Serialize;
 use thiserror::Error;
 
-use crate::codes::Flag;
+use crate::codes::{self, Flag};
+use crate::grid::FluxGrid;
+use crate::grid::magnitude_table::MagnitudeTable;
+use crate::grid::place::FLUX_FILE;
 use crate::grid::track_build::{TrackBuildError, build_track_table, log_teffs, masses_msun};
 use crate::grid::track_table::{QUANTITIES, TrackTable, TrackTableError};
 use crate::interior::structure::HydrogenLayer;
-use crate::star::{Star, StarReport, describe_in_layer};
+use crate::star::{ApparentMagnitude, Star, StarModels, StarReport, describe};
 
 /// Build, check, describe, ask and draw the table of cooling tracks.
 #[derive(Debug, Args)]
@@ -58,6 +61,9 @@ struct AtArgs {
     /// Radial velocity, km/s.
     #[arg(long, allow_negative_numbers = true)]
     radial_velocity_km_s: Option<f64>,
+    /// A magnitude, for the distance: gaia_g, gaia_bp, gaia_rp, sdss_u ... sdss_z or johnson_v.
+    #[arg(long, value_name = "BAND=VALUE[:ERROR]")]
+    magnitude: Option<ApparentMagnitude>,
     /// Thickness of the hydrogen layer.
     #[arg(long, value_enum, default_value_t = LayerName::Thick)]
     layer: LayerName,
@@ -145,7 +151,7 @@ pub fn run(args: &TracksArgs) -> Result<ExitCode, TracksError> {
             }
         }
         TracksCommand::At(at) => {
-            let StarReport { star, flags } = star_at(at, &TrackTable::read(&args.tracks)?);
+            let StarReport { star, flags } = star_at(at, &args.tracks, &TrackTable::read(&args.tracks)?);
             writeln!(out, "{}", serde_json::to_string(&StarBlock { star, flags })?)?;
         }
         TracksCommand::Plot => {
@@ -164,10 +170,19 @@ struct StarBlock {
     flags: Vec<Flag>,
 }
 
-fn star_at(at: &AtArgs, tracks: &TrackTable) -> StarReport {
+/// The star with magnitudes from the model spectra beside the tracks, if they are there.
+fn star_at(at: &AtArgs, path: &Path, tracks: &TrackTable) -> StarReport {
     let mixed = at.correlation * at.teff_err_k * at.log_g_err;
     let covariance = [[at.teff_err_k * at.teff_err_k, mixed], [mixed, at.log_g_err * at.log_g_err]];
-    describe_in_layer(at.teff_k, at.log_g, &covariance, at.radial_velocity_km_s, tracks, at.layer.into())
+    let grid = FluxGrid::read(&path.with_file_name(FLUX_FILE));
+    let magnitudes = grid.as_ref().map(MagnitudeTable::new);
+    let models = StarModels { tracks, magnitudes: magnitudes.as_ref().ok(), layer: at.layer.into() };
+    let (velocity, apparent) = (at.radial_velocity_km_s, at.magnitude.as_ref());
+    let mut report = describe(at.teff_k, at.log_g, &covariance, velocity, apparent, &models);
+    if let Err(fault) = magnitudes {
+        report.flags.push(Flag::new(&codes::NO_MAGNITUDES, fault.to_string()));
+    }
+    report
 }
 
 /// Radii of nearly cold stars no longer change with Teff; this is the noise of the material tables, log10 R: at most 2e-4

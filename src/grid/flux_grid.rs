@@ -120,17 +120,10 @@ impl FluxGrid {
     /// # Errors
     /// [`OutsideGrid`] for points outside the nodes, or not finite.
     pub fn stencil(&self, teff_k: f64, log_g: f64) -> Result<Stencil, OutsideGrid> {
-        let (teff_first_k, teff_last_k) = self.teff_range_k();
-        let (log_g_first, log_g_last) = self.log_g_range();
-        let inside =
-            (teff_first_k..=teff_last_k).contains(&teff_k) && (log_g_first..=log_g_last).contains(&log_g);
-        if !inside {
-            return Err(OutsideGrid { teff_k, log_g, teff_first_k, teff_last_k, log_g_first, log_g_last });
-        }
-        Ok(Stencil {
-            teff: AxisStencil::new(&self.teff_k, teff_k, f64::ln),
-            log_g: AxisStencil::new(&self.log_g, log_g, |value| value),
-            teff_k,
+        Stencil::new(&self.teff_k, &self.log_g, teff_k, log_g).ok_or_else(|| {
+            let (teff_first_k, teff_last_k) = self.teff_range_k();
+            let (log_g_first, log_g_last) = self.log_g_range();
+            OutsideGrid { teff_k, log_g, teff_first_k, teff_last_k, log_g_first, log_g_last }
         })
     }
 
@@ -198,8 +191,18 @@ fn interpolate_ln(values: &Array3<f32>, stencil: &Stencil, range: Range<usize>, 
 }
 
 impl Stencil {
+    /// Nodes and weights of a point between ascending nodes; `None` outside, or if not finite.
+    pub(super) fn new(teffs_k: &[f64], log_gs: &[f64], teff_k: f64, log_g: f64) -> Option<Self> {
+        let holds = |nodes: &[f64], at: f64| (nodes[0]..=nodes[nodes.len() - 1]).contains(&at);
+        (holds(teffs_k, teff_k) && holds(log_gs, log_g)).then(|| Stencil {
+            teff: AxisStencil::new(teffs_k, teff_k, f64::ln),
+            log_g: AxisStencil::new(log_gs, log_g, |value| value),
+            teff_k,
+        })
+    }
+
     /// Node indices with the weight of the value, of d/d ln Teff and of d/d log g.
-    fn terms(&self) -> impl Iterator<Item = (usize, usize, f64, f64, f64)> + '_ {
+    pub(super) fn terms(&self) -> impl Iterator<Item = (usize, usize, f64, f64, f64)> + '_ {
         let (t, g) = (&self.teff, &self.log_g);
         (0..t.count).flat_map(move |a| {
             (0..g.count).map(move |b| {

@@ -4,6 +4,8 @@ pub mod axis;
 pub mod build;
 mod flux_file;
 mod flux_grid;
+pub mod magnitude_table;
+pub mod passband;
 pub mod place;
 pub mod profile_table;
 pub mod sealed_fits;

@@ -9,15 +9,18 @@ use super::pipeline::{Analyse, error_chain};
 use crate::codes::{self, Flag};
 use crate::fit::{EXTERNAL_LOG_G, EXTERNAL_TEFF, Fit, FitSettings, Fitter, LineResult, Solution};
 use crate::grid::FluxGrid;
+use crate::grid::magnitude_table::MagnitudeTable;
 use crate::grid::track_table::TrackTable;
+use crate::interior::structure::HydrogenLayer;
 use crate::spectrum::Observation;
 use crate::star::three_d::{HOTTEST_K, correct_3d};
-use crate::star::{StarReport, describe};
+use crate::star::{StarModels, StarReport, describe};
 
 /// Everything that an analysis needs, shared by all threads.
 pub struct Analysis<'t> {
     fitter: Fitter<'t>,
     tracks: &'t TrackTable,
+    magnitudes: MagnitudeTable,
     provenance: Provenance,
 }
 
@@ -34,7 +37,12 @@ impl<'t> Analysis<'t> {
             tracks: Some(tracks.checksum().to_owned()),
             ..Provenance::of_this_program()
         };
-        Analysis { fitter: Fitter::new(grid, settings.clone()), tracks, provenance }
+        Analysis {
+            fitter: Fitter::new(grid, settings.clone()),
+            tracks,
+            magnitudes: MagnitudeTable::new(grid),
+            provenance,
+        }
     }
 
     fn star(&self, parameters: &FittedParameters, solution: &Solution) -> StarReport {
@@ -45,7 +53,12 @@ impl<'t> Analysis<'t> {
             [statistical[0][0] + teff_external_k.powi(2), statistical[0][1]],
             [statistical[1][0], statistical[1][1] + log_g_external.powi(2)],
         ];
-        describe(teff_k, log_g, &covariance, Some(parameters.radial_velocity_km_s[0]), self.tracks)
+        let models = StarModels {
+            tracks: self.tracks,
+            magnitudes: Some(&self.magnitudes),
+            layer: HydrogenLayer::Thick,
+        };
+        describe(teff_k, log_g, &covariance, Some(parameters.radial_velocity_km_s[0]), None, &models)
     }
 }
 

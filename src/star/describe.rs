@@ -1,7 +1,7 @@
 //! From (Teff, log g) and their covariance to the star, with asymmetric errors and flags.
 //!
 //! The value is that at the fitted parameters. The interval comes from 512 points that fill the
-//! two-dimensional normal distribution of the covariance evenly (an additive recurrence, the same for every
+//! normal distribution of the covariance (and of the given magnitude) evenly (an additive recurrence, the same for every
 //! star), each taken through the tracks: 16th, 50th and 84th percentile, so that curvature and correlation are
 //! kept. Points outside the tracks are left out and counted. Sampling noise of an error is below 2 %
 //! (test `verif_star_errors_linear_limit`).
@@ -10,11 +10,13 @@ use std::sync::LazyLock;
 
 use statrs::distribution::{ContinuousCDF, Normal};
 
+use super::models::{ApparentMagnitude, StarModels};
 use super::progenitor::{final_mass_range_msun, initial_mass_msun};
-use super::values::{Star, StarReport, StarValue};
+use super::values::{AbsoluteMagnitudes, Star, StarReport, StarValue};
 use crate::codes::{self, Flag};
-use crate::grid::track_table::{OutsideTracks, TrackPoint, TrackTable};
-use crate::interior::structure::HydrogenLayer;
+use crate::grid::magnitude_table::Magnitudes;
+use crate::grid::passband::BANDS;
+use crate::grid::track_table::{OutsideTracks, TrackPoint};
 use crate::physics::constants::{
     GRAVITATION_CGS, LIGHT_SPEED_CM_S, LIGHT_SPEED_KM_S, SOLAR_LUMINOSITY_ERG_S, SOLAR_MASS_G,
     SOLAR_RADIUS_CM, STEFAN_BOLTZMANN_CGS,
@@ -32,29 +34,39 @@ const CARBON_OR_NEON_MSUN: f64 = 1.05;
 /// Speed of escape from the Galaxy near the Sun: 528 km/s (Deason et al. 2019, MNRAS 485, 3514).
 const ESCAPE_SPEED_KM_S: f64 = 528.0;
 
-/// Place of the progenitor mass in [`quantities`].
+/// Place of the progenitor mass in [`Quantities`], of the first magnitude, and of the distance.
 const PROGENITOR: usize = 5;
+const FIRST_MAGNITUDE: usize = 7;
+const DISTANCE: usize = FIRST_MAGNITUDE + BANDS.len();
 
-/// Standard normal pairs that fill the plane evenly.
-static NORMAL_PAIRS: LazyLock<Vec<[f64; 2]>> = LazyLock::new(|| {
-    // Additive recurrence with the two-dimensional analogue of the golden ratio, x^3 = x + 1.
-    const PLASTIC: f64 = 1.324_717_957_244_746;
+/// Everything reported of one place in the tracks, in the order of [`Star`].
+type Quantities = [Option<f64>; DISTANCE + 1];
+
+/// Standard normal triples that fill space evenly.
+static NORMAL_TRIPLES: LazyLock<Vec<[f64; 3]>> = LazyLock::new(|| {
+    // Additive recurrence with the three-dimensional analogue of the golden ratio, x^4 = x + 1.
+    const RATIO: f64 = 1.220_744_084_605_759_5;
     let normal = Normal::standard();
     (1..=SAMPLES)
         .map(|i| {
             let at = |step: f64| normal.inverse_cdf((0.5 + i as f64 * step).fract());
-            [at(1.0 / PLASTIC), at(1.0 / (PLASTIC * PLASTIC))]
+            [at(RATIO.powi(-1)), at(RATIO.powi(-2)), at(RATIO.powi(-3))]
         })
         .collect()
 });
 
-/// Everything reported of one point of the tracks, in the order of [`Star`].
-fn quantities(point: &TrackPoint, teff_k: f64) -> [Option<f64>; 7] {
+fn quantities(
+    point: &TrackPoint,
+    teff_k: f64,
+    magnitudes: Option<Magnitudes>,
+    apparent: Option<&ApparentMagnitude>,
+) -> Quantities {
     let radius_cm = point.radius_rsun * SOLAR_RADIUS_CM;
     let mass_g = point.mass_msun * SOLAR_MASS_G;
     let area = 4.0 * std::f64::consts::PI * radius_cm * radius_cm;
     let compactness = 2.0 * GRAVITATION_CGS * mass_g / (radius_cm * LIGHT_SPEED_CM_S * LIGHT_SPEED_CM_S);
-    [
+    let mut all = [None; DISTANCE + 1];
+    all[..FIRST_MAGNITUDE].copy_from_slice(&[
         Some(point.mass_msun),
         Some(point.radius_rsun),
         Some(area * STEFAN_BOLTZMANN_CGS * teff_k.powi(4) / SOLAR_LUMINOSITY_ERG_S),
@@ -62,7 +74,12 @@ fn quantities(point: &TrackPoint, teff_k: f64) -> [Option<f64>; 7] {
         Some(point.age_gyr),
         initial_mass_msun(point.mass_msun),
         Some(3.0 * mass_g / (area * radius_cm)),
-    ]
+    ]);
+    if let Some(magnitudes) = magnitudes {
+        all[FIRST_MAGNITUDE..DISTANCE].copy_from_slice(&magnitudes.map(Some));
+        all[DISTANCE] = apparent.map(|apparent| apparent.distance_pc(&magnitudes));
+    }
+    all
 }
 
 /// Lower triangle of the square root of a covariance, `None` if it is not one.
@@ -94,7 +111,7 @@ fn percentiles(mut values: Vec<f64>) -> Option<[f64; 3]> {
     Some([at(0.158_655), at(0.5), at(0.841_345)])
 }
 
-/// Describes the star, with a thick hydrogen layer; see the module's head.
+/// Describes the star; see the module's head.
 ///
 /// # Units
 /// `covariance` is that of (Teff in K, log g in dex).
@@ -103,20 +120,13 @@ pub fn describe(
     log_g: f64,
     covariance: &[[f64; 2]; 2],
     radial_velocity_km_s: Option<f64>,
-    tracks: &TrackTable,
+    apparent: Option<&ApparentMagnitude>,
+    models: &StarModels<'_>,
 ) -> StarReport {
-    describe_in_layer(teff_k, log_g, covariance, radial_velocity_km_s, tracks, HydrogenLayer::Thick)
-}
-
-/// Like [`describe`], for a chosen thickness of the hydrogen layer.
-pub fn describe_in_layer(
-    teff_k: f64,
-    log_g: f64,
-    covariance: &[[f64; 2]; 2],
-    radial_velocity_km_s: Option<f64>,
-    tracks: &TrackTable,
-    layer: HydrogenLayer,
-) -> StarReport {
+    let StarModels { tracks, magnitudes, layer } = *models;
+    let magnitudes_at = |teff_k: f64, log_g: f64, radius_rsun: f64| {
+        magnitudes.and_then(|table| table.at(teff_k, log_g, radius_rsun))
+    };
     let mut report = StarReport::default();
     let best = match tracks.at(teff_k, log_g, layer) {
         Ok(best) => best,
@@ -129,18 +139,23 @@ pub fn describe_in_layer(
             return report;
         }
     };
-    let values = quantities(&best, teff_k);
+    let best_magnitudes = magnitudes_at(teff_k, log_g, best.radius_rsun);
+    let values = quantities(&best, teff_k, best_magnitudes, apparent);
 
-    let mut columns: [Vec<f64>; 7] = Default::default();
+    let mut columns: [Vec<f64>; DISTANCE + 1] = Default::default();
     if let Some([a, b, c]) = square_root(covariance) {
         let mut outside = 0;
-        for [u, v] in NORMAL_PAIRS.iter() {
+        for [u, v, w] in NORMAL_TRIPLES.iter() {
             let (t, g) = (teff_k + a * u, log_g + b * u + c * v);
             let Ok(point) = tracks.at(t, g, layer) else {
                 outside += 1;
                 continue;
             };
-            for (column, value) in columns.iter_mut().zip(quantities(&point, t)) {
+            let magnitudes = magnitudes_at(t, g, point.radius_rsun);
+            // The noise of the magnitude itself: a third direction, independent of the other two.
+            let apparent = apparent.map(|apparent| apparent.moved(*w));
+            let all = quantities(&point, t, magnitudes, apparent.as_ref());
+            for (column, value) in columns.iter_mut().zip(all) {
                 column.extend(value);
             }
         }
@@ -180,7 +195,23 @@ pub fn describe_in_layer(
         cooling_age_gyr: next(),
         progenitor_mass_msun: next(),
         mean_density_g_cm3: next(),
+        absolute_magnitude: AbsoluteMagnitudes {
+            gaia_g: next(),
+            gaia_bp: next(),
+            gaia_rp: next(),
+            sdss_u: next(),
+            sdss_g: next(),
+            sdss_r: next(),
+            sdss_i: next(),
+            sdss_z: next(),
+            johnson_v: next(),
+        },
+        distance_pc: next(),
     };
+    if magnitudes.is_some() && best_magnitudes.is_none() {
+        let detail = format!("Teff {teff_k:.0} K, log g {log_g:.2} lies outside the grid of model spectra");
+        report.flags.push(Flag::new(&codes::NO_MAGNITUDES, detail));
+    }
     report.flags.extend(flags_of(&report.star, best.mass_msun, radial_velocity_km_s));
     report
 }

@@ -35,6 +35,35 @@ pub struct Star {
     pub progenitor_mass_msun: StarValue,
     /// Mean density, g/cm3.
     pub mean_density_g_cm3: StarValue,
+    /// Magnitudes at 10 pc, without interstellar extinction.
+    pub absolute_magnitude: AbsoluteMagnitudes,
+    /// Distance at which the star has the given magnitude, pc, without interstellar extinction; `null`
+    /// where no magnitude is given.
+    pub distance_pc: StarValue,
+}
+
+/// Magnitudes at 10 pc: Gaia DR3 and Johnson in their own (Vega) systems, SDSS in AB.
+#[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(deny_unknown_fields)]
+pub struct AbsoluteMagnitudes {
+    /// Gaia DR3 G.
+    pub gaia_g: StarValue,
+    /// Gaia DR3 BP.
+    pub gaia_bp: StarValue,
+    /// Gaia DR3 RP.
+    pub gaia_rp: StarValue,
+    /// SDSS u.
+    pub sdss_u: StarValue,
+    /// SDSS g.
+    pub sdss_g: StarValue,
+    /// SDSS r.
+    pub sdss_r: StarValue,
+    /// SDSS i.
+    pub sdss_i: StarValue,
+    /// SDSS z.
+    pub sdss_z: StarValue,
+    /// Johnson V.
+    pub johnson_v: StarValue,
 }
 
 /// A star with the flags raised on the way.

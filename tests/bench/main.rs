@@ -7,9 +7,11 @@ mod reading;
 
 use std::path::Path;
 
+use emberline::grid::FluxGrid;
+use emberline::grid::magnitude_table::MagnitudeTable;
 use emberline::grid::track_table::TrackTable;
 use emberline::interior::structure::HydrogenLayer;
-use emberline::star::describe;
+use emberline::star::{StarModels, describe};
 
 fn main() {
     divan::main();
@@ -17,6 +19,17 @@ fn main() {
 
 fn tracks() -> TrackTable {
     TrackTable::read(&Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/tracks.fits")).unwrap()
+}
+
+fn flux_grid() -> FluxGrid {
+    FluxGrid::read(&Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/flux.fits")).unwrap()
+}
+
+/// Magnitudes of all nodes, once per process.
+#[divan::bench(sample_count = 10)]
+fn magnitudes_of_the_grid(bencher: divan::Bencher) {
+    let grid = flux_grid();
+    bencher.bench(|| MagnitudeTable::new(&grid));
 }
 
 /// (Teff, log g) to mass, radius and age.
@@ -30,6 +43,8 @@ fn track_lookup(bencher: divan::Bencher) {
 #[divan::bench]
 fn star_block(bencher: divan::Bencher) {
     let tracks = tracks();
+    let magnitudes = MagnitudeTable::new(&flux_grid());
+    let models = StarModels { tracks: &tracks, magnitudes: Some(&magnitudes), layer: HydrogenLayer::Thick };
     let covariance = [[3e4, 2.0], [2.0, 2e-3]];
-    bencher.bench(|| describe(divan::black_box(14_321.0), 8.03, &covariance, Some(40.0), &tracks));
+    bencher.bench(|| describe(divan::black_box(14_321.0), 8.03, &covariance, Some(40.0), None, &models));
 }

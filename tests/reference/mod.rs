@@ -4,6 +4,7 @@ mod constants;
 mod hydrogen;
 mod interior;
 mod least_squares;
+mod magnitudes;
 mod molecule;
 mod opacity;
 mod planck;

@@ -11,12 +11,24 @@ use emberline::interior::cooling::cooling_track;
 use emberline::interior::core::Core;
 use emberline::interior::structure::HydrogenLayer::{self, Thick, Thin};
 use emberline::star::three_d::correct_3d;
-use emberline::star::{Star, StarValue, describe};
+use emberline::star::{Star, StarModels, StarReport, StarValue};
 
 static TRACKS: LazyLock<TrackTable> = LazyLock::new(|| TrackTable::read(&table_path()).unwrap());
 
 fn table_path() -> std::path::PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).join("grids/tracks.fits")
+}
+
+/// The star without magnitudes.
+fn describe(
+    teff_k: f64,
+    log_g: f64,
+    covariance: &[[f64; 2]; 2],
+    radial_velocity_km_s: Option<f64>,
+    tracks: &TrackTable,
+) -> StarReport {
+    let models = StarModels { tracks, magnitudes: None, layer: Thick };
+    emberline::star::describe(teff_k, log_g, covariance, radial_velocity_km_s, None, &models)
 }
 
 const NO_ERRORS: [[f64; 2]; 2] = [[0.0; 2]; 2];

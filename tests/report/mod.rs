@@ -8,7 +8,7 @@ use emberline::report::{
     report_file, schema, write_atomically,
 };
 use emberline::spectrum::{ObjectRecord, Observation, ReadSettings, SourceRecord};
-use emberline::star::{Star, StarValue};
+use emberline::star::{AbsoluteMagnitudes, Star, StarValue};
 
 use crate::support::folder;
 
@@ -26,6 +26,8 @@ fn star() -> Star {
         cooling_age_gyr: value(0.2),
         progenitor_mass_msun: value(1.7),
         mean_density_g_cm3: value(4e5),
+        absolute_magnitude: AbsoluteMagnitudes { gaia_g: value(11.3), ..AbsoluteMagnitudes::default() },
+        distance_pc: value(40.0),
     }
 }
 
