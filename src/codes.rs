@@ -212,7 +212,7 @@ codes! {
     SCREEN_EMISSION = "screen.emission", Reject,
         "the Balmer windows show emission, not absorption", "not a single DA white dwarf";
     SCREEN_NARROW_LINES = "screen.narrow-lines", Reject,
-        "the Balmer lines are narrower than those of any white dwarf in the grid",
+        "the Balmer lines are narrower than those of a white dwarf",
         "probably an A or B star or a hot subdwarf";
     SCREEN_NOT_EXPLAINED = "screen.not-explained", Reject,
         "no DA model comes near the data", "not a DA white dwarf, or a failed reduction";

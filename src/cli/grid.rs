@@ -15,6 +15,9 @@ use crate::grid::build::{Nodes, build_flux_grid};
 use crate::grid::place::{FLUX_FILE, PROFILE_FILE, grids_folder};
 use crate::grid::profile_table::{build_profile_table, tabulated_lines};
 
+/// Finished nodes between two lines of a build that nobody watches.
+const NODES_PER_LINE: u64 = 100;
+
 /// Arguments of `grid`.
 #[derive(Debug, Args)]
 pub struct GridArguments {
@@ -52,8 +55,15 @@ pub fn run(arguments: &GridArguments) -> CommandResult {
             bar.finish();
             let nodes = Nodes::bundled();
             let bar = progress_bar("atmospheres", nodes.teff_k.len() * nodes.log_g.len());
+            // Where no bar can be seen (a log file), a line now and then.
+            let on_node = || {
+                bar.inc(1);
+                if bar.is_hidden() && bar.position() % NODES_PER_LINE == 0 {
+                    let _ = writeln!(io::stderr(), "{} nodes done", bar.position());
+                }
+            };
             let built_at = jiff::Timestamp::now().strftime("%Y-%m-%dT%H:%M:%S").to_string();
-            let grid = build_flux_grid(&path, &nodes, &profiles, &built_at, &|| bar.inc(1))?;
+            let grid = build_flux_grid(&path, &nodes, &profiles, &built_at, &on_node)?;
             bar.finish();
             writeln!(out, "{} {}", path.display(), grid.header.blake3)?;
         }

@@ -25,9 +25,8 @@ const CALIBRATION_RMS: f64 = 0.02;
 const WEAK_CHOICE: f64 = 0.9;
 /// Hotter than this, line cores depart from LTE (Napiwotzki 1997, A&A 322, 256).
 const NLTE_TEFF_K: f64 = 45_000.0;
-/// A gravity this close to the lower edge of the grid (dex, or three standard deviations) means lines
-/// narrower than any white dwarf's.
-const NARROW_MARGIN: f64 = 0.06;
+/// Below this gravity the lines are narrower than a white dwarf's: hot subdwarfs reach 6.4 (common practice).
+const NARROW_LOG_G: f64 = 6.5;
 /// Statistical error of Teff (relative) and log g beyond which the parameters say nothing.
 const LARGEST_ERROR: (f64, f64) = (0.15, 0.5);
 
@@ -74,10 +73,8 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, spectrum: &Spectrum, grid: &
         let code = if rms > CALIBRATION_RMS { &codes::FIT_POOR } else { &codes::FIT_ERRORS_TOO_SMALL };
         flags.push(Flag::new(code, detail));
     }
-    let (log_g_first, _) = grid.log_g_range();
-    let margin = NARROW_MARGIN.max(3.0 * chosen.sigma(1));
-    if chosen.log_g - log_g_first < margin.min(0.3) {
-        let detail = format!("log g {:.2} against the edge {log_g_first} of the models", chosen.log_g);
+    if chosen.log_g < NARROW_LOG_G {
+        let detail = format!("log g {:.2}, below {NARROW_LOG_G}", chosen.log_g);
         flags.push(Flag::new(&codes::SCREEN_NARROW_LINES, detail));
     } else if chosen.is_at_edge {
         let detail = format!("Teff {:.0} K, log g {:.2}", chosen.teff_k, chosen.log_g);

@@ -3,6 +3,11 @@
 use emberline::fit::{FitSettings, Fitter};
 use emberline::spectrum::ReadSettings;
 
+use emberline::grid::magnitude_table::MagnitudeTable;
+use emberline::grid::track_table::TrackTable;
+use emberline::interior::structure::HydrogenLayer::Thick;
+use emberline::star::{ApparentMagnitude, StarModels, describe};
+
 use crate::support::published::{STANDARDS, bundled_grid, read_one};
 
 /// How far a star may be from the literature.
@@ -48,4 +53,32 @@ fn validate_standard_stars() {
     }
     println!("{} of {} within 8 % and 0.25 dex", STANDARDS.len() - missed.len(), STANDARDS.len());
     assert_eq!(missed, EXCEPTIONS, "stars off the literature");
+}
+
+/// Spectroscopic distances of the STIS standards, from our own fits and V (Landolt & Uomoto 2007), against Gaia's
+/// parallaxes (both from memory): an outside check of log g, of which 0.05 is 4 % of the distance. The
+/// published parameters of GD 71 and GD 153 (log g 7.93) put them 5 and 7 % too near, ours 5 and 3 % too far.
+#[test]
+fn validate_distances_of_standard_stars() {
+    let grid = bundled_grid();
+    let fitter = Fitter::new(grid, FitSettings::default());
+    let tracks =
+        TrackTable::read(std::path::Path::new(concat!(env!("CARGO_MANIFEST_DIR"), "/grids/tracks.fits")));
+    let tracks = tracks.unwrap();
+    let magnitudes = MagnitudeTable::new(grid);
+    let models = StarModels { tracks: &tracks, magnitudes: Some(&magnitudes), layer: Thick };
+    for (name, file, v, parallax_mas) in [
+        ("GD 71", "gd71_stisnic_002", 13.033, 19.56),
+        ("GD 153", "gd153_stisnic_002", 13.349, 14.59),
+        ("G191-B2B", "g191b2b_stisnic_002", 11.781, 19.0),
+    ] {
+        let spectrum = read_one(&format!("tests/data/calspec/{file}.fits.gz"), &ReadSettings::default());
+        let fit = fitter.fit(&spectrum).unwrap();
+        let (teff_k, log_g) = (fit.chosen().teff_k, fit.chosen().log_g);
+        let apparent = ApparentMagnitude::new("johnson_v", v, 0.01).unwrap();
+        let star = describe(teff_k, log_g, &[[0.0; 2]; 2], None, Some(&apparent), &models).star;
+        let (found, published) = (star.distance_pc.value.unwrap(), 1000.0 / parallax_mas);
+        println!("{name}: {teff_k:.0} K, {log_g:.3}: {found:.1} pc, parallax {published:.1} pc");
+        assert!((found / published - 1.0).abs() < 0.08, "{name}: {found} for {published}");
+    }
 }
