@@ -199,6 +199,9 @@ codes! {
     FIT_THREE_D = "fit.three-d", Note,
         "parameters of one-dimensional models were corrected for three-dimensional convection, or could not be",
         "none needed; both values are in `solutions`";
+    FIT_BEYOND_LTE = "fit.beyond-lte", Review,
+        "hotter than 60 000 K, where hydrogen lines can no longer be fitted in local thermodynamic equilibrium",
+        "the star is hot and hydrogen-rich; take its parameters from models without that assumption";
     FIT_NLTE = "fit.nlte", Note,
         "so hot that line cores depart from LTE: Teff comes out a few per cent too high",
         "use the value with an error of 5 %";
@@ -242,6 +245,9 @@ codes! {
     VELOCITY_IMPLAUSIBLE = "star.velocity-implausible", Review,
         "the radial velocity less the gravitational redshift is faster than escape from the Galaxy",
         "check the wavelength calibration and whether the wavelengths are in air or vacuum";
+    INSTABILITY_STRIP = "star.instability-strip", Note,
+        "the star lies where DA white dwarfs pulsate (ZZ Ceti candidate)",
+        "time-series photometry would tell; the spectrum is a mean over the pulsation";
     ERRORS_TRUNCATED = "star.errors-truncated", Note,
         "part of the error ellipse lies outside the cooling tracks, so the intervals are too narrow",
         "quote the intervals as lower limits";

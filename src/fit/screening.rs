@@ -25,6 +25,8 @@ const CALIBRATION_RMS: f64 = 0.02;
 const WEAK_CHOICE: f64 = 0.9;
 /// Hotter than this, line cores depart from LTE (Napiwotzki 1997, A&A 322, 256).
 const NLTE_TEFF_K: f64 = 45_000.0;
+/// Hotter than this, the wings do as well (same source).
+const LTE_LIMIT_K: f64 = 60_000.0;
 /// Below this gravity the lines are narrower than a white dwarf's: hot subdwarfs reach 6.4 (common practice).
 const NARROW_LOG_G: f64 = 6.5;
 /// Statistical error of Teff (relative) and log g beyond which the parameters say nothing.
@@ -108,7 +110,9 @@ pub fn screen(fit: &Fit, objective: &Objective<'_>, spectrum: &Spectrum, grid: &
             flags.push(Flag::new(line.code, detail));
         }
     }
-    if chosen.teff_k > NLTE_TEFF_K {
+    if chosen.teff_k > LTE_LIMIT_K {
+        flags.push(Flag::new(&codes::FIT_BEYOND_LTE, format!("Teff {:.0} K", chosen.teff_k)));
+    } else if chosen.teff_k > NLTE_TEFF_K {
         flags.push(Flag::new(&codes::FIT_NLTE, format!("Teff {:.0} K", chosen.teff_k)));
     }
     let (teff_error, log_g_error) = (chosen.sigma(0) / chosen.teff_k, chosen.sigma(1));

@@ -31,6 +31,11 @@ const LEAST_SINGLE_STAR_MSUN: f64 = 0.45;
 const HELIUM_OR_CARBON_MSUN: (f64, f64) = (0.40, 0.50);
 /// Above it carbon may have burned to oxygen and neon.
 const CARBON_OR_NEON_MSUN: f64 = 1.05;
+/// Edges of the instability strip as log g = slope Teff + constant, cool and hot, for parameters corrected for
+/// three-dimensional convection (Tremblay et al. 2015, ApJ 809, 148, as written down by Hermes et al. 2017, ApJS
+/// 232, 23; from memory): 10 580 - 12 520 K at log g 8.
+const STRIP_COOL_EDGE: (f64, f64) = (8.066_30e-4, -0.530_39);
+const STRIP_HOT_EDGE: (f64, f64) = (5.969_23e-4, 0.524_31);
 /// Speed of escape from the Galaxy near the Sun: 528 km/s (Deason et al. 2019, MNRAS 485, 3514).
 const ESCAPE_SPEED_KM_S: f64 = 528.0;
 
@@ -212,8 +217,17 @@ pub fn describe(
         let detail = format!("Teff {teff_k:.0} K, log g {log_g:.2} lies outside the grid of model spectra");
         report.flags.push(Flag::new(&codes::NO_MAGNITUDES, detail));
     }
+    if is_in_instability_strip(teff_k, log_g) {
+        let detail = format!("Teff {teff_k:.0} K, log g {log_g:.2}");
+        report.flags.push(Flag::new(&codes::INSTABILITY_STRIP, detail));
+    }
     report.flags.extend(flags_of(&report.star, best.mass_msun, radial_velocity_km_s));
     report
+}
+
+fn is_in_instability_strip(teff_k: f64, log_g: f64) -> bool {
+    let edge = |(slope, constant): (f64, f64)| (log_g - constant) / slope;
+    (edge(STRIP_COOL_EDGE)..=edge(STRIP_HOT_EDGE)).contains(&teff_k)
 }
 
 /// Flags that a found star earns.

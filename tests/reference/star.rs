@@ -363,3 +363,16 @@ fn verif_tracks_command() {
     let fault = emberline::cli::tracks::run(&line.tracks).unwrap_err();
     assert_eq!(fault.to_string(), "cannot use the track table");
 }
+
+/// Known pulsators lie in the strip, G 29-38 (11 910 K, 8.17) and GD 154 (11 000 K, 8.1); EG 274 and LTT 3218
+/// do not (common practice).
+#[test]
+fn validate_instability_strip() {
+    for (teff_k, log_g, expected) in
+        [(11_910.0, 8.17, true), (11_000.0, 8.1, true), (26_000.0, 8.0, false), (9_300.0, 8.0, false)]
+    {
+        let flags = describe(teff_k, log_g, &NO_ERRORS, None, &TRACKS).flags;
+        let found = flags.iter().any(|flag| flag.code == "star.instability-strip");
+        assert_eq!(found, expected, "{teff_k} K, {log_g}");
+    }
+}
