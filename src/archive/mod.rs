@@ -9,5 +9,14 @@ mod ledger_schema;
 /// What the ledger tells.
 mod ledger_views;
 
+/// The catalogue's columns: names, types, units, descriptions, and where they come from.
+pub mod column;
+
+/// The catalogue's rows.
+pub mod catalogue;
+
+/// The catalogue as files of other formats.
+pub mod export;
+
 /// How the results of two runs differ.
 pub mod comparison;

@@ -1,0 +1,117 @@
+//! The catalogue as a file: CSV, ECSV, VOTable, FITS or Parquet.
+//!
+//! Rows are streamed from the database to the file, so that memory does not grow with the catalogue.
+//! The file appears under its name only when it is whole.
+
+mod fits;
+mod parquet;
+mod text;
+mod votable;
+
+use std::fs::{self, File};
+use std::io::{self, BufWriter, Write};
+use std::path::{Path, PathBuf};
+
+use super::catalogue::{Catalogue, CatalogueError, Filter};
+use super::column::Cell;
+
+/// Format of an export.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, clap::ValueEnum)]
+pub enum Format {
+    /// FITS binary table.
+    Fits,
+    /// VOTable 1.4.
+    Votable,
+    /// Apache Parquet.
+    Parquet,
+    /// Enhanced CSV with units and descriptions.
+    Ecsv,
+    /// Plain CSV.
+    Csv,
+}
+
+/// An export could not be made.
+#[derive(Debug, thiserror::Error)]
+pub enum ExportError {
+    /// The catalogue failed.
+    #[error(transparent)]
+    Catalogue(#[from] CatalogueError),
+    /// The file could not be written.
+    #[error("cannot write {}", path.display())]
+    Write {
+        /// The file.
+        path: PathBuf,
+        /// Why.
+        source: io::Error,
+    },
+    /// A row could not be written.
+    #[error("cannot write a row of the export")]
+    Row(#[from] io::Error),
+}
+
+/// Writes the rows of a format.
+trait Sink {
+    fn write_row(&mut self, cells: &[Cell]) -> io::Result<()>;
+    fn finish(self: Box<Self>) -> io::Result<()>;
+}
+
+/// Writes the rows of a filter to a file; `on_row` is told of each. Returns the number of rows.
+///
+/// # Errors
+/// [`ExportError`]; then no file of that name is made or changed.
+pub fn export(
+    catalogue: &Catalogue,
+    filter: &Filter,
+    format: Format,
+    path: &Path,
+    on_row: &dyn Fn(),
+) -> Result<u64, ExportError> {
+    let temporary = path.with_extension("part");
+    let failed = |source| ExportError::Write { path: path.to_owned(), source };
+    let outcome = write_all(catalogue, filter, format, &temporary, on_row);
+    let count = match outcome {
+        Ok(count) => count,
+        Err(fault) => {
+            // What is left of it would only mislead; if it cannot be removed, the first fault matters more.
+            let _ = fs::remove_file(&temporary);
+            return Err(fault);
+        }
+    };
+    File::open(&temporary).and_then(|file| file.sync_all()).map_err(failed)?;
+    fs::rename(&temporary, path).map_err(failed)?;
+    Ok(count)
+}
+
+fn write_all(
+    catalogue: &Catalogue,
+    filter: &Filter,
+    format: Format,
+    path: &Path,
+    on_row: &dyn Fn(),
+) -> Result<u64, ExportError> {
+    let file = File::create(path).map_err(|source| ExportError::Write { path: path.to_owned(), source })?;
+    let out: BufWriter<File> = BufWriter::with_capacity(1 << 18, file);
+    let mut sink: Box<dyn Sink> = match format {
+        Format::Csv => Box::new(text::Csv::new(out)?),
+        Format::Ecsv => Box::new(text::Csv::with_description(out)?),
+        Format::Votable => Box::new(votable::Votable::new(out)?),
+        Format::Parquet => Box::new(parquet::Parquet::new(out)?),
+        Format::Fits => {
+            Box::new(fits::FitsTable::new(out, catalogue.count(filter)?, &catalogue.widths(filter)?)?)
+        }
+    };
+    let mut count = 0;
+    catalogue.for_each(filter, |cells| {
+        sink.write_row(cells)?;
+        count += 1;
+        on_row();
+        Ok::<(), ExportError>(())
+    })?;
+    sink.finish()?;
+    Ok(count)
+}
+
+/// Flushes a buffer and says whether that worked.
+fn flush(mut out: impl Write) -> io::Result<()> {
+    out.flush()
+}
