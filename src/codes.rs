@@ -260,9 +260,6 @@ codes! {
     SERVICE_TABLES = "service.cannot-read-tables", Reject,
         "the model spectra or the evolutionary tracks could not be read",
         "check them with `emberline grid check` and `emberline tracks check`, then start the daemon again";
-    SERVICE_INSTRUMENT = "service.instrument-not-supported", Reject,
-        "an instrument section asks for something that the readers cannot do",
-        "change the section; `emberline check` shows it";
     SERVICE_TIME_LIMIT = "service.time-limit", Reject,
         "the file took longer than workers.time_limit_s, so its thread was given up",
         "raise workers.time_limit_s and run `emberline refit --failed`, or report it with the input file";

@@ -15,7 +15,7 @@ use std::path::{Path, PathBuf};
 
 use rusqlite::{Connection, OptionalExtension, Row, params};
 
-use super::ledger_schema;
+use super::{ledger_moves, ledger_schema};
 
 /// The ledger could not be used. There is no going on without it.
 #[derive(Debug, thiserror::Error)]
@@ -252,9 +252,13 @@ impl Ledger {
         let before: Option<String> = transaction
             .query_row("SELECT blake3 FROM files WHERE path = ?1", [path], |row| row.get(0))
             .optional()?;
-        let is_replacement = before.as_deref().is_some_and(|before| before != blake3);
-        if is_replacement {
+        let replaces_moved = ledger_moves::replace_moved(&transaction, path, blake3)?;
+        let replaces_present = before.as_deref().is_some_and(|before| before != blake3);
+        let is_replacement = replaces_present || replaces_moved;
+        if replaces_present {
             transaction.execute("INSERT OR IGNORE INTO replaced VALUES (?1, ?2)", params![path, before])?;
+        }
+        if is_replacement {
             transaction
                 .execute("DELETE FROM replaced WHERE path = ?1 AND blake3 = ?2", params![path, blake3])?;
         }
@@ -424,6 +428,17 @@ impl Ledger {
     /// The database cannot be written.
     pub fn finish(&mut self, job: &Job, documents: &[DocumentRecord], now_s: f64) -> Result<()> {
         self.close(job, documents, "done", None, now_s)
+    }
+
+    /// Records what went into the answer of a job; see [`Ledger::documents_of_answer`].
+    ///
+    /// # Errors
+    /// The database cannot be written.
+    pub fn note_answer(&mut self, job: &Job, answer: &str) -> Result<()> {
+        self.connection
+            .prepare_cached("UPDATE jobs SET answer = ?2 WHERE id = ?1")?
+            .execute(params![job.id, answer])?;
+        Ok(())
     }
 
     /// Records that the job will not be tried again: `state` is `rejected` or `failed`.

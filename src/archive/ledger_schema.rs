@@ -12,7 +12,7 @@ use rusqlite::Connection;
 use super::ledger::LedgerError;
 
 /// Migration number i brings the schema from version i to i + 1.
-const MIGRATIONS: [&str; 1] = [
+const MIGRATIONS: &[&str] = &[
     // files: what stands where, with the signature that tells whether it changed.
     // replaced: contents that once stood at a path; their reports lose `current` when the new
     // content is done. jobs.arrival is the order in which files were noticed, immune to clocks.
@@ -47,6 +47,13 @@ const MIGRATIONS: [&str; 1] = [
         report TEXT NOT NULL, pointer TEXT NOT NULL,
         catalogue_row TEXT NOT NULL,
         PRIMARY KEY (blake3, fingerprint, ordinal)
+     ) WITHOUT ROWID;",
+    // moved: finished files that were taken out of the inbox, or are about to be.
+    // jobs.answer names what really went into the answer, a part of what the fingerprint covers.
+    "ALTER TABLE jobs ADD COLUMN answer TEXT;
+     CREATE TABLE moved (
+        origin BLOB NOT NULL, path BLOB NOT NULL, blake3 TEXT NOT NULL, is_done INTEGER NOT NULL,
+        PRIMARY KEY (origin, path)
      ) WITHOUT ROWID;",
 ];
 

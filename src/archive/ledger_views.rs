@@ -4,7 +4,7 @@ use std::collections::BTreeMap;
 
 use rusqlite::params;
 
-use super::ledger::{JobCounts, Ledger, Priority, Result, Trouble};
+use super::ledger::{DocumentRecord, JobCounts, Ledger, Priority, Result, Trouble};
 
 impl Ledger {
     /// Counts jobs by state under `fingerprint`.
@@ -69,6 +69,31 @@ impl Ledger {
                 state: row.get(1)?,
                 code: row.get(2)?,
                 detail: row.get(3)?,
+            })
+        })?;
+        Ok(rows.collect::<rusqlite::Result<_>>()?)
+    }
+
+    /// The documents of an earlier job on this content that everything went into which goes into `answer`;
+    /// empty when there is none.
+    ///
+    /// # Errors
+    /// The database cannot be read.
+    pub fn documents_of_answer(&self, blake3: &str, answer: &str) -> Result<Vec<DocumentRecord>> {
+        let mut query = self.connection.prepare_cached(
+            "SELECT object_name, verdict, report, pointer, catalogue_row FROM documents
+             WHERE blake3 = ?1 AND fingerprint = (
+                SELECT fingerprint FROM jobs WHERE blake3 = ?1 AND answer = ?2 AND state = 'done'
+                ORDER BY finished_at_s DESC LIMIT 1)
+             ORDER BY ordinal",
+        )?;
+        let rows = query.query_map([blake3, answer], |row| {
+            Ok(DocumentRecord {
+                object_name: row.get(0)?,
+                verdict: row.get(1)?,
+                report: row.get(2)?,
+                pointer: row.get(3)?,
+                catalogue_row: row.get(4)?,
             })
         })?;
         Ok(rows.collect::<rusqlite::Result<_>>()?)

@@ -6,6 +6,9 @@ pub mod ledger;
 /// Opening and migrating the ledger's database.
 mod ledger_schema;
 
+/// Finished files that were moved out of the watched folders.
+pub mod ledger_moves;
+
 /// What the ledger tells.
 mod ledger_views;
 

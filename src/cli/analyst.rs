@@ -4,47 +4,58 @@ use std::path::Path;
 use std::sync::{Arc, OnceLock};
 
 use serde::Serialize;
-use serde::de::DeserializeOwned;
 
 use super::Tables;
 use crate::codes;
 use crate::fit::FitSettings;
 use crate::report::{Analysis, error_chain, report_file};
 use crate::service::analyst::{Analyst, AnalystFactory, Document, Fault};
-use crate::service::config::{Config, InstrumentConfig};
-use crate::spectrum::{Assumptions, ReadSettings};
+use crate::service::config::Config;
+use crate::spectrum::{ReadSettings, instruments_of};
 
-/// Header keyword by which the readers look up an instrument's settings.
-const INSTRUMENT_KEYWORD: &str = "INSTRUME";
+/// The tables, read once; they stay for the life of the process.
+///
+/// # Errors
+/// Missing or damaged tables.
+pub(super) fn shared_tables() -> Result<&'static Tables, Fault> {
+    static TABLES: OnceLock<Tables> = OnceLock::new();
+    match TABLES.get() {
+        Some(tables) => Ok(tables),
+        None => {
+            let read = Tables::read()
+                .map_err(|fault| Fault::stop(&codes::SERVICE_TABLES, error_chain(fault.as_ref())))?;
+            Ok(TABLES.get_or_init(|| read))
+        }
+    }
+}
 
-/// Makes the analyst of a configuration; the tables stay for the life of the process.
+/// Makes the analyst of a configuration.
 pub fn factory() -> AnalystFactory {
     Arc::new(|config| {
-        static TABLES: OnceLock<Tables> = OnceLock::new();
-        let tables = match TABLES.get() {
-            Some(tables) => tables,
-            None => {
-                let read = Tables::read()
-                    .map_err(|fault| Fault::stop(&codes::SERVICE_TABLES, error_chain(fault.as_ref())))?;
-                TABLES.get_or_init(|| read)
-            }
-        };
-        let settings = read_settings(config)?;
-        let analysis = Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default());
-        let parts = [
-            env!("CARGO_PKG_VERSION"),
-            &tables.grid.header.blake3,
-            tables.tracks.checksum(),
-            &config.answer_fingerprint(),
-        ];
-        let fingerprint = blake3::hash(parts.join("\n").as_bytes()).to_hex()[..32].to_owned();
-        Ok(Arc::new(DaemonAnalyst { analysis, settings, fingerprint }))
+        let tables = shared_tables()?;
+        let settings = read_settings(config);
+        let analysis = Analysis::new(&tables.grid, &tables.tracks, &config.fit);
+        let fingerprint = answer_fingerprint(tables, config);
+        Ok(Arc::new(DaemonAnalyst { analysis, settings, fit: config.fit.clone(), tables, fingerprint }))
     })
+}
+
+/// Names everything that can change an answer: program, tables, and the part of the configuration that
+/// matters; 32 hex digits.
+pub(super) fn answer_fingerprint(tables: &Tables, config: &Config) -> String {
+    hash_with_tables(tables, &config.answer_fingerprint())
+}
+
+fn hash_with_tables(tables: &Tables, rest: &str) -> String {
+    let parts = [env!("CARGO_PKG_VERSION"), &tables.grid.header.blake3, tables.tracks.checksum(), rest];
+    blake3::hash(parts.join("\n").as_bytes()).to_hex()[..32].to_owned()
 }
 
 struct DaemonAnalyst {
     analysis: Analysis<'static>,
     settings: ReadSettings,
+    fit: FitSettings,
+    tables: &'static Tables,
     fingerprint: String,
 }
 
@@ -53,10 +64,19 @@ impl Analyst for DaemonAnalyst {
         self.fingerprint.clone()
     }
 
-    fn analyse(&self, path: &Path, _bytes_blake3: &str) -> Result<Vec<Document>, Fault> {
+    fn answer_key(&self, path: &Path) -> Option<String> {
+        let instruments = instruments_of(path, &self.settings)?;
+        let used = serde_json::to_string(&(&self.fit, instruments)).ok()?;
+        Some(hash_with_tables(self.tables, &used))
+    }
+
+    fn analyse(&self, path: &Path, bytes_blake3: &str) -> Result<Vec<Document>, Fault> {
         report_file(path, &self.settings, &self.analysis)
             .into_iter()
-            .map(|report| {
+            .map(|mut report| {
+                report.provenance.config_fingerprint = Some(self.fingerprint.clone());
+                // A file that could not even be opened as FITS has a hash as well.
+                report.source.blake3.get_or_insert_with(|| bytes_blake3.to_owned());
                 let json = serde_json::to_vec_pretty(&report).map_err(|fault| internal(&fault))?;
                 Ok(Document {
                     object_name: report.object.name.clone().unwrap_or_default(),
@@ -69,56 +89,15 @@ impl Analyst for DaemonAnalyst {
     }
 }
 
-/// What the readers may assume, from the instrument sections.
-fn read_settings(config: &Config) -> Result<ReadSettings, Fault> {
-    let mut settings = ReadSettings::default();
-    for instrument in &config.instrument {
-        let assumptions = Assumptions {
-            medium: instrument.medium.map(|medium| same_word(&medium)).transpose()?,
-            velocity_frame: instrument.velocity_frame.map(|frame| same_word(&frame)).transpose()?,
-            resolution_fwhm_aa: instrument.resolution_fwhm_aa,
-            resolving_power: instrument.resolving_power,
-            ..Assumptions::default()
-        };
-        check_supported(instrument)?;
-        match instrument.keywords.get(INSTRUMENT_KEYWORD) {
-            Some(value) => {
-                settings.instruments.insert(value.clone(), assumptions);
-            }
-            None => settings.assume = assumptions,
-        }
-    }
-    settings.check().map_err(|detail| Fault::stop(&codes::SERVICE_INSTRUMENT, detail))?;
-    Ok(settings)
+/// How the daemon reads files, by its configuration.
+pub(super) fn read_settings(config: &Config) -> ReadSettings {
+    ReadSettings { instruments: config.instrument.clone(), ..ReadSettings::default() }
 }
 
-/// Refuses what the readers cannot do yet, rather than leave it out in silence.
-fn check_supported(instrument: &InstrumentConfig) -> Result<(), Fault> {
-    let refuse = |what: &str| {
-        let detail =
-            format!("cannot use instrument {}: {what} is not supported by the readers", instrument.name);
-        Err(Fault::stop(&codes::SERVICE_INSTRUMENT, detail))
-    };
-    if instrument.keywords.keys().any(|keyword| keyword != INSTRUMENT_KEYWORD) {
-        return refuse("a match on other keywords than INSTRUME");
-    }
-    if !instrument.masks_vac_aa.is_empty() {
-        return refuse("masks_vac_aa");
-    }
-    if instrument.error_scale.is_some() {
-        return refuse("error_scale");
-    }
-    Ok(())
-}
-
-/// The same word in another layer's type.
-fn same_word<T: DeserializeOwned>(value: &impl Serialize) -> Result<T, Fault> {
+/// A value of an enumeration as the word that reports use.
+fn word(value: &impl Serialize) -> Result<String, Fault> {
     let value = serde_json::to_value(value).map_err(|fault| internal(&fault))?;
     serde_json::from_value(value).map_err(|fault| internal(&fault))
-}
-
-fn word(value: &impl Serialize) -> Result<String, Fault> {
-    same_word::<String>(value)
 }
 
 fn internal(fault: &dyn std::error::Error) -> Fault {

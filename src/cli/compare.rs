@@ -6,6 +6,7 @@ use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 
 use clap::Args;
+use indicatif::{ProgressBar, ProgressStyle};
 use serde_json::Value;
 use walkdir::WalkDir;
 
@@ -100,6 +101,9 @@ pub fn read_run(reports: &Path, run: &str) -> Result<Vec<Value>, CompareError> {
     let folder = if is_folder { Path::new(run) } else { reports };
     let mut found = Vec::new();
     let mut runs = Vec::new();
+    // How many there are is only known when all are read.
+    let style = ProgressStyle::with_template("reading {pos} reports, {per_sec}");
+    let bar = ProgressBar::no_length().with_style(style.unwrap_or_else(|_| ProgressStyle::default_spinner()));
     for entry in WalkDir::new(folder).sort_by_file_name().into_iter().filter_map(Result::ok) {
         // <source>.<fingerprint or "current">.json
         let file_name = entry.file_name().to_string_lossy();
@@ -117,11 +121,13 @@ pub fn read_run(reports: &Path, run: &str) -> Result<Vec<Value>, CompareError> {
         if !runs.iter().any(|known| known == of_run) {
             runs.push(of_run.to_owned());
         }
+        bar.inc(1);
         let path = entry.path();
         let unreadable = |source| CompareError::Report { path: path.to_owned(), source };
         let bytes = fs::read(path).map_err(unreadable)?;
         found.push(serde_json::from_slice(&bytes).map_err(|error| unreadable(error.into()))?);
     }
+    bar.finish_and_clear();
     if runs.len() > 1 {
         return Err(CompareError::Ambiguous { run: run.to_owned(), found: runs });
     }

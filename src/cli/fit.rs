@@ -1,18 +1,19 @@
 //! `emberline fit FILE...`: one report per object, one line each, on stdout.
 
-use std::io::{self, IsTerminal, Write};
+use std::io::{self, Write};
 use std::path::PathBuf;
 use std::process::ExitCode;
 use std::time::Instant;
 
 use clap::Args;
-use indicatif::{ProgressBar, ProgressStyle};
+use indicatif::ProgressBar;
 use rayon::prelude::*;
 use serde::de::DeserializeOwned;
 
-use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, Tables};
-use crate::fit::FitSettings;
+use super::analyst::answer_fingerprint;
+use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, Tables, progress};
 use crate::report::{Analysis, Report, Verdict, report_file};
+use crate::service::config::Config;
 use crate::spectrum::{Assumptions, ErrorKind, FluxScale, Medium, ReadSettings, VelocityFrame, WaveUnit};
 
 /// Files read and fitted at once before their reports are printed, so that output streams.
@@ -26,6 +27,10 @@ pub struct FitArguments {
     /// Reduced FITS spectra, plain or compressed with gzip.
     #[arg(required = true, value_name = "FILE")]
     files: Vec<PathBuf>,
+
+    /// Configuration whose instrument sections and fit settings are used; none is read unless named.
+    #[arg(long, value_name = "FILE")]
+    config: Option<PathBuf>,
 
     /// Medium of the wavelengths, for files that do not state it: air or vacuum.
     #[arg(long, value_parser = word::<Medium>)]
@@ -74,7 +79,7 @@ pub struct FitArguments {
 }
 
 impl FitArguments {
-    fn settings(&self) -> ReadSettings {
+    fn settings(&self, config: &Config) -> ReadSettings {
         ReadSettings {
             assume: Assumptions {
                 medium: self.medium,
@@ -89,7 +94,7 @@ impl FitArguments {
             },
             row: self.row,
             largest_file_mb: self.largest_file_mb,
-            ..ReadSettings::default()
+            instruments: config.instrument.clone(),
         }
     }
 }
@@ -102,14 +107,24 @@ fn word<T: DeserializeOwned>(words: &str) -> Result<T, String> {
 /// Checks the options, then reads the tables, then reads, analyses and reports every object of every
 /// file.
 pub fn run(arguments: &FitArguments) -> CommandResult {
-    let settings = arguments.settings();
+    let config = match &arguments.config {
+        Some(path) => Config::read(Some(path))?.1,
+        None => Config::default(),
+    };
+    let settings = arguments.settings(&config);
     if let Err(detail) = settings.check() {
         writeln!(io::stderr(), "emberline: cannot use the options: {detail}")?;
         return Ok(ExitCode::from(EXIT_WRONG_USE));
     }
     let tables = Tables::read()?;
-    let pipeline = Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default());
-    let bar = progress_bar(arguments.files.len());
+    let pipeline = Analysis::new(&tables.grid, &tables.tracks, &config.fit);
+    let fingerprint = answer_fingerprint(&tables, &config);
+    let count = arguments.files.len();
+    let bar = if count > FEW_FILES {
+        progress::bar(count as u64, "fitting", "files")
+    } else {
+        ProgressBar::hidden()
+    };
     let started = Instant::now();
     let mut out = io::BufWriter::new(io::stdout().lock());
     let mut tally = Tally::default();
@@ -117,7 +132,10 @@ pub fn run(arguments: &FitArguments) -> CommandResult {
         let reports: Vec<Vec<Report>> = batch
             .par_iter()
             .map(|path| {
-                let reports = report_file(path, &settings, &pipeline);
+                let mut reports = report_file(path, &settings, &pipeline);
+                for report in &mut reports {
+                    report.provenance.config_fingerprint = Some(fingerprint.clone());
+                }
                 bar.inc(1);
                 reports
             })
@@ -132,15 +150,6 @@ pub fn run(arguments: &FitArguments) -> CommandResult {
     bar.finish_and_clear();
     tally.print(started.elapsed().as_secs_f64())?;
     Ok(if tally.rejected == 0 { ExitCode::SUCCESS } else { ExitCode::from(EXIT_INPUT_FAILED) })
-}
-
-fn progress_bar(files: usize) -> ProgressBar {
-    if files <= FEW_FILES || !io::stderr().is_terminal() {
-        return ProgressBar::hidden();
-    }
-    let style = ProgressStyle::with_template("{bar:40} {pos}/{len} files, {eta} left")
-        .unwrap_or_else(|_| ProgressStyle::default_bar());
-    ProgressBar::new(files as u64).with_style(style)
 }
 
 /// How many objects ended how.

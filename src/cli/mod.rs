@@ -9,6 +9,7 @@ mod codes;
 pub mod compare;
 pub mod fit;
 mod grid;
+mod progress;
 pub mod refit;
 mod rehearse;
 mod schema;

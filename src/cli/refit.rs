@@ -5,8 +5,8 @@ use std::process::ExitCode;
 use std::time::Duration;
 
 use clap::Args;
-use indicatif::{ProgressBar, ProgressStyle};
 
+use super::progress;
 use super::status::{AskError, ask, ask_status};
 use super::watch::{WatchArgs, run_daemon};
 use crate::service::analyst::AnalystFactory;
@@ -58,8 +58,8 @@ pub fn run(args: &RefitArgs, analysts: AnalystFactory) -> Result<ExitCode, Refit
         }
         Err(error) => return Err(error.into()),
     };
-    let bar = ProgressBar::new(report.queued as u64).with_style(style());
-    bar.set_message(format!("{:.8} -> {:.8}", report.fingerprint_before, report.fingerprint));
+    let bar = progress::bar(report.queued as u64, "refitting", "files");
+    bar.set_message(format!("refit {:.8} -> {:.8}", report.fingerprint_before, report.fingerprint));
     if !args.no_wait {
         loop {
             let jobs = ask_status(&config)?.jobs;
@@ -76,9 +76,4 @@ pub fn run(args: &RefitArgs, analysts: AnalystFactory) -> Result<ExitCode, Refit
     }
     bar.finish();
     Ok(ExitCode::SUCCESS)
-}
-
-fn style() -> ProgressStyle {
-    let template = "refit {msg} [{bar:30}] {pos}/{len}, {per_sec}, {eta} left";
-    ProgressStyle::with_template(template).unwrap_or_else(|_| ProgressStyle::default_bar())
 }

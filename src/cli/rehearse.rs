@@ -1,20 +1,28 @@
-//! `emberline rehearse`: an invented night, fitted by the real code, against its truth.
+//! `emberline rehearse`: an invented night, written as files, fitted by the daemon, against its truth.
+//!
+//! The night goes into an inbox folder as FITS files; the daemon of `emberline watch --drain` runs over it in
+//! this process; the reports that it wrote are read back and scored.
 
-use std::io::{self, IsTerminal, Write};
-use std::path::PathBuf;
+use std::error::Error;
+use std::fs;
+use std::io::{self, Write};
+use std::path::{Path, PathBuf};
 use std::process::ExitCode;
-use std::time::Instant;
+use std::sync::Arc;
+use std::time::{Instant, SystemTime};
 
 use clap::Args;
-use indicatif::{ProgressBar, ProgressStyle};
 use rayon::prelude::*;
 use serde_json::json;
 
-use super::{CommandResult, Tables};
-use crate::fit::FitSettings;
-use crate::rehearsal::{Region, Summary, observe, score, truth_table};
-use crate::report::{Analysis, report_observation, write_atomically};
-use crate::spectrum::{ObjectRecord, Observation, SourceRecord};
+use super::{CommandResult, analyst, progress};
+use crate::grid::FluxGrid;
+use crate::rehearsal::{Region, Sighting, Summary, fits_table, observe, page, score, truth_table};
+use crate::report::{Report, write_atomically};
+use crate::service::config::Config;
+use crate::service::daemon::{Daemon, EXIT_DONE, Options};
+use crate::service::output::ReportPlace;
+use crate::service::signals;
 
 /// Arguments of `rehearse`.
 #[derive(Debug, Args)]
@@ -25,7 +33,7 @@ pub struct RehearseArguments {
     /// Seed of the random numbers: the same seed gives the same night.
     #[arg(long, default_value_t = 1)]
     seed: u64,
-    /// Folder for the reports, one JSON file per object, and truth.csv; made if missing.
+    /// Folder to keep: `inbox` with the spectra, `reports`, `truth.csv`, and `index.html` with figures.
     #[arg(long, value_name = "DIR")]
     into: Option<PathBuf>,
     /// End with one line of JSON instead of a table.
@@ -33,48 +41,60 @@ pub struct RehearseArguments {
     json: bool,
 }
 
+/// The rehearsal could not be held.
+#[derive(Debug, thiserror::Error)]
+enum RehearsalFault {
+    /// An earlier one lies there.
+    #[error("cannot rehearse into {}: it has an inbox with files already (name another folder)", .0.display())]
+    Taken(PathBuf),
+    /// The daemon gave up or was interrupted.
+    #[error("cannot finish the rehearsal: the daemon ended with exit code {exit_code}{}", .why.as_ref().map(|why| format!(", {why}")).unwrap_or_default())]
+    DaemonEnded {
+        /// Its exit code.
+        exit_code: u8,
+        /// Its last words.
+        why: Option<String>,
+    },
+    /// A report is missing: the daemon was interrupted.
+    #[error("cannot finish the rehearsal: {name} has no report")]
+    NoReport {
+        /// The object.
+        name: String,
+        /// What the system said.
+        source: io::Error,
+    },
+}
+
 /// Runs the command.
 ///
 /// # Errors
-/// When the tables cannot be read or the reports cannot be written.
+/// When the tables cannot be read, the files cannot be written, or the daemon cannot finish.
 pub fn run(arguments: &RehearseArguments) -> CommandResult {
-    let tables = Tables::read()?;
-    let analysis = Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default());
-    if let Some(folder) = &arguments.into {
-        std::fs::create_dir_all(folder)?;
+    let tables = analyst::shared_tables()?;
+    let scratch = tempfile::Builder::new().prefix("emberline-rehearsal-").tempdir()?;
+    let folder = arguments.into.as_deref().unwrap_or(scratch.path());
+    let config = config(folder, scratch.path());
+    let inbox = &config.inbox.folders[0];
+    if fs::read_dir(inbox).is_ok_and(|mut entries| entries.next().is_some()) {
+        return Err(RehearsalFault::Taken(folder.to_owned()).into());
     }
-    let bar = progress_bar(arguments.stars);
-    let started = Instant::now();
-    let night = (0..arguments.stars)
+    fs::create_dir_all(inbox)?;
+    let night = write_night(&tables.grid, arguments, inbox)?;
+    let seconds = run_daemon(&config, arguments.stars)?;
+    let fingerprint = analyst::answer_fingerprint(tables, &config);
+    let night = night
         .into_par_iter()
-        .map(|number| {
-            let sighting = observe(&tables.grid, arguments.seed, number)?;
-            let object = ObjectRecord { name: Some(sighting.name.clone()), ..ObjectRecord::default() };
-            let observation = Observation {
-                spectrum: sighting.spectrum.clone(),
-                object,
-                source: SourceRecord {
-                    path: format!("rehearsal/{}", sighting.name),
-                    ..SourceRecord::default()
-                },
-                flags: Vec::new(),
-            };
-            let report = report_observation(observation, 0.0, &analysis);
-            bar.inc(1);
+        .map(|(sighting, blake3)| {
+            let report = read_report(&config.output.reports, &sighting, &blake3, &fingerprint)?;
             Ok((sighting, report))
         })
-        .collect::<Result<Vec<_>, crate::spectrum::SpectrumFault>>()?;
-    let seconds = started.elapsed().as_secs_f64();
-    bar.finish_and_clear();
+        .collect::<Result<Vec<_>, RehearsalFault>>()?;
+    let (summary, regions) = score(&night, seconds);
     if let Some(folder) = &arguments.into {
-        for (sighting, report) in &night {
-            let file = folder.join(format!("{}.json", sighting.name.replace(' ', "-")));
-            write_atomically(&file, &serde_json::to_vec_pretty(report)?)?;
-        }
         let sightings = night.iter().map(|(sighting, _)| sighting);
         write_atomically(&folder.join("truth.csv"), truth_table(sightings).as_bytes())?;
+        write_atomically(&folder.join("index.html"), page(arguments.seed, &night, &summary)?.as_bytes())?;
     }
-    let (summary, regions) = score(&night, seconds);
     let mut out = io::stdout().lock();
     if arguments.json {
         writeln!(out, "{}", json!({ "summary": summary }))?;
@@ -82,6 +102,75 @@ pub fn run(arguments: &RehearseArguments) -> CommandResult {
         print_table(&mut out, arguments.seed, &summary, &regions)?;
     }
     Ok(ExitCode::SUCCESS)
+}
+
+/// The defaults, with everything below one folder. The socket goes to the scratch folder, because the paths of
+/// sockets must be short.
+fn config(folder: &Path, scratch: &Path) -> Config {
+    let mut config = Config::default();
+    config.inbox.folders = vec![folder.join("inbox")];
+    // Everything is written before the daemon starts.
+    config.inbox.still_s = 0.0;
+    config.output.reports = folder.join("reports");
+    config.output.ledger = folder.join("ledger.sqlite");
+    config.service.socket = scratch.join("socket");
+    config
+}
+
+/// Invents the night and writes it; returns each object with the hash of its file.
+fn write_night(
+    grid: &FluxGrid,
+    arguments: &RehearseArguments,
+    inbox: &Path,
+) -> Result<Vec<(Sighting, String)>, Box<dyn Error>> {
+    let bar = progress::bar(arguments.stars, "observing", "spectra");
+    let written: Result<Vec<_>, Box<dyn Error + Send + Sync>> = (0..arguments.stars)
+        .into_par_iter()
+        .map(|number| {
+            let sighting = observe(grid, arguments.seed, number)?;
+            let bytes = fits_table(&sighting);
+            fs::write(inbox.join(format!("{}.fits", sighting.name.replace(' ', "-"))), &bytes)?;
+            bar.inc(1);
+            Ok((sighting, blake3::hash(&bytes).to_hex().to_string()))
+        })
+        .collect();
+    bar.finish_and_clear();
+    written.map_err(|fault| -> Box<dyn Error> { fault })
+}
+
+/// Runs the daemon until all is done; returns the seconds that it took.
+fn run_daemon(config: &Config, stars: u64) -> Result<f64, Box<dyn Error>> {
+    let source = config.clone();
+    let options = Options {
+        config: Box::new(move || Ok(source.clone())),
+        analysts: analyst::factory(),
+        clock: Arc::new(SystemTime::now),
+        is_drain: true,
+        log: None,
+    };
+    let started = Instant::now();
+    let (daemon, commands) = Daemon::start(options)?;
+    signals::forward(commands)?;
+    let ending = progress::run_daemon(daemon, &progress::bar(stars, "fitting", "spectra"));
+    let seconds = started.elapsed().as_secs_f64();
+    if ending.exit_code != EXIT_DONE {
+        let why = ending.fault.map(|fault| fault.to_string());
+        return Err(RehearsalFault::DaemonEnded { exit_code: ending.exit_code, why }.into());
+    }
+    Ok(seconds)
+}
+
+/// The report in force on one object.
+fn read_report(
+    reports: &Path,
+    sighting: &Sighting,
+    blake3: &str,
+    fingerprint: &str,
+) -> Result<Report, RehearsalFault> {
+    let place = ReportPlace::new(&sighting.name, blake3, 0, fingerprint);
+    let missing = |source| RehearsalFault::NoReport { name: sighting.name.clone(), source };
+    let bytes = fs::read(reports.join(&place.pointer)).map_err(missing)?;
+    serde_json::from_slice(&bytes).map_err(|fault| missing(fault.into()))
 }
 
 fn print_table(out: &mut impl Write, seed: u64, summary: &Summary, regions: &[Region]) -> io::Result<()> {
@@ -146,13 +235,4 @@ fn print_table(out: &mut impl Write, seed: u64, summary: &Summary, regions: &[Re
     )?;
     writeln!(out, "DA of S/N 15 or more, not accepted: {}", percent(summary.good_not_accepted_fraction))?;
     writeln!(out, "speed: {:.0} spectra per second", summary.spectra_per_s)
-}
-
-fn progress_bar(stars: u64) -> ProgressBar {
-    if !io::stderr().is_terminal() {
-        return ProgressBar::hidden();
-    }
-    let style = ProgressStyle::with_template("{bar:40} {pos}/{len} spectra, {eta} left")
-        .unwrap_or_else(|_| ProgressStyle::default_bar());
-    ProgressBar::new(stars).with_style(style)
 }

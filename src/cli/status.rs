@@ -95,8 +95,13 @@ pub fn render(status: &Status) -> String {
     );
     let _ = writeln!(
         text,
-        "ended     {} done, {} rejected, {} given up, {} gone; {} since the start",
-        jobs.done, jobs.rejected, jobs.failed, jobs.gone, status.ended_since_start
+        "ended     {} done, {} rejected, {} given up, {} gone; {} since the start ({} kept their answer)",
+        jobs.done,
+        jobs.rejected,
+        jobs.failed,
+        jobs.gone,
+        status.ended_since_start,
+        status.unchanged_since_start
     );
     let workers = status.workers;
     let _ = writeln!(

@@ -7,6 +7,7 @@ use std::time::SystemTime;
 
 use clap::Args;
 
+use super::progress;
 use crate::service::analyst::AnalystFactory;
 use crate::service::config::Config;
 use crate::service::daemon::{Command, Daemon, Options, StartError};
@@ -54,5 +55,10 @@ pub(super) fn run_daemon(
     }
     signals::forward(commands)
         .map_err(|source| StartError::System { attempted: "catching signals".to_owned(), source })?;
-    Ok(ExitCode::from(daemon.run().exit_code))
+    let ending = if args.drain {
+        progress::run_daemon(daemon, &progress::bar(0, "draining", "files"))
+    } else {
+        daemon.run()
+    };
+    Ok(ExitCode::from(ending.exit_code))
 }

@@ -10,7 +10,7 @@
 use nalgebra::{Matrix3, Vector3};
 
 use super::errors::{Errors, compute_errors};
-use super::objective::{LARGEST_VELOCITY_KM_S, Objective, Seen};
+use super::objective::{Objective, Seen};
 use super::outliers::set_worst_aside;
 use super::profile::{Bottom, profiled_covariance};
 use super::screening::screen;
@@ -45,9 +45,6 @@ const MOST_ALIGNMENTS: usize = 6;
 /// Largest change of an offset in one round, km/s.
 const LARGEST_ALIGNMENT_KM_S: f64 = 250.0;
 const MOST_OUTLIER_ROUNDS: usize = 6;
-/// Tilt of the flux calibration and of unknown reddening between H-beta and H8 together, one standard
-/// deviation of the natural logarithm (E(B-V) = 0.05 reddens that range by 5 %; common practice).
-const TILT_SIGMA: f64 = 0.08;
 /// Grid edges count as reached within this: relative in Teff, absolute in log g.
 const EDGE: (f64, f64) = (2e-3, 5e-3);
 
@@ -95,7 +92,7 @@ impl<'g> Fitter<'g> {
     pub fn fit(&self, spectrum: &Spectrum) -> Result<Fit, FitFault> {
         let wanted: Vec<_> =
             WINDOWS.iter().filter(|window| self.settings.lines.contains(window)).copied().collect();
-        let mut objective = Objective::new(spectrum, self.grid, &wanted, 0.0);
+        let mut objective = self.prepare(spectrum, &wanted, 0.0);
         if objective.windows.len() < self.settings.fewest_windows {
             return Err(FitFault::TooFewWindows {
                 found: objective.windows.len(),
@@ -146,6 +143,16 @@ impl<'g> Fitter<'g> {
         Ok(fit)
     }
 
+    fn prepare(
+        &self,
+        spectrum: &Spectrum,
+        wanted: &[super::windows::Window],
+        velocity_km_s: f64,
+    ) -> Objective<'g> {
+        let core_mask = self.settings.core_mask_half_width_aa;
+        Objective::new(spectrum, self.grid, wanted, velocity_km_s, core_mask)
+    }
+
     /// Starting points: the scan's local minima, and the best node on either side of the ridge.
     fn scan(
         &self,
@@ -155,13 +162,15 @@ impl<'g> Fitter<'g> {
     ) -> Vec<Vector3<f64>> {
         let mut chi2 = self.scan_nodes(objective);
         let (i, j) = lowest(&chi2);
-        let count = (LARGEST_VELOCITY_KM_S / FIRST_VELOCITY_STEP_KM_S) as i32 - 2;
+        let largest = self.settings.largest_velocity_km_s;
+        let count = ((largest / FIRST_VELOCITY_STEP_KM_S) as i32 - 2).max(0);
         let velocities: Vec<f64> =
             (-count..=count).map(|k| f64::from(k) * FIRST_VELOCITY_STEP_KM_S).collect();
         let velocity = objective.best_velocity(self.scan_teff[i], self.scan_log_g[j], &velocities);
-        if velocity.abs() > SCAN_VELOCITY_TOLERANCE_KM_S {
-            // The windows move with the star; where that loses too many, stay.
-            let moved = Objective::new(spectrum, self.grid, wanted, velocity);
+        let has_core_masks = self.settings.core_mask_half_width_aa > 0.0;
+        if velocity.abs() > SCAN_VELOCITY_TOLERANCE_KM_S || has_core_masks {
+            // Windows and masks move with the star; where that loses too many, stay.
+            let moved = self.prepare(spectrum, wanted, velocity);
             if moved.windows.len() == objective.windows.len() {
                 *objective = moved;
                 chi2 = self.scan_nodes(objective);
@@ -240,8 +249,8 @@ impl<'g> Fitter<'g> {
         let (teff_first_k, teff_last_k) = self.grid.teff_range_k();
         let (log_g_first, log_g_last) = self.grid.log_g_range();
         Bounds {
-            lower: Vector3::new(teff_first_k, log_g_first, -LARGEST_VELOCITY_KM_S),
-            upper: Vector3::new(teff_last_k, log_g_last, LARGEST_VELOCITY_KM_S),
+            lower: Vector3::new(teff_first_k, log_g_first, -self.settings.largest_velocity_km_s),
+            upper: Vector3::new(teff_last_k, log_g_last, self.settings.largest_velocity_km_s),
         }
     }
 
@@ -364,7 +373,7 @@ impl<'g> Fitter<'g> {
         for _ in 0..MOST_OUTLIER_ROUNDS {
             objective.set_velocity(at[2]);
             let views = objective.view(&at).map_err(FitFault::Model)?;
-            if set_worst_aside(objective, &views) == 0 {
+            if set_worst_aside(objective, &views, self.settings.outlier_sigma) == 0 {
                 break;
             }
             at = self.refine(objective, at)?.vector();
@@ -388,7 +397,7 @@ impl<'g> Fitter<'g> {
                 let views = objective.view(&solution.vector()).map_err(FitFault::Model)?;
                 let tilt = continuum_tilt(objective, &views);
                 solution.tilt = tilt;
-                sum += tilt.map_or(0.0, |tilt| (tilt / TILT_SIGMA).powi(2));
+                sum += tilt.map_or(0.0, |tilt| (tilt / self.settings.tilt_sigma).powi(2));
             }
             badness.push(sum);
         }

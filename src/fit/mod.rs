@@ -15,7 +15,6 @@ mod settings;
 mod solution;
 mod windows;
 
-pub use errors::{EXTERNAL_LOG_G, EXTERNAL_TEFF};
 pub use fitter::{Fitter, equivalent_width_aa};
 pub use foreign_lines::{FOREIGN_LINES, ForeignLine, ForeignStrength};
 pub use objective::Seen;

@@ -20,7 +20,7 @@ use crate::numerics::least_squares::{LeastSquares, Linearisation};
 use crate::physics::wavelength::doppler_factor;
 use crate::spectrum::Spectrum;
 
-/// Fastest radial velocity that is tried, km/s: beyond, a star has left the Galaxy.
+/// Fastest radial velocity that can be tried, km/s: beyond, a star has left the Galaxy.
 pub const LARGEST_VELOCITY_KM_S: f64 = 1500.0;
 /// Fewest good pixels of a window that is fitted.
 const FEWEST_PIXELS: usize = 12;
@@ -42,7 +42,7 @@ pub struct WindowData {
     pub inverse_sigma: Vec<f64>,
     /// 1 / standard deviation as the spectrum gives it.
     given_inverse_sigma: Vec<f64>,
-    /// Pixels that the spectrum's mask took away.
+    /// Pixels that the spectrum's mask, or the mask of the line's core, took away.
     pub masked: usize,
     /// Wavelength error of this window against the others, as a velocity, km/s.
     pub offset_km_s: f64,
@@ -84,11 +84,20 @@ struct Scratch {
 }
 
 impl<'g> Objective<'g> {
-    /// Takes the windows that the spectrum covers well enough, at a first guess of the velocity.
-    pub fn new(spectrum: &Spectrum, grid: &'g FluxGrid, windows: &[Window], velocity_km_s: f64) -> Self {
+    /// Takes the windows that the spectrum covers well enough, at a first guess of the velocity, without the
+    /// pixels that are nearer to the centre of their line than `core_mask_half_width_aa`.
+    pub fn new(
+        spectrum: &Spectrum,
+        grid: &'g FluxGrid,
+        windows: &[Window],
+        velocity_km_s: f64,
+        core_mask_half_width_aa: f64,
+    ) -> Self {
         let windows = windows
             .iter()
-            .filter_map(|window| WindowData::cut(spectrum, grid, window, velocity_km_s))
+            .filter_map(|window| {
+                WindowData::cut(spectrum, grid, window, velocity_km_s, core_mask_half_width_aa)
+            })
             .collect();
         let mut objective =
             Objective { grid, windows, velocity_km_s, scratch: RefCell::new(Scratch::default()) };
@@ -280,7 +289,13 @@ impl LeastSquares<3> for &Objective<'_> {
 }
 
 impl WindowData {
-    fn cut(spectrum: &Spectrum, grid: &FluxGrid, window: &Window, velocity_km_s: f64) -> Option<Self> {
+    fn cut(
+        spectrum: &Spectrum,
+        grid: &FluxGrid,
+        window: &Window,
+        velocity_km_s: f64,
+        core_mask_half_width_aa: f64,
+    ) -> Option<Self> {
         let doppler = doppler_factor(velocity_km_s);
         let (blue, red) = (window.range_vac_aa.0 * doppler, window.range_vac_aa.1 * doppler);
         let waves = spectrum.wave_vac_aa();
@@ -300,7 +315,8 @@ impl WindowData {
         };
         for i in first..end {
             let sigma = spectrum.sigma()[i];
-            if !spectrum.is_good()[i] || !sigma.is_finite() {
+            let is_core = (waves[i] - window.centre_vac_aa() * doppler).abs() < core_mask_half_width_aa;
+            if !spectrum.is_good()[i] || !sigma.is_finite() || is_core {
                 data.masked += 1;
                 continue;
             }

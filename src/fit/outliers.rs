@@ -6,8 +6,8 @@
 use super::objective::{Objective, Seen};
 
 /// A pixel is set aside when it misses the model by this many standard deviations, scaled by the scatter of
-/// all pixels.
-const OUTLIER_SIGMA: f64 = 5.0;
+/// all pixels, unless the configuration says otherwise.
+pub const OUTLIER_SIGMA: f64 = 5.0;
 /// Pixels beside an outlier follow it from here on, if they miss to the same side.
 const NEIGHBOUR_SIGMA: f64 = 3.0;
 /// A round takes what misses by at least this share of the worst.
@@ -19,7 +19,7 @@ const MEDIAN_OF_GAUSSIAN: f64 = 0.674_49;
 
 /// Takes the weight of the worst pixels of a model's views; returns how many, 0 where none is bad or so many
 /// are that the model must be.
-pub fn set_worst_aside(objective: &mut Objective<'_>, views: &[Seen]) -> usize {
+pub fn set_worst_aside(objective: &mut Objective<'_>, views: &[Seen], outlier_sigma: f64) -> usize {
     let used = |data: &super::objective::WindowData, seen: &Seen| -> Vec<f64> {
         let sizes = seen.residual.iter().zip(&data.inverse_sigma);
         sizes.filter(|(_, weight)| **weight > 0.0).map(|(residual, _)| residual.abs()).collect()
@@ -33,7 +33,7 @@ pub fn set_worst_aside(objective: &mut Objective<'_>, views: &[Seen]) -> usize {
     }
     let median = *sizes.select_nth_unstable_by(count / 2, f64::total_cmp).1;
     let scatter = (median / MEDIAN_OF_GAUSSIAN).max(1.0);
-    let limit = (OUTLIER_SIGMA * scatter).max(SHARE_OF_WORST * worst);
+    let limit = (outlier_sigma * scatter).max(SHARE_OF_WORST * worst);
     let mut bad: Vec<(usize, usize)> = Vec::new();
     for (window, seen) in views.iter().enumerate() {
         let residual = &seen.residual;

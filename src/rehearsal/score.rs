@@ -73,18 +73,18 @@ pub struct Region {
 const REGIONS_K: [f64; 7] = [7000.0, 9000.0, 11_500.0, 15_500.0, 20_000.0, 35_000.0, 60_000.0];
 
 /// Fitted minus true of one white dwarf, with its errors.
-struct Comparison {
-    teff_k: f64,
-    difference: [f64; 3],
+pub(super) struct Comparison {
+    pub(super) teff_k: f64,
+    pub(super) difference: [f64; 3],
     sigma: [f64; 3],
-    is_wrong: bool,
-    is_accepted: bool,
+    pub(super) is_wrong: bool,
+    pub(super) is_accepted: bool,
     snr: f64,
 }
 
 impl Comparison {
     /// One-dimensional parameters are compared, because the truth is of a one-dimensional grid.
-    fn new(sighting: &Sighting, report: &Report) -> Option<Self> {
+    pub(super) fn new(sighting: &Sighting, report: &Report) -> Option<Self> {
         let Truth::Da { teff_k, log_g, radial_velocity_km_s } = sighting.truth else { return None };
         let chosen = report.solutions.iter().find(|solution| solution.is_chosen)?;
         let covariance = chosen.covariance?;
@@ -100,7 +100,7 @@ impl Comparison {
         Some(Comparison { teff_k, difference, sigma, is_wrong, is_accepted, snr: sighting.snr })
     }
 
-    fn pull(&self, parameter: usize) -> f64 {
+    pub(super) fn pull(&self, parameter: usize) -> f64 {
         self.difference[parameter] / self.sigma[parameter]
     }
 }

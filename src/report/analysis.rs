@@ -7,7 +7,7 @@ use super::assemble::{Findings, FittedParameters};
 use super::document::{LineRow, Provenance, SolutionRow};
 use super::pipeline::{Analyse, error_chain};
 use crate::codes::{self, Flag};
-use crate::fit::{EXTERNAL_LOG_G, EXTERNAL_TEFF, Fit, FitSettings, Fitter, LineResult, Solution};
+use crate::fit::{Fit, FitSettings, Fitter, LineResult, Solution};
 use crate::grid::FluxGrid;
 use crate::grid::magnitude_table::MagnitudeTable;
 use crate::grid::track_table::TrackTable;
@@ -22,6 +22,8 @@ pub struct Analysis<'t> {
     tracks: &'t TrackTable,
     magnitudes: MagnitudeTable,
     provenance: Provenance,
+    /// External errors: of Teff, relative, and of log g, dex.
+    external: [f64; 2],
 }
 
 impl<'t> Analysis<'t> {
@@ -42,6 +44,7 @@ impl<'t> Analysis<'t> {
             tracks,
             magnitudes: MagnitudeTable::new(grid),
             provenance,
+            external: [settings.external_teff_relative, settings.external_log_g],
         }
     }
 
@@ -76,7 +79,7 @@ impl Analyse for Analysis<'_> {
         };
         let fit_ms = started.elapsed().as_secs_f64() * 1e3;
         let mut flags = fit.flags.clone();
-        let parameters = fitted_parameters(fit.chosen(), &mut flags);
+        let parameters = fitted_parameters(fit.chosen(), self.external, &mut flags);
         let StarReport { star, flags: star_flags } = self.star(&parameters, fit.chosen());
         flags.extend(star_flags);
         let star_ms = started.elapsed().as_secs_f64() * 1e3 - fit_ms;
@@ -93,7 +96,11 @@ impl Analyse for Analysis<'_> {
 }
 
 /// The chosen solution, corrected for three-dimensional convection where that is known.
-fn fitted_parameters(solution: &Solution, flags: &mut Vec<Flag>) -> FittedParameters {
+fn fitted_parameters(
+    solution: &Solution,
+    [external_teff_relative, external_log_g]: [f64; 2],
+    flags: &mut Vec<Flag>,
+) -> FittedParameters {
     let (mut teff_k, mut log_g) = (solution.teff_k, solution.log_g);
     if teff_k <= HOTTEST_K {
         let detail = match correct_3d(teff_k, log_g) {
@@ -107,8 +114,8 @@ fn fitted_parameters(solution: &Solution, flags: &mut Vec<Flag>) -> FittedParame
         flags.push(Flag::new(&codes::FIT_THREE_D, detail));
     }
     FittedParameters {
-        teff_k: [teff_k, solution.sigma(0), EXTERNAL_TEFF * teff_k],
-        log_g: [log_g, solution.sigma(1), EXTERNAL_LOG_G],
+        teff_k: [teff_k, solution.sigma(0), external_teff_relative * teff_k],
+        log_g: [log_g, solution.sigma(1), external_log_g],
         radial_velocity_km_s: [solution.radial_velocity_km_s, solution.sigma(2), 0.0],
     }
 }

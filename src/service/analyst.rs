@@ -17,6 +17,14 @@ pub trait Analyst: Send + Sync {
     /// answers; a changed log level must not change it. At least 16 characters, `[0-9a-z]` only.
     fn fingerprint(&self) -> String;
 
+    /// Names what really goes into the answer on this file: less than [`Analyst::fingerprint`] covers, because
+    /// an instrument section matters only to the files that it matches. Two answers with the same key
+    /// on the same content are the same. `None`: not known, so a re-fit is needed.
+    fn answer_key(&self, path: &Path) -> Option<String> {
+        let _ = path;
+        None
+    }
+
     /// Analyses the file at `path`, whose bytes hash to `bytes_blake3` (hex).
     ///
     /// # Errors

@@ -5,12 +5,14 @@
 //! their JSON schema, so a key is defined once. Paths may be overridden from the environment.
 //! [`Config::answer_fingerprint`] covers only what can change an answer.
 
-use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+
+use crate::fit::{FitSettings, WINDOWS};
+use crate::spectrum::{Instrument, InstrumentFault};
 
 /// Where the daemon looks when `--config` is not given.
 pub const PLACES: [&str; 2] = ["config/emberline.toml", "/etc/emberline/emberline.toml"];
@@ -45,6 +47,9 @@ pub enum ConfigError {
         /// The known key that is spelled most alike.
         nearest: Option<String>,
     },
+    /// A section about an instrument that makes no sense.
+    #[error("cannot use the configuration")]
+    Instrument(#[from] InstrumentFault),
     /// A value outside of what makes sense.
     #[error("cannot use the configuration: `{key}` is {found}, need {need}")]
     OutOfRange {
@@ -77,8 +82,10 @@ pub struct Config {
     pub service: ServiceConfig,
     /// What is told.
     pub log: LogConfig,
+    /// How spectra are fitted.
+    pub fit: FitSettings,
     /// What is known of instruments, in order of precedence.
-    pub instrument: Vec<InstrumentConfig>,
+    pub instrument: Vec<Instrument>,
 }
 
 /// What is watched, and when a file counts as whole.
@@ -141,6 +148,8 @@ pub struct OutputConfig {
     pub reports: PathBuf,
     /// The ledger file.
     pub ledger: PathBuf,
+    /// Folder that originals are moved to when they are finished; empty leaves them where they are.
+    pub move_finished_to: PathBuf,
 }
 
 /// The fitting threads.
@@ -255,71 +264,6 @@ pub enum LogFormat {
     Json,
 }
 
-/// What is known of an instrument and stands above what its files say.
-#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize, JsonSchema)]
-#[serde(default)]
-pub struct InstrumentConfig {
-    /// Name, for reports.
-    pub name: String,
-    /// Header keywords and the pattern that each value must match.
-    #[serde(rename = "match")]
-    pub keywords: BTreeMap<String, String>,
-    /// lambda / FWHM.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub resolving_power: Option<f64>,
-    /// Constant FWHM in angstrom.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub resolution_fwhm_aa: Option<f64>,
-    /// Medium of the wavelengths.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub medium: Option<Medium>,
-    /// Rest frame of the wavelengths.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub velocity_frame: Option<VelocityFrame>,
-    /// Ranges never used, vacuum angstrom, low before high.
-    pub masks_vac_aa: Vec<[f64; 2]>,
-    /// Factor on the errors of the file.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub error_scale: Option<f64>,
-}
-
-impl InstrumentConfig {
-    /// Whether a header, given as a look-up of keyword values, belongs to this instrument.
-    pub fn is_match(&self, value_of: impl Fn(&str) -> Option<String>) -> bool {
-        self.keywords.iter().all(|(keyword, pattern)| {
-            value_of(keyword).is_some_and(|value| {
-                header_pattern(pattern).is_ok_and(|pattern| pattern.is_match(value.trim()))
-            })
-        })
-    }
-}
-
-fn header_pattern(pattern: &str) -> Result<globset::GlobMatcher, globset::Error> {
-    Ok(globset::GlobBuilder::new(pattern.trim()).case_insensitive(true).build()?.compile_matcher())
-}
-
-/// What the light travelled through when its wavelength was measured.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
-#[serde(rename_all = "lowercase")]
-pub enum Medium {
-    /// Standard air.
-    Air,
-    /// Vacuum.
-    Vacuum,
-}
-
-/// Rest frame of the wavelengths.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
-#[serde(rename_all = "lowercase")]
-pub enum VelocityFrame {
-    /// As observed from the ground.
-    Topocentric,
-    /// Of the Sun.
-    Heliocentric,
-    /// Of the solar system's barycentre.
-    Barycentric,
-}
-
 impl Config {
     /// Reads the file named on the command line, or the first at the usual places, and applies the
     /// overrides of the environment.
@@ -363,6 +307,7 @@ impl Config {
         for (name, path) in [
             ("EMBERLINE_OUTPUT_REPORTS", &mut self.output.reports),
             ("EMBERLINE_OUTPUT_LEDGER", &mut self.output.ledger),
+            ("EMBERLINE_OUTPUT_MOVE_FINISHED_TO", &mut self.output.move_finished_to),
             ("EMBERLINE_SERVICE_SOCKET", &mut self.service.socket),
         ] {
             if let Some(value) = environment(name) {
@@ -393,6 +338,21 @@ impl Config {
         in_range("retry.max_delay_s", self.retry.max_delay_s, 0.0, YEAR_S, "0 s to a year")?;
         in_range("retry.interruptions", self.retry.interruptions.into(), 1.0, 1e6, "1 to 1e6")?;
         in_range("service.drain_deadline_s", self.service.drain_deadline_s, 0.0, 86400.0, "0 s to a day")?;
+        let fit = &self.fit;
+        let lines = fit.lines.len() as f64;
+        in_range("fit.lines (their number)", lines, 1.0, WINDOWS.len() as f64, "at least one line")?;
+        if (1..fit.lines.len()).any(|i| fit.lines[..i].contains(&fit.lines[i])) {
+            let found = "a list with one line twice".to_owned();
+            return Err(ConfigError::OutOfRange { key: "fit.lines", found, need: "each line once" });
+        }
+        let need = "1 to the number of lines";
+        in_range("fit.fewest_windows", fit.fewest_windows as f64, 1.0, lines, need)?;
+        in_range("fit.core_mask_half_width_aa", fit.core_mask_half_width_aa, 0.0, 20.0, "0 to 20 A")?;
+        in_range("fit.largest_velocity_km_s", fit.largest_velocity_km_s, 100.0, 1500.0, "100 to 1500 km/s")?;
+        in_range("fit.outlier_sigma", fit.outlier_sigma, 3.0, 1e6, "at least 3")?;
+        in_range("fit.tilt_sigma", fit.tilt_sigma, 0.005, 100.0, "0.005 to 100")?;
+        in_range("fit.external_teff_relative", fit.external_teff_relative, 0.0, 0.5, "0 to 0.5")?;
+        in_range("fit.external_log_g", fit.external_log_g, 0.0, 1.0, "0 to 1 dex")?;
         for (key, patterns) in
             [("inbox.include", &self.inbox.include), ("inbox.exclude", &self.inbox.exclude)]
         {
@@ -411,7 +371,8 @@ impl Config {
                 need,
             });
         }
-        self.instrument.iter().try_for_each(InstrumentConfig::check)
+        self.instrument.iter().try_for_each(Instrument::check)?;
+        Ok(())
     }
 
     /// Refuses a configuration that a daemon cannot run with.
@@ -429,6 +390,16 @@ impl Config {
         if self.output.ledger.as_os_str().is_empty() {
             return missing("output.ledger", "a file for the ledger");
         }
+        let moved = &self.output.move_finished_to;
+        let is_within = |inner: &Path, outer: &Path| real(inner).starts_with(real(outer));
+        let meets = |folder: &PathBuf| is_within(moved, folder) || is_within(folder, moved);
+        if !moved.as_os_str().is_empty() && self.inbox.folders.iter().any(meets) {
+            return Err(ConfigError::OutOfRange {
+                key: "output.move_finished_to",
+                found: format!("{} (meets a watched folder)", moved.display()),
+                need: "a folder apart from those of inbox.folders",
+            });
+        }
         Ok(())
     }
 
@@ -436,13 +407,8 @@ impl Config {
     pub fn answer_fingerprint(&self) -> String {
         // Serialising structs of strings and finite numbers cannot fail; an empty text would only
         // make all configurations look the same, which the tests would see.
-        let text = serde_json::to_string(&self.instrument).unwrap_or_default();
+        let text = serde_json::to_string(&(&self.fit, &self.instrument)).unwrap_or_default();
         blake3::hash(text.as_bytes()).to_hex().to_string()
-    }
-
-    /// The first instrument whose keywords match the header.
-    pub fn instrument_for(&self, value_of: impl Fn(&str) -> Option<String>) -> Option<&InstrumentConfig> {
-        self.instrument.iter().find(|instrument| instrument.is_match(&value_of))
     }
 
     /// The socket of the running daemon.
@@ -455,41 +421,13 @@ impl Config {
     }
 }
 
-impl InstrumentConfig {
-    fn check(&self) -> Result<(), ConfigError> {
-        let refuse = |key, found: String, need| Err(ConfigError::OutOfRange { key, found, need });
-        if self.name.is_empty() {
-            return refuse("instrument.name", "empty".to_owned(), "a name");
-        }
-        if self.keywords.is_empty() {
-            return refuse("instrument.match", "empty".to_owned(), "at least one header keyword");
-        }
-        for pattern in self.keywords.values() {
-            if header_pattern(pattern).is_err() {
-                return refuse("instrument.match", format!("{pattern:?}"), "a pattern such as \"KFS-*\"");
-            }
-        }
-        if self.resolving_power.is_some() && self.resolution_fwhm_aa.is_some() {
-            let need = "only one of resolving_power and resolution_fwhm_aa";
-            return refuse("instrument.resolution_fwhm_aa", "set twice".to_owned(), need);
-        }
-        for (key, value) in [
-            ("instrument.resolving_power", self.resolving_power),
-            ("instrument.resolution_fwhm_aa", self.resolution_fwhm_aa),
-            ("instrument.error_scale", self.error_scale),
-        ] {
-            if let Some(value) = value
-                && !(value.is_finite() && value > 0.0)
-            {
-                return refuse(key, value.to_string(), "a positive number");
-            }
-        }
-        for [low, high] in &self.masks_vac_aa {
-            if !(low.is_finite() && high.is_finite() && low < high) {
-                return refuse("instrument.masks_vac_aa", format!("[{low}, {high}]"), "[low, high]");
-            }
-        }
-        Ok(())
+/// The path absolute and, as far as it exists, without links.
+fn real(path: &Path) -> PathBuf {
+    let named = std::path::absolute(path).unwrap_or_else(|_| path.to_owned());
+    let is_there = named.ancestors().find_map(|above| Some((above, std::fs::canonicalize(above).ok()?)));
+    match is_there {
+        Some((above, real)) => named.strip_prefix(above).map_or(named.clone(), |rest| real.join(rest)),
+        None => named,
     }
 }
 

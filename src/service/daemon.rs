@@ -20,6 +20,7 @@ use crate::service::analyst::{AnalystFactory, Fault};
 use crate::service::config::{Config, ConfigError, seconds};
 use crate::service::control;
 use crate::service::file_system::is_on_network;
+use crate::service::finished;
 use crate::service::inbox::Inbox;
 use crate::service::logging::LogHandle;
 use crate::service::output::{self, ReportPlace};
@@ -155,6 +156,7 @@ impl Daemon {
             (options.clock)().duration_since(std::time::UNIX_EPOCH).map_or(0.0, |since| since.as_secs_f64());
         let max_interruptions = config.retry.interruptions;
         let (resumed, given_up) = ledger.recover(max_interruptions, codes::SERVICE_INTERRUPTED.id, now_s)?;
+        finished::resume(&mut ledger)?;
         let stale = ledger.queue_stale(&fingerprint, now_s)?;
         mend_pointers(&ledger, &reports, &fingerprint)?;
         tracing::info!(resumed, given_up, stale, fingerprint, "ledger opened");

@@ -21,6 +21,7 @@ use crate::service::analyst::Fault;
 use crate::service::config::{InboxConfig, Polling, seconds};
 use crate::service::exclusion::{ExclusionCounts, Look, Reason, Rules, hash_file};
 use crate::service::file_system::is_on_network;
+use crate::service::finished;
 use crate::service::shared::{FolderStatus, Shared};
 use crate::service::wholeness::Wholeness;
 
@@ -265,6 +266,7 @@ impl Inbox {
             Look::File(signature) => {
                 if self.shared.is_known(path, &signature)? {
                     self.wholeness.forget(path);
+                    finished::move_if_finished(&self.shared, path)?;
                 } else if self.wholeness.is_full() && !self.wholeness.contains(path) {
                     self.needs_full_scan = true;
                 } else if self.wholeness.observe(
@@ -310,10 +312,15 @@ impl Inbox {
                 Look::Vanished => continue,
             };
             if self.shared.is_known(&path, &signature)? {
+                finished::move_if_finished(&self.shared, &path)?;
                 continue;
             }
             match hash_file(&path, &signature, || self.shared.beat_inbox()) {
-                Ok(Some(blake3)) => self.shared.record_file(&path, &signature, &blake3, arrival)?,
+                Ok(Some(blake3)) => {
+                    self.shared.record_file(&path, &signature, &blake3, arrival)?;
+                    // A copy of what is finished already makes no job.
+                    finished::move_if_finished(&self.shared, &path)?;
+                }
                 Ok(None) => self.look_at(&root, &path)?,
                 Err(error) if error.kind() == std::io::ErrorKind::NotFound => {}
                 Err(error) => {

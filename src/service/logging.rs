@@ -1,5 +1,9 @@
 //! Where the log goes: the journal or stderr, as text or JSON; the level can change while running.
 
+use std::io::{self, Write};
+use std::sync::{Mutex, PoisonError};
+
+use indicatif::ProgressBar;
 use tracing_subscriber::layer::SubscriberExt;
 use tracing_subscriber::util::SubscriberInitExt;
 use tracing_subscriber::{EnvFilter, Layer, Registry, fmt, reload};
@@ -22,6 +26,29 @@ impl LogHandle {
     }
 }
 
+/// The bar that is on the terminal, if there is one.
+static BAR: Mutex<Option<ProgressBar>> = Mutex::new(None);
+
+/// From now on lines of the log are written above this bar instead of through it.
+pub fn keep_clear_of(bar: ProgressBar) {
+    *BAR.lock().unwrap_or_else(PoisonError::into_inner) = Some(bar);
+}
+
+/// Standard error, with the bar out of the way.
+struct ClearStderr;
+
+impl Write for ClearStderr {
+    fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
+        let bar = BAR.lock().unwrap_or_else(PoisonError::into_inner);
+        let write = || io::stderr().write(bytes);
+        bar.as_ref().map_or_else(write, |bar| bar.suspend(write))
+    }
+
+    fn flush(&mut self) -> io::Result<()> {
+        io::stderr().flush()
+    }
+}
+
 /// Starts the log of this process and sends panics there too.
 pub fn start(config: &LogConfig) -> LogHandle {
     let (filter, handle) =
@@ -32,7 +59,7 @@ pub fn start(config: &LogConfig) -> LogHandle {
         // systemd sets it when stderr already goes to the journal.
         LogDestination::Auto => std::env::var_os("JOURNAL_STREAM").is_some(),
     };
-    let to_stderr = fmt::layer().with_writer(std::io::stderr).with_ansi(false);
+    let to_stderr = fmt::layer().with_writer(|| ClearStderr).with_ansi(false);
     let sink: Box<dyn Layer<_> + Send + Sync> =
         match (wants_journal.then(tracing_journald::layer), config.format) {
             (Some(Ok(journal)), _) => Box::new(journal),

@@ -29,6 +29,9 @@ pub mod output;
 /// What the parts of the daemon share.
 pub mod shared;
 
+/// Finished originals leave the inbox.
+pub mod finished;
+
 /// Watched folders.
 pub mod inbox;
 

@@ -95,6 +95,32 @@ pub fn publish(reports: &Path, place: &ReportPlace, json: &[u8], is_in_force: bo
     sync_folder(folder)
 }
 
+/// Makes a report under another fingerprint stand for this place too, and the pointer lead to it: nothing
+/// that went into the answer has changed, so the same bytes are the answer. Says whether that could be
+/// done; it cannot where the earlier report is gone or torn.
+///
+/// # Errors
+/// The links cannot be made or synced.
+pub fn adopt(reports: &Path, place: &ReportPlace, earlier: &str, is_in_force: bool) -> io::Result<bool> {
+    let (own, earlier) = (reports.join(&place.report), reports.join(earlier));
+    if own.parent() != earlier.parent() || !is_whole_json(&earlier) {
+        return Ok(false);
+    }
+    if !is_whole_json(&own) {
+        // Always a link to the file itself: links to links would grow with each reload.
+        let file = fs::read_link(&earlier).unwrap_or(earlier);
+        let temporary = temporary_for(&own);
+        remove_if_there(&temporary)?;
+        symlink(file.file_name().unwrap_or_default(), &temporary)?;
+        fs::rename(&temporary, &own)?;
+    }
+    if is_in_force {
+        point(reports, place)?;
+    }
+    sync_folder(own.parent().unwrap_or(reports))?;
+    Ok(true)
+}
+
 /// Makes the pointer lead to the report, in one step.
 ///
 /// # Errors

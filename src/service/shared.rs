@@ -53,6 +53,8 @@ pub struct Status {
     pub faults: BTreeMap<String, u64>,
     /// Jobs ended since the start.
     pub ended_since_start: u64,
+    /// Of those, re-fits that were not needed: the earlier answer holds.
+    pub unchanged_since_start: u64,
     /// The fitting threads.
     pub workers: WorkerCounts,
     /// The watched folders.
@@ -108,9 +110,11 @@ pub struct Shared {
     started: Instant,
     is_stopping: AtomicBool,
     ended_since_start: AtomicU64,
+    unchanged_since_start: AtomicU64,
     last_arrival: AtomicU64,
     inbox_beat_ms: AtomicU64,
     commands: Sender<Command>,
+    moves: Mutex<()>,
     inbox: Mutex<InboxStatus>,
     workers: Mutex<WorkerCounts>,
     last_reload: Mutex<String>,
@@ -142,8 +146,10 @@ impl Shared {
             started: Instant::now(),
             is_stopping: AtomicBool::new(false),
             ended_since_start: AtomicU64::new(0),
+            unchanged_since_start: AtomicU64::new(0),
             inbox_beat_ms: AtomicU64::new(0),
             commands,
+            moves: Mutex::default(),
             inbox: Mutex::default(),
             workers: Mutex::default(),
             last_reload: Mutex::default(),
@@ -275,6 +281,11 @@ impl Shared {
         self.ended_since_start.fetch_add(1, Ordering::Relaxed);
     }
 
+    /// Notes that a re-fit was not needed.
+    pub fn note_unchanged(&self) {
+        self.unchanged_since_start.fetch_add(1, Ordering::Relaxed);
+    }
+
     /// The intake lives.
     pub fn beat_inbox(&self) {
         self.inbox_beat_ms.store(self.uptime().as_millis() as u64, Ordering::Relaxed);
@@ -283,6 +294,11 @@ impl Shared {
     /// Time since the intake last said that it lives.
     pub fn inbox_silence(&self) -> Duration {
         self.uptime().saturating_sub(Duration::from_millis(self.inbox_beat_ms.load(Ordering::Relaxed)))
+    }
+
+    /// Held while originals are moved. Never taken with the ledger's lock held.
+    pub fn lock_moves(&self) -> MutexGuard<'_, ()> {
+        lock(&self.moves)
     }
 
     /// Changes the inbox's state.
@@ -336,6 +352,7 @@ impl Shared {
             jobs,
             faults,
             ended_since_start: self.ended_since_start.load(Ordering::Relaxed),
+            unchanged_since_start: self.unchanged_since_start.load(Ordering::Relaxed),
             workers: *lock(&self.workers),
             inbox,
             last_troubles,

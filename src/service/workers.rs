@@ -14,14 +14,15 @@ use std::sync::{Arc, Mutex};
 use std::thread::JoinHandle;
 use std::time::{Duration, Instant};
 
-use serde_json::json;
-
 use crate::archive::ledger::{DocumentRecord, Job, Signature};
-use crate::codes;
+use crate::codes::{self, Flag};
+use crate::report::{Findings, Provenance, Report};
 use crate::service::analyst::{Disposition, Document, Fault};
 use crate::service::daemon::Command;
+use crate::service::finished;
 use crate::service::output::{self, ReportPlace};
 use crate::service::shared::{Settings, Shared, WorkerCounts, lock};
+use crate::spectrum::{ObjectRecord, SourceRecord};
 
 /// Longest time that reports may take to get to disk before the disk counts as broken.
 const WRITE_LIMIT: Duration = Duration::from_secs(120);
@@ -240,37 +241,64 @@ fn work(shared: &Arc<Shared>, slot: &Slot) {
 
 /// What an analysis came to.
 enum Outcome {
-    Documents(Vec<Document>),
+    Documents {
+        documents: Vec<Document>,
+        answer: Option<String>,
+    },
+    /// The reload changed nothing that goes into the answer on this file.
+    Unchanged {
+        documents: Vec<DocumentRecord>,
+        answer: String,
+    },
     Fault(Fault),
     /// The path no longer holds the content of the job.
     Lost,
 }
 
-fn analyse(shared: &Shared, settings: &Settings, job: &Job) -> Outcome {
-    let holds = || match fs::metadata(&job.path) {
+/// Whether the job's path still holds the job's content.
+fn holds(shared: &Shared, job: &Job) -> Result<bool, Fault> {
+    match fs::metadata(&job.path) {
         Ok(metadata) => {
             shared.with_ledger(|ledger| ledger.holds(&job.path, &Signature::of(&metadata), &job.blake3))
         }
         Err(_) => Ok(false),
-    };
-    match holds() {
+    }
+}
+
+fn analyse(shared: &Shared, settings: &Settings, job: &Job) -> Outcome {
+    match holds(shared, job) {
         Ok(true) => {}
         Ok(false) => return Outcome::Lost,
         Err(fault) => return Outcome::Fault(fault),
     }
+    let answer =
+        catch_unwind(AssertUnwindSafe(|| settings.analyst.answer_key(&job.path))).unwrap_or_default();
+    if job.is_refit
+        && let Some(answer) = &answer
+    {
+        match shared.with_ledger(|ledger| ledger.documents_of_answer(&job.blake3, answer)) {
+            Ok(documents) if documents.is_empty() => {}
+            Ok(documents) => return Outcome::Unchanged { documents, answer: answer.clone() },
+            Err(fault) => return Outcome::Fault(fault),
+        }
+    }
+    analyse_anew(shared, settings, job, answer)
+}
+
+fn analyse_anew(shared: &Shared, settings: &Settings, job: &Job, answer: Option<String>) -> Outcome {
     let started = Instant::now();
     // The analyst is shared and was checked to be unwind safe in the sense that matters: it holds
     // immutable tables, and what a panic leaves half done is dropped with the call.
-    let answer = catch_unwind(AssertUnwindSafe(|| settings.analyst.analyse(&job.path, &job.blake3)));
+    let analysed = catch_unwind(AssertUnwindSafe(|| settings.analyst.analyse(&job.path, &job.blake3)));
     tracing::debug!(elapsed_ms = started.elapsed().as_millis() as u64, "analysed");
     // If the file was replaced meanwhile, what was read may be half of each.
-    match holds() {
+    match holds(shared, job) {
         Ok(true) => {}
         Ok(false) => return Outcome::Lost,
         Err(fault) => return Outcome::Fault(fault),
     }
-    match answer {
-        Ok(Ok(documents)) => Outcome::Documents(documents),
+    match analysed {
+        Ok(Ok(documents)) => Outcome::Documents { documents, answer },
         Ok(Err(fault)) => Outcome::Fault(fault),
         Err(panic) => {
             let text = panic
@@ -286,12 +314,23 @@ fn analyse(shared: &Shared, settings: &Settings, job: &Job) -> Outcome {
 /// Puts the outcome on disk and into the ledger. An error here is a reason to stop.
 fn conclude(shared: &Shared, settings: &Settings, job: &Job, outcome: Outcome) -> Result<(), Fault> {
     match outcome {
-        Outcome::Documents(documents) => {
+        Outcome::Unchanged { documents, answer } => {
+            let Some(records) = adopt(shared, settings, job, &documents)? else {
+                tracing::warn!("an earlier report is gone, the file is fitted again");
+                let anew = analyse_anew(shared, settings, job, Some(answer));
+                return conclude(shared, settings, job, anew);
+            };
+            finish(shared, job, &records, Some(&answer))?;
+            retire_if_replaced(shared, settings, job, &records)?;
+            tracing::info!(documents = records.len(), "the earlier answer holds");
+            shared.note_unchanged();
+        }
+        Outcome::Documents { documents, answer } => {
             let records = publish(shared, settings, job, &documents)?;
-            let now_s = shared.now_s();
-            shared.with_ledger(|ledger| ledger.finish(job, &records, now_s))?;
+            finish(shared, job, &records, answer.as_deref())?;
             retire_if_replaced(shared, settings, job, &records)?;
             tracing::info!(documents = records.len(), "done");
+            finished::move_content(shared, &shared.settings().config, &job.blake3)?;
         }
         Outcome::Lost => {
             tracing::info!("the file is gone or was replaced; the job is dropped");
@@ -303,6 +342,16 @@ fn conclude(shared: &Shared, settings: &Settings, job: &Job, outcome: Outcome) -
     }
     shared.note_ended();
     Ok(())
+}
+
+fn finish(shared: &Shared, job: &Job, records: &[DocumentRecord], answer: Option<&str>) -> Result<(), Fault> {
+    let now_s = shared.now_s();
+    shared.with_ledger(|ledger| {
+        if let Some(answer) = answer {
+            ledger.note_answer(job, answer)?;
+        }
+        ledger.finish(job, records, now_s)
+    })
 }
 
 fn conclude_fault(shared: &Shared, settings: &Settings, job: &Job, fault: &Fault) -> Result<(), Fault> {
@@ -324,6 +373,7 @@ fn conclude_fault(shared: &Shared, settings: &Settings, job: &Job, fault: &Fault
             let (is_rejected, now_s) = (fault.disposition == Disposition::Reject, shared.now_s());
             shared.with_ledger(|ledger| ledger.give_up(job, is_rejected, &records, told, now_s))?;
             retire_if_replaced(shared, settings, job, &records)?;
+            finished::move_content(shared, &shared.settings().config, &job.blake3)?;
             shared.note_ended();
         }
         Disposition::Stop => {
@@ -337,21 +387,21 @@ fn conclude_fault(shared: &Shared, settings: &Settings, job: &Job, fault: &Fault
 /// The report on a file of which nothing else can be said.
 fn refusal(job: &Job, fault: &Fault) -> Document {
     let name = job.path.file_stem().unwrap_or_default().to_string_lossy().into_owned();
-    let report = json!({
-        "object": { "name": name },
-        "source": { "path": job.path.to_string_lossy(), "blake3": job.blake3 },
-        "verdict": "rejected",
-        "flags": [{ "code": fault.code.id, "detail": fault.detail }],
-        "provenance": {
-            "software": "emberline",
-            "version": env!("CARGO_PKG_VERSION"),
-            "config_fingerprint": job.fingerprint,
-        },
-    });
+    let object = ObjectRecord { name: Some(name.clone()), ..ObjectRecord::default() };
+    let source = SourceRecord {
+        path: job.path.to_string_lossy().into_owned(),
+        blake3: Some(job.blake3.clone()),
+        ..SourceRecord::default()
+    };
+    let provenance =
+        Provenance { config_fingerprint: Some(job.fingerprint.clone()), ..Provenance::of_this_program() };
+    let flags = vec![Flag::new(fault.code, fault.detail.clone())];
+    let report = Report::assemble(object, source, Findings { flags, provenance, ..Findings::default() });
     Document {
         object_name: name,
         verdict: "rejected".to_owned(),
-        json: report.to_string().into_bytes(),
+        // Serialising texts and nulls cannot fail.
+        json: serde_json::to_value(&report).unwrap_or_default().to_string().into_bytes(),
         row: serde_json::Value::Null,
     }
 }
@@ -382,13 +432,53 @@ fn publish(
         });
     }
     if is_in_force {
-        let superseded = shared.with_ledger(|ledger| ledger.superseded_pointers(&job.blake3))?;
-        for pointer in superseded.iter().filter(|old| records.iter().all(|new| new.pointer != **old)) {
-            output::retire(reports, pointer)
-                .map_err(|error| cannot_write(shared, job, &reports.join(pointer), &error))?;
-        }
+        retire_superseded(shared, settings, job, &records)?;
     }
     Ok(records)
+}
+
+/// Makes the reports of an earlier job with the same answer the reports of this job, if they are still there.
+fn adopt(
+    shared: &Shared,
+    settings: &Settings,
+    job: &Job,
+    documents: &[DocumentRecord],
+) -> Result<Option<Vec<DocumentRecord>>, Fault> {
+    let is_in_force = is_in_force(shared, job)?;
+    let reports = &settings.config.output.reports;
+    let mut occurrences: HashMap<&str, usize> = HashMap::new();
+    let mut records = Vec::with_capacity(documents.len());
+    for document in documents {
+        let occurrence = occurrences.entry(&document.object_name).or_insert(0);
+        let place = ReportPlace::new(&document.object_name, &job.blake3, *occurrence, &job.fingerprint);
+        *occurrence += 1;
+        let is_adopted = output::adopt(reports, &place, &document.report, is_in_force)
+            .map_err(|error| cannot_write(shared, job, &reports.join(&place.report), &error))?;
+        if !is_adopted {
+            return Ok(None);
+        }
+        records.push(DocumentRecord { report: place.report, pointer: place.pointer, ..document.clone() });
+    }
+    if is_in_force {
+        retire_superseded(shared, settings, job, &records)?;
+    }
+    Ok(Some(records))
+}
+
+/// What the reports of this job replace loses its pointer.
+fn retire_superseded(
+    shared: &Shared,
+    settings: &Settings,
+    job: &Job,
+    records: &[DocumentRecord],
+) -> Result<(), Fault> {
+    let reports = &settings.config.output.reports;
+    let superseded = shared.with_ledger(|ledger| ledger.superseded_pointers(&job.blake3))?;
+    for pointer in superseded.iter().filter(|old| records.iter().all(|new| new.pointer != **old)) {
+        output::retire(reports, pointer)
+            .map_err(|error| cannot_write(shared, job, &reports.join(pointer), &error))?;
+    }
+    Ok(())
 }
 
 /// An answer is in force when its content still stands somewhere and its configuration still holds.

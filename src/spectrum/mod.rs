@@ -9,6 +9,7 @@
 
 mod axis;
 pub mod fits;
+mod instrument;
 mod observation;
 mod read;
 pub mod readers;
@@ -18,8 +19,9 @@ mod settle;
 mod units;
 
 pub use axis::{Medium, VelocityFrame};
+pub use instrument::{Instrument, InstrumentFault, InstrumentRecord};
 pub use observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
-pub use read::{ReadFault, read_file, read_fits};
+pub use read::{ReadFault, instruments_of, read_file, read_fits};
 pub use resolution::{FWHM_PER_SIGMA, Resolution};
 pub use settings::{Assumptions, ErrorKind, ReadSettings};
 pub use units::{FluxScale, WaveUnit};

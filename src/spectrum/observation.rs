@@ -5,6 +5,7 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 use super::axis::{Medium, VelocityFrame};
+use super::instrument::InstrumentRecord;
 use super::{ReadFault, Spectrum};
 use crate::codes::Flag;
 
@@ -84,6 +85,8 @@ pub struct SourceRecord {
     pub fwhm_median_aa: Option<f64>,
     /// Whether fluxes are in erg s^-1 cm^-2 A^-1.
     pub is_flux_calibrated: Option<bool>,
+    /// The section of the configuration that was used for this instrument, and what it did.
+    pub instrument_section: Option<InstrumentRecord>,
     /// How each of these was known.
     pub decided_by: Decisions,
 }

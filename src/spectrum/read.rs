@@ -3,7 +3,8 @@
 use std::path::Path;
 
 use super::SpectrumFault;
-use super::fits::{FileFault, FitsFile};
+use super::fits::{FileFault, FitsFile, Header};
+use super::instrument::Instrument;
 use super::observation::{ObjectRecord, Observation, Refusal, SourceRecord};
 use super::readers;
 use super::settings::ReadSettings;
@@ -19,6 +20,27 @@ pub fn read_file(path: &Path, settings: &ReadSettings) -> Vec<Result<Observation
     };
     source.blake3 = Some(fits.blake3().to_owned());
     read_fits(&fits, source, settings).unwrap_or_else(|refusal| vec![Err(refusal)])
+}
+
+/// The instrument sections that hold for the extensions of a file, each once: what of `settings.instruments`
+/// can change what is read from it. None for a file that is no FITS file.
+pub fn instruments_of<'s>(path: &Path, settings: &'s ReadSettings) -> Option<Vec<&'s Instrument>> {
+    let fits = FitsFile::read(path, settings.largest_bytes()).ok()?;
+    let mut found: Vec<&Instrument> = Vec::new();
+    for hdu in 0..fits.hdus().len() {
+        if let Some(instrument) = settings.layers(&headers(&fits, hdu)).instrument
+            && !found.contains(&instrument)
+        {
+            found.push(instrument);
+        }
+    }
+    Some(found)
+}
+
+/// The header of an extension, then the primary one.
+fn headers(fits: &FitsFile, hdu: usize) -> Vec<&Header> {
+    let hdus = fits.hdus();
+    hdus.get(hdu).into_iter().chain(hdus.first()).map(|hdu| &hdu.header).collect()
 }
 
 fn refuse(source: SourceRecord, fault: ReadFault) -> Box<Refusal> {
@@ -68,7 +90,8 @@ pub fn read_fits(
         if missing > 0 {
             raw.flags.push(Flag::new(&codes::EXTENSIONS_MISSING, format!("{missing} missing")));
         }
-        settle(raw, source.clone(), settings)
+        let headers = headers(fits, raw.hdu);
+        settle(raw, source.clone(), &settings.layers(&headers))
     };
     Ok(raws.into_iter().map(settle).collect())
 }

@@ -1,11 +1,12 @@
 //! What the configuration (or the command line) says about files that do not speak for themselves.
 
-use std::collections::BTreeMap;
-
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 use super::axis::{Medium, VelocityFrame};
+use super::fits::Header;
+use super::instrument::Instrument;
+use super::resolution::Resolution;
 use super::units::{FluxScale, WaveUnit};
 
 /// What a column of errors holds.
@@ -46,29 +47,16 @@ pub struct Assumptions {
 }
 
 impl Assumptions {
-    /// These values where given, else those of `general`.
-    fn or(&self, general: &Assumptions) -> Assumptions {
-        // A resolution of one kind replaces one of the other kind.
-        let resolution =
-            if self.resolution_fwhm_aa.is_some() || self.resolving_power.is_some() { self } else { general };
-        Assumptions {
-            medium: self.medium.or(general.medium),
-            wave_unit: self.wave_unit.or(general.wave_unit),
-            flux_scale: self.flux_scale.or(general.flux_scale),
-            error_kind: self.error_kind.or(general.error_kind),
-            assume_snr: self.assume_snr.or(general.assume_snr),
-            resolution_fwhm_aa: resolution.resolution_fwhm_aa,
-            resolving_power: resolution.resolving_power,
-            velocity_frame: self.velocity_frame.or(general.velocity_frame),
-            overrule_file: self.overrule_file || general.overrule_file,
-        }
+    /// The resolution with the key that gives it.
+    fn resolution(&self) -> Option<(&'static str, Resolution)> {
+        let constant = self.resolution_fwhm_aa.map(|fwhm| ("resolution_fwhm_aa", Resolution::FwhmAa(fwhm)));
+        let power = self.resolving_power.map(|power| ("resolving_power", Resolution::ResolvingPower(power)));
+        constant.or(power)
     }
 
-    fn check(&self, table: &str) -> Result<(), String> {
+    fn check(&self) -> Result<(), String> {
         if self.resolution_fwhm_aa.is_some() && self.resolving_power.is_some() {
-            return Err(format!(
-                "found both resolution_fwhm_aa and resolving_power in {table}, need one of them"
-            ));
+            return Err("found both resolution_fwhm_aa and resolving_power, need one of them".to_owned());
         }
         for (key, value) in [
             ("resolution_fwhm_aa", self.resolution_fwhm_aa),
@@ -78,10 +66,47 @@ impl Assumptions {
             if let Some(value) = value
                 && !(value.is_finite() && value > 0.0)
             {
-                return Err(format!("found {key} = {value} in {table}, need a number above 0"));
+                return Err(format!("found {key} = {value}, need a number above 0"));
             }
         }
         Ok(())
+    }
+}
+
+/// A setting that was looked up: the key, the value, and whether it stands above the file.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Setting<T> {
+    /// Name of the key.
+    pub key: &'static str,
+    /// Its value.
+    pub value: T,
+    /// Whether it holds even where the file states something else.
+    pub overrules_file: bool,
+}
+
+/// What is taken for granted about one spectrum: the section of its instrument goes before the general
+/// assumptions, key by key, and each stands above the file only if it says so itself.
+#[derive(Debug)]
+pub struct Layers<'s> {
+    /// The section that matches, if one does.
+    pub instrument: Option<&'s Instrument>,
+    layers: Vec<Assumptions>,
+}
+
+impl Layers<'_> {
+    /// The first value of a key.
+    pub fn get<T>(&self, key: &'static str, value: impl Fn(&Assumptions) -> Option<T>) -> Option<Setting<T>> {
+        self.layers.iter().find_map(|layer| {
+            Some(Setting { key, value: value(layer)?, overrules_file: layer.overrule_file })
+        })
+    }
+
+    /// The first resolution, of either kind.
+    pub fn resolution(&self) -> Option<Setting<Resolution>> {
+        self.layers.iter().find_map(|layer| {
+            let (key, value) = layer.resolution()?;
+            Some(Setting { key, value, overrules_file: layer.overrule_file })
+        })
     }
 }
 
@@ -91,9 +116,8 @@ impl Assumptions {
 pub struct ReadSettings {
     /// For files of every instrument.
     pub assume: Assumptions,
-    /// For files whose telescope and instrument keywords (`TELESCOP INSTRUME`) contain this name, letter
-    /// case aside; goes before `assume`. Of several that fit, the longest name is used.
-    pub instruments: BTreeMap<String, Assumptions>,
+    /// What is known of single instruments, in order of precedence.
+    pub instruments: Vec<Instrument>,
     /// Only this row, fibre or aperture, from 0.
     pub row: Option<usize>,
     /// Largest file, packed or unpacked, MB.
@@ -104,7 +128,7 @@ impl Default for ReadSettings {
     fn default() -> Self {
         ReadSettings {
             assume: Assumptions::default(),
-            instruments: BTreeMap::new(),
+            instruments: Vec::new(),
             row: None,
             // A coadd of 500 multi-object spectra takes 60 MB.
             largest_file_mb: 256,
@@ -118,14 +142,11 @@ impl ReadSettings {
         self.largest_file_mb.saturating_mul(1_000_000)
     }
 
-    /// What is taken for granted about a file of this instrument.
-    pub fn assumptions(&self, instrument: Option<&str>) -> Assumptions {
-        let words = instrument.unwrap_or_default().to_ascii_lowercase();
-        let fits = |name: &&String| !name.is_empty() && words.contains(&name.to_ascii_lowercase());
-        match self.instruments.keys().filter(fits).max_by_key(|name| name.len()) {
-            Some(name) => self.instruments[name].or(&self.assume),
-            None => self.assume.clone(),
-        }
+    /// What is taken for granted about a spectrum with these headers, its own before the general one.
+    pub fn layers(&self, headers: &[&Header]) -> Layers<'_> {
+        let instrument = self.instruments.iter().find(|instrument| instrument.is_match(headers));
+        let layers = instrument.map(Instrument::assumptions).into_iter().chain([self.assume.clone()]);
+        Layers { instrument, layers: layers.collect() }
     }
 
     /// Refuses values that cannot be meant.
@@ -133,9 +154,9 @@ impl ReadSettings {
     /// # Errors
     /// What was found and what is needed, naming the key.
     pub fn check(&self) -> Result<(), String> {
-        self.assume.check("assume")?;
-        for (name, assume) in &self.instruments {
-            assume.check(&format!("instruments.{name}"))?;
+        self.assume.check()?;
+        for instrument in &self.instruments {
+            instrument.check().map_err(|fault| fault.to_string())?;
         }
         if self.largest_file_mb == 0 {
             return Err("found largest_file_mb = 0, need at least 1".to_owned());

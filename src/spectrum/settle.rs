@@ -5,10 +5,11 @@
 //! `Decisions`, and every departure from the file's own words is a flag.
 
 use super::axis::{Medium, VelocityFrame};
+use super::instrument::InstrumentRecord;
 use super::observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
 use super::read::ReadFault;
 use super::resolution::Resolution;
-use super::settings::{Assumptions, ErrorKind, ReadSettings};
+use super::settings::{ErrorKind, Layers, Setting};
 use super::units::{FluxScale, FluxUnit, WaveUnit};
 use super::{LARGEST_VALUE, Spectrum, SpectrumFault};
 use crate::codes::{self, Flag};
@@ -120,14 +121,13 @@ pub struct RawSpectrum {
 pub fn settle(
     raw: RawSpectrum,
     mut source: SourceRecord,
-    settings: &ReadSettings,
+    assume: &Layers<'_>,
 ) -> Result<Observation, Box<Refusal>> {
     source.hdu = Some(raw.hdu);
     source.row = raw.row;
     let object = raw.object.clone();
     let mut flags = raw.flags.clone();
-    let assume = settings.assumptions(object.instrument.as_deref());
-    match settle_values(raw, &mut source, &mut flags, &assume) {
+    match settle_values(raw, &mut source, &mut flags, assume) {
         Ok(spectrum) => Ok(Observation { spectrum, object, source, flags }),
         Err(fault) => Err(Box::new(Refusal { object, source, fault })),
     }
@@ -137,7 +137,7 @@ fn settle_values(
     mut raw: RawSpectrum,
     source: &mut SourceRecord,
     flags: &mut Vec<Flag>,
-    assume: &Assumptions,
+    assume: &Layers<'_>,
 ) -> Result<Spectrum, ReadFault> {
     check_lengths(&raw)?;
     trim_padding(&mut raw, flags);
@@ -147,7 +147,7 @@ fn settle_values(
     let mut decided = Decisions::default();
 
     let wave_unit = wave_unit(&raw, flags, &mut decided, assume)?;
-    let medium = settle_one("medium", raw.medium.take(), assume.medium, flags, assume)
+    let medium = settle_one(raw.medium.take(), assume.get("medium", |a| a.medium), flags)
         .ok_or(ReadFault::MediumUnknown)?;
     source.medium = Some(medium.value);
     decided.medium = Some(medium.by);
@@ -162,14 +162,16 @@ fn settle_values(
 
     let flux_unit = flux_unit(&raw, flags, &mut decided, assume)?;
     let flux: Vec<f64> = raw.flux.iter().map(|flux| scale(*flux, flux_unit.factor)).collect();
-    let sigma = sigma(&mut raw, &flux, flux_unit.factor, flags, &mut decided, assume)?;
+    let has_errors = raw.errors.is_some();
+    let mut sigma = sigma(&mut raw, &flux, flux_unit.factor, flags, &mut decided, assume)?;
 
     let resolution = resolution(raw.resolution.take(), &wave_vac_aa, flags, &mut decided, assume)?;
-    let frame = settle_one("velocity_frame", raw.velocity_frame.take(), assume.velocity_frame, flags, assume)
-        .unwrap_or_else(|| {
-            flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
-            Stated::new(VelocityFrame::Unknown, "not stated")
-        });
+    let frame =
+        settle_one(raw.velocity_frame.take(), assume.get("velocity_frame", |a| a.velocity_frame), flags)
+            .unwrap_or_else(|| {
+                flags.push(Flag::new(&codes::FRAME_UNKNOWN, "nothing in the file or the configuration"));
+                Stated::new(VelocityFrame::Unknown, "not stated")
+            });
     source.velocity_frame = Some(frame.value);
     decided.velocity_frame = Some(frame.by);
     source.decided_by = decided;
@@ -181,8 +183,28 @@ fn settle_values(
     source.fwhm_median_aa = median_fwhm_aa(&resolution, &wave_vac_aa);
     let is_flux_calibrated = flux_unit.scale == FluxScale::Calibrated;
     source.is_flux_calibrated = Some(is_flux_calibrated);
-    let is_good = raw.is_good.unwrap_or_else(|| vec![true; pixels]);
+    let mut is_good = raw.is_good.unwrap_or_else(|| vec![true; pixels]);
+    if let Some(instrument) = assume.instrument {
+        let error_scale = instrument.error_scale.filter(|_| has_errors);
+        sigma.iter_mut().for_each(|sigma| *sigma *= error_scale.unwrap_or(1.0));
+        source.instrument_section = Some(InstrumentRecord {
+            name: instrument.name.clone(),
+            masks_vac_aa: instrument.masks_vac_aa.clone(),
+            masked_pixels: mask(&mut is_good, &wave_vac_aa, |wave| instrument.is_masked(wave)),
+            error_scale,
+        });
+    }
     Ok(Spectrum::new(wave_vac_aa, flux, sigma, is_good, resolution, is_flux_calibrated)?)
+}
+
+/// Marks pixels bad by their wavelength; returns how many were good before.
+fn mask(is_good: &mut [bool], wave_vac_aa: &[f64], is_masked: impl Fn(f64) -> bool) -> usize {
+    let mut count = 0;
+    for (is_good, _) in is_good.iter_mut().zip(wave_vac_aa).filter(|(_, wave)| is_masked(**wave)) {
+        count += usize::from(*is_good);
+        *is_good = false;
+    }
+    count
 }
 
 fn check_lengths(raw: &RawSpectrum) -> Result<(), ReadFault> {
@@ -251,36 +273,31 @@ fn each_list(raw: &mut RawSpectrum, change: impl Fn(&mut Vec<f64>)) {
 
 /// The file's word, else the configuration's; a difference between them becomes a flag.
 fn settle_one<T: PartialEq + std::fmt::Debug>(
-    key: &str,
     stated: Option<Stated<T>>,
-    setting: Option<T>,
+    setting: Option<Setting<T>>,
     flags: &mut Vec<Flag>,
-    assume: &Assumptions,
 ) -> Option<Stated<T>> {
     match (stated, setting) {
         (None, None) => None,
-        (Some(stated), None) => {
-            let by = stated.origin();
-            Some(Stated::new(stated.value, by))
-        }
-        (None, Some(value)) => Some(Stated::new(value, format!("configuration: {key}"))),
-        (Some(stated), Some(value)) if stated.value == value => {
-            let by = stated.origin();
-            Some(Stated::new(value, by))
-        }
-        (Some(stated), Some(value)) => {
-            let used = if assume.overrule_file { "configuration" } else { "file" };
+        (None, Some(Setting { key, value, .. })) => Some(Stated::new(value, format!("configuration: {key}"))),
+        (Some(stated), Some(setting)) if stated.value != setting.value => {
+            let Setting { key, value, overrules_file } = setting;
+            let used = if overrules_file { "configuration" } else { "file" };
             let detail = format!(
                 "{key}: the file says {:?} ({}), the configuration {value:?}; used the {used}",
                 stated.value, stated.by
             );
             flags.push(Flag::new(&codes::SETTING_DIFFERS_FROM_FILE, detail));
-            Some(if assume.overrule_file {
+            Some(if overrules_file {
                 Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))
             } else {
                 let by = stated.origin();
                 Stated::new(stated.value, by)
             })
+        }
+        (Some(stated), _) => {
+            let by = stated.origin();
+            Some(Stated::new(stated.value, by))
         }
     }
 }
@@ -289,14 +306,14 @@ fn wave_unit(
     raw: &RawSpectrum,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    assume: &Assumptions,
+    assume: &Layers<'_>,
 ) -> Result<WaveUnit, ReadFault> {
     let (stated, not_understood) = match &raw.wave_unit {
         UnitWords::Known(stated) => (Some(stated.clone()), None),
         UnitWords::NotUnderstood(words) => (None, Some(words.clone())),
         UnitWords::Absent => (None, None),
     };
-    if let Some(unit) = settle_one("wave_unit", stated, assume.wave_unit, flags, assume) {
+    if let Some(unit) = settle_one(stated, assume.get("wave_unit", |a| a.wave_unit), flags) {
         decided.wave_unit = Some(unit.by);
         return Ok(unit.value);
     }
@@ -317,7 +334,7 @@ fn flux_unit(
     raw: &RawSpectrum,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    assume: &Assumptions,
+    assume: &Layers<'_>,
 ) -> Result<FluxUnit, ReadFault> {
     let factor = match &raw.flux_unit {
         UnitWords::Known(stated) => stated.value.factor,
@@ -327,7 +344,7 @@ fn flux_unit(
         UnitWords::Known(stated) => Some(Stated::new(stated.value.scale, stated.by.clone())),
         UnitWords::NotUnderstood(_) | UnitWords::Absent => None,
     };
-    let scale = match settle_one("flux_scale", stated, assume.flux_scale, flags, assume) {
+    let scale = match settle_one(stated, assume.get("flux_scale", |a| a.flux_scale), flags) {
         Some(scale) => scale,
         None => match &raw.flux_unit {
             UnitWords::NotUnderstood(found) => {
@@ -354,17 +371,17 @@ fn sigma(
     factor: f64,
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    assume: &Assumptions,
+    assume: &Layers<'_>,
 ) -> Result<Vec<f64>, ReadFault> {
     let Some(errors) = raw.errors.take() else {
-        let snr = assume.assume_snr.ok_or(ReadFault::ErrorsMissing)?;
+        let snr = assume.get("assume_snr", |a| a.assume_snr).ok_or(ReadFault::ErrorsMissing)?.value;
         let detail = format!("signal-to-noise ratio {snr} per pixel");
         decided.error_kind = Some(format!("configuration: assume_snr = {snr}"));
         flags.push(Flag::new(&codes::ERRORS_ASSUMED, detail));
         let smallest = SMALLEST_ASSUMED_ERROR * median(flux.iter().map(|value| value.abs()));
         return Ok(flux.iter().map(|value| value.abs().max(smallest) / snr).collect());
     };
-    let kind = settle_one("error_kind", raw.error_kind.take(), assume.error_kind, flags, assume)
+    let kind = settle_one(raw.error_kind.take(), assume.get("error_kind", |a| a.error_kind), flags)
         .ok_or(ReadFault::ErrorKindUnknown)?;
     decided.error_kind = Some(kind.by);
     // Zero, negative and fill values come out as NaN or zero, which Spectrum::new counts as bad.
@@ -382,18 +399,13 @@ fn resolution(
     wave_vac_aa: &[f64],
     flags: &mut Vec<Flag>,
     decided: &mut Decisions,
-    assume: &Assumptions,
+    assume: &Layers<'_>,
 ) -> Result<Resolution, ReadFault> {
     let stated = stated.and_then(|stated| believable(stated, wave_vac_aa, flags));
-    let (key, setting) = match (assume.resolution_fwhm_aa, assume.resolving_power) {
-        (Some(fwhm_aa), _) => ("resolution_fwhm_aa", Some(Resolution::FwhmAa(fwhm_aa))),
-        (None, Some(power)) => ("resolving_power", Some(Resolution::ResolvingPower(power))),
-        (None, None) => ("resolution_fwhm_aa", None),
-    };
     // A setting for files without a resolution is the ordinary case, so a difference from the file's
     // own widths is not worth a flag; only overruling is.
-    let chosen = match (stated, setting) {
-        (Some(stated), Some(value)) if assume.overrule_file => {
+    let chosen = match (stated, assume.resolution()) {
+        (Some(stated), Some(Setting { key, value, overrules_file: true })) => {
             let detail = format!("{key}: used the configuration instead of {}", stated.by);
             flags.push(Flag::new(&codes::SETTING_DIFFERS_FROM_FILE, detail));
             Stated::new(value, format!("configuration: {key}, overruling {}", stated.by))
@@ -402,7 +414,7 @@ fn resolution(
             let by = stated.origin();
             Stated::new(stated.value, by)
         }
-        (None, Some(value)) => Stated::new(value, format!("configuration: {key}")),
+        (None, Some(Setting { key, value, .. })) => Stated::new(value, format!("configuration: {key}")),
         (None, None) => return Err(ReadFault::ResolutionUnknown),
     };
     decided.resolution = Some(chosen.by);

@@ -1,5 +1,7 @@
 //! The program as users meet it: exit codes, what goes to stdout and what to stderr.
 
+mod rehearse;
+
 use std::path::Path;
 use std::process::{Command, Output, Stdio};
 
@@ -9,6 +11,12 @@ use crate::support::folder;
 
 fn emberline(arguments: &[&str]) -> Output {
     Command::new(env!("CARGO_BIN_EXE_emberline")).args(arguments).output().expect("the program starts")
+}
+
+/// The same with a temporary folder of its own.
+fn emberline_in(temporary: &Path, arguments: &[&str]) -> Output {
+    let mut command = Command::new(env!("CARGO_BIN_EXE_emberline"));
+    command.args(arguments).env("TMPDIR", temporary).output().expect("the program starts")
 }
 
 fn exit_code(output: &Output) -> i32 {
@@ -89,6 +97,27 @@ fn every_input_gets_one_report_in_order_and_a_failed_one_exits_with_3() {
     }
     let summary = String::from_utf8_lossy(&output.stderr);
     assert!(summary.contains("5 objects"), "{summary}");
+}
+
+/// GD 71 (CALSPEC): a section of a configuration changes what `fit` does, and the report says so.
+#[test]
+fn a_configuration_named_to_fit_is_used() {
+    let folder = folder::temporary();
+    let star = folder::data("calspec/gd71_stisnic_002.fits.gz");
+    let section = "[fit]\nexternal_log_g = 0.5\n[[instrument]]\nname = \"STIS\"\nerror_scale = 2.0\n";
+    let config = format!("{section}match = {{ DESCRIP = \"* stis *\" }}");
+    let config = folder::write(&folder, "own.toml", config.as_bytes());
+    let plain = &reports(&emberline(&["fit", path(&star)]))[0];
+    let with_config = &reports(&emberline(&["fit", "--config", path(&config), path(&star)]))[0];
+    assert!(plain["source"]["instrument_section"].is_null());
+    assert_eq!(with_config["source"]["instrument_section"]["error_scale"], 2.0);
+    assert_eq!(with_config["parameters"]["log_g"]["err_external"], 0.5);
+    let fingerprint = |report: &Value| report["provenance"]["config_fingerprint"].clone();
+    assert_ne!(fingerprint(plain), fingerprint(with_config));
+    let broken = folder::write(&folder, "broken.toml", b"[fit]\nouter_sigma = 3.0");
+    let output = emberline(&["fit", "--config", path(&broken), path(&star)]);
+    assert_eq!(exit_code(&output), 2);
+    assert!(String::from_utf8_lossy(&output.stderr).contains("did you mean `fit.outlier_sigma`"));
 }
 
 #[test]

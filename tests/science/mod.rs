@@ -5,4 +5,5 @@ mod grid_file;
 mod models;
 mod not_da;
 mod recovery;
+mod settings;
 mod standards;

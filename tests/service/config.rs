@@ -4,7 +4,9 @@ use std::path::Path;
 use std::process::ExitCode;
 
 use emberline::cli::check::{self, CheckArgs};
-use emberline::service::config::{Config, ConfigError, Medium, known_keys};
+use emberline::service::config::{Config, ConfigError, known_keys};
+use emberline::spectrum::Medium;
+use emberline::spectrum::fits::Header;
 
 const SAMPLE: &str = include_str!("../../config/emberline.toml");
 
@@ -41,7 +43,7 @@ fn the_sample_has_every_key_once_with_a_comment_above() {
         if plain.starts_with('[') {
             section = plain.trim_matches(['[', ']']).to_owned();
         } else if let Some((key, _)) = plain.split_once(" = ").filter(|_| !plain.starts_with('#')) {
-            let shares_comment = key == "resolution_fwhm_aa";
+            let shares_comment = ["resolution_fwhm_aa", "external_log_g"].contains(&key);
             assert!(above.starts_with('#') || shares_comment, "{section}.{key} has no comment");
             found.push(format!("{section}.{key}"));
         }
@@ -112,19 +114,58 @@ fn check_shows_a_configuration_that_parses_to_itself() {
 
 #[test]
 fn an_instrument_is_chosen_by_its_header() {
-    let config = parse(&sample_with_instrument()).unwrap();
-    let header = |instrume: &'static str, arm: &'static str| {
-        move |keyword: &str| match keyword {
-            "INSTRUME" => Some(instrume.to_owned()),
-            "ARM" => Some(arm.to_owned()),
-            _ => None,
-        }
+    let instrument = parse(&sample_with_instrument()).unwrap().instrument.remove(0);
+    assert_eq!(instrument.medium, Some(Medium::Air));
+    let header = |cards: &[&str]| {
+        let text: String = cards.iter().map(|card| format!("{card:80}")).collect();
+        Header::parse(text.as_bytes())
     };
-    let found = config.instrument_for(header("kfs-1b ", "BLUE")).unwrap();
-    assert_eq!(found.medium, Some(Medium::Air));
-    assert_eq!(found.masks_vac_aa, [[5575.0, 5583.0]]);
-    assert!(config.instrument_for(header("KFS-1", "red")).is_none());
-    assert!(config.instrument_for(|_| None).is_none());
+    let blue = header(&["INSTRUME= 'kfs-1b '", "ARM     = 'BLUE'"]);
+    let red = header(&["INSTRUME= 'KFS-1'", "ARM     = 'red'"]);
+    let only_arm = header(&["ARM     = 'Blue'"]);
+    assert!(instrument.is_match(&[&blue]));
+    assert!(!instrument.is_match(&[&red]), "all keywords must match");
+    assert!(!instrument.is_match(&[&only_arm]), "a missing keyword matches nothing");
+    assert!(instrument.is_match(&[&only_arm, &red]), "the spectrum's own header goes before the general one");
+    assert!(!instrument.is_match(&[&red, &only_arm]));
+}
+
+#[test]
+fn an_instrument_section_that_cannot_be_meant_is_refused_with_its_name() {
+    let section = |line: &str| format!("[[instrument]]\nname = \"A\"\nmatch = {{ X = \"1\" }}\n{line}");
+    parse(&section("")).unwrap();
+    for (line, words) in [
+        ("error_scale = 0.0", "`error_scale` is 0, need a positive number"),
+        ("assume_snr = nan", "`assume_snr` is NaN, need a positive number"),
+        ("masks_vac_aa = [[5000.0, 4000.0]]", "`masks_vac_aa` is [5000, 4000], need [low, high]"),
+        ("resolving_power = 900.0\nresolution_fwhm_aa = 3.0", "need only one of"),
+        ("velocity_frame = \"unknown\"", "need topocentric, heliocentric or barycentric"),
+    ] {
+        let message = refusal(&section(line));
+        assert!(message.contains("section \"A\"") && message.contains(words), "{message}");
+    }
+    assert!(refusal("[[instrument]]\nname = \"A\"").contains("need at least one header keyword"));
+    assert!(refusal(&section("medium = \"water\"")).contains("water"));
+}
+
+#[test]
+fn fit_settings_that_cannot_be_meant_are_refused() {
+    for (line, words) in [
+        ("lines = []", "`fit.lines (their number)` is 0, need at least one line"),
+        ("lines = [\"H-beta\", \"H-beta\"]", "`fit.lines` is a list with one line twice"),
+        ("lines = [\"H-omega\"]", "cannot fit the line H-omega: known are H-alpha, H-beta"),
+        ("fewest_windows = 6", "`fit.fewest_windows` is 6, need 1 to the number of lines"),
+        ("core_mask_half_width_aa = -1.0", "need 0 to 20 A"),
+        ("largest_velocity_km_s = 2000.0", "need 100 to 1500 km/s"),
+        ("outlier_sigma = nan", "`fit.outlier_sigma` is NaN"),
+        ("tilt_sigma = 0.0", "need 0.005 to 100"),
+        ("external_teff_relative = 1.0", "need 0 to 0.5"),
+        ("external_log_g = -0.1", "need 0 to 1 dex"),
+    ] {
+        let message = refusal(&format!("[fit]\n{line}"));
+        assert!(message.contains(words), "{message}");
+    }
+    assert_eq!(parse("[fit]\nlines = [\"H8\", \"H9\"]").unwrap().fit.lines.len(), 2);
 }
 
 #[test]
@@ -132,6 +173,10 @@ fn the_fingerprint_covers_only_what_can_change_an_answer() {
     let plain = parse("").unwrap().answer_fingerprint();
     let other = "log.level = \"debug\"\nworkers.threads = 7\ninbox.still_s = 1.0\nretry.attempts = 9";
     assert_eq!(parse(other).unwrap().answer_fingerprint(), plain);
+    for line in ["fit.lines = [\"H-beta\", \"H8\"]", "fit.outlier_sigma = 6.0", "fit.external_log_g = 0.04"] {
+        assert_ne!(parse(line).unwrap().answer_fingerprint(), plain, "{line}");
+    }
+    assert_eq!(parse("fit.outlier_sigma = 5.0").unwrap().answer_fingerprint(), plain);
     let text = sample_with_instrument();
     let with_instrument = parse(&text).unwrap().answer_fingerprint();
     assert_ne!(with_instrument, plain);

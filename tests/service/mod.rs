@@ -7,6 +7,8 @@ mod flood;
 mod inbox;
 mod kill;
 mod ledger;
+mod moving;
+mod real;
 mod running;
 
 use crate::support::site;

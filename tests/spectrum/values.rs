@@ -2,7 +2,7 @@
 
 use emberline::physics::wavelength::air_to_vacuum_aa;
 use emberline::spectrum::{
-    Assumptions, BadPixels, Medium, ReadSettings, Resolution, Spectrum, VelocityFrame,
+    BadPixels, Instrument, Medium, Observation, ReadSettings, Resolution, Spectrum, VelocityFrame, read_file,
 };
 use proptest::prelude::*;
 
@@ -154,16 +154,94 @@ fn an_instrument_has_its_own_assumptions() {
         assume.medium = Some(Medium::Vacuum);
         assume.resolving_power = Some(1000.0);
     });
-    for (name, fwhm_aa) in [("kes", 4.0), ("KES-2", 3.0)] {
-        let assume = Assumptions { resolution_fwhm_aa: Some(fwhm_aa), ..Assumptions::default() };
-        settings.instruments.insert(name.to_owned(), assume);
+    for (pattern, fwhm_aa) in [("kes-2*", 3.0), ("KES*", 4.0)] {
+        settings.instruments.push(Instrument {
+            name: pattern.to_owned(),
+            keywords: [("INSTRUME".to_owned(), pattern.to_owned())].into(),
+            resolution_fwhm_aa: Some(fwhm_aa),
+            ..Instrument::default()
+        });
     }
-    let resolution = |instrument: &str| one(file(instrument), &settings).spectrum.resolution().clone();
-    assert_eq!(resolution("KES"), Resolution::FwhmAa(4.0));
-    assert_eq!(resolution("Kes-2 blue"), Resolution::FwhmAa(3.0));
-    assert_eq!(resolution("other"), Resolution::ResolvingPower(1000.0));
-    settings.instruments.entry("KES-2".to_owned()).or_default().resolving_power = Some(900.0);
-    assert!(settings.check().unwrap_err().contains("instruments.KES-2"));
+    let read = |instrument: &str| one(file(instrument), &settings);
+    let used = |observation: &Observation| {
+        observation.source.instrument_section.as_ref().map(|section| section.name.clone())
+    };
+    for (instrument, resolution, section) in [
+        ("KES", Resolution::FwhmAa(4.0), Some("KES*")),
+        ("Kes-2 blue", Resolution::FwhmAa(3.0), Some("kes-2*")),
+        ("other", Resolution::ResolvingPower(1000.0), None),
+    ] {
+        let observation = read(instrument);
+        assert_eq!(*observation.spectrum.resolution(), resolution);
+        assert_eq!(used(&observation).as_deref(), section);
+    }
+    settings.instruments[1].resolving_power = Some(900.0);
+    assert!(settings.check().unwrap_err().contains("section \"KES*\""));
+}
+
+#[test]
+fn a_section_stands_above_the_file_and_a_general_assumption_below_it() {
+    let (wave, flux, sigma) = ramp();
+    let bytes = table_file(&wave, &flux, &sigma).bytes();
+    // The file says vacuum and a resolving power of 1000; its name is in OBJECT.
+    let section = Instrument {
+        name: "own".to_owned(),
+        keywords: [("OBJECT".to_owned(), "test*".to_owned()), ("VACUUM".to_owned(), "T".to_owned())].into(),
+        resolving_power: Some(700.0),
+        ..Instrument::default()
+    };
+    let mut settings = assuming(|assume| assume.medium = Some(Medium::Air));
+    settings.instruments.push(section);
+    let observation = one(bytes.clone(), &settings);
+    assert_eq!(*observation.spectrum.resolution(), Resolution::ResolvingPower(700.0));
+    assert!(observation.source.decided_by.resolution.as_ref().unwrap().contains("overruling SPEC_RES"));
+    // The assumption was not told to overrule, though the section is.
+    assert_eq!(observation.source.medium, Some(Medium::Vacuum));
+    settings.instruments[0].overrule_file = false;
+    let observation = one(bytes, &settings);
+    assert_eq!(*observation.spectrum.resolution(), Resolution::ResolvingPower(1000.0));
+}
+
+/// GD 71 (CALSPEC, real): the section's mask and factor reach the values, and the record says so.
+#[test]
+fn masks_and_error_scale_are_applied_to_a_real_spectrum() {
+    let path = crate::support::folder::data("calspec/gd71_stisnic_002.fits.gz");
+    let read = |settings: &ReadSettings| read_file(&path, settings).remove(0).unwrap();
+    let plain = read(&ReadSettings::default());
+    assert_eq!(plain.source.instrument_section, None);
+    let section = Instrument {
+        name: "STIS".to_owned(),
+        keywords: [
+            ("TARGETID".to_owned(), "gd7*".to_owned()),
+            ("DESCRIP".to_owned(), "* with stis *".to_owned()),
+            ("AIRMASS".to_owned(), "0".to_owned()),
+        ]
+        .into(),
+        masks_vac_aa: vec![[4850.0, 4875.0], [9000.0, 9100.0]],
+        error_scale: Some(2.5),
+        ..Instrument::default()
+    };
+    let settings = ReadSettings { instruments: vec![section], ..ReadSettings::default() };
+    let changed = read(&settings);
+    let (before, after) = (&plain.spectrum, &changed.spectrum);
+    assert_eq!(before.flux(), after.flux());
+    let mut masked = 0;
+    for (i, wave) in before.wave_vac_aa().iter().enumerate() {
+        let is_in = (4850.0..=4875.0).contains(wave) || (9000.0..=9100.0).contains(wave);
+        assert_eq!(after.is_good()[i], before.is_good()[i] && !is_in, "at {wave}");
+        masked += usize::from(is_in && before.is_good()[i]);
+        if before.sigma()[i].is_finite() {
+            assert_eq!(after.sigma()[i], 2.5 * before.sigma()[i]);
+        }
+    }
+    assert!(masked > 20, "{masked}");
+    let record = changed.source.instrument_section.unwrap();
+    assert_eq!((record.name.as_str(), record.masked_pixels, record.error_scale), ("STIS", masked, Some(2.5)));
+    assert_eq!(record.masks_vac_aa, [[4850.0, 4875.0], [9000.0, 9100.0]]);
+    // One keyword that does not match, and the section is not used.
+    let mut other = settings;
+    other.instruments[0].keywords.insert("DBTABLE".to_owned(), "OTHER*".to_owned());
+    assert_eq!(read(&other), plain);
 }
 
 #[test]

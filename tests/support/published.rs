@@ -4,12 +4,19 @@ use std::path::PathBuf;
 use std::sync::OnceLock;
 
 use emberline::grid::FluxGrid;
+use emberline::grid::track_table::TrackTable;
 use emberline::spectrum::{Assumptions, FluxScale, Medium, ReadSettings, Spectrum, read_file};
 
 /// The bundled grid.
 pub fn bundled_grid() -> &'static FluxGrid {
     static GRID: OnceLock<FluxGrid> = OnceLock::new();
     GRID.get_or_init(|| FluxGrid::read(&root().join("grids/flux.fits")).unwrap())
+}
+
+/// The bundled evolutionary tracks.
+pub fn bundled_tracks() -> &'static TrackTable {
+    static TRACKS: OnceLock<TrackTable> = OnceLock::new();
+    TRACKS.get_or_init(|| TrackTable::read(&root().join("grids/tracks.fits")).unwrap())
 }
 
 /// The project's folder.

@@ -116,7 +116,7 @@ impl Site {
     pub fn spawn_with(&self, adapt: impl FnOnce(&mut Command)) -> DaemonProcess {
         let log = self.folder.path().join("log");
         let mut command = self.command();
-        command.stderr(File::options().create(true).append(true).open(&log).unwrap());
+        command.stderr(self.log_file());
         adapt(&mut command);
         let socket = emberline::service::config::beside(&self.ledger, ".socket");
         DaemonProcess { child: command.spawn().unwrap(), socket, log }
@@ -124,6 +124,22 @@ impl Site {
 
     pub fn spawn(&self) -> DaemonProcess {
         self.spawn_with(|_| {})
+    }
+
+    /// Starts the program itself, with the real analysis, and waits until it watches.
+    pub fn start_real(&self) -> DaemonProcess {
+        let mut daemon = self.spawn_with(|command| {
+            *command = Command::new(env!("CARGO_BIN_EXE_emberline"));
+            command.arg("watch").arg("--config").arg(&self.config_path).stdout(Stdio::null());
+            command.env("EMBERLINE_GRIDS", Path::new(env!("CARGO_MANIFEST_DIR")).join("grids"));
+            command.env_remove("NOTIFY_SOCKET").stderr(self.log_file());
+        });
+        daemon.wait_until_watching();
+        daemon
+    }
+
+    fn log_file(&self) -> File {
+        File::options().create(true).append(true).open(self.folder.path().join("log")).unwrap()
     }
 
     /// Starts a daemon and waits until it watches.
