@@ -272,6 +272,9 @@ codes! {
     SERVICE_OUTPUT = "service.cannot-write-output", Reject,
         "a report could not be written",
         "make room on the disk, or make the folder output.reports writable, then start the daemon again";
+    SERVICE_CATALOGUE = "service.cannot-use-catalogue", Reject,
+        "the catalogue could not be read or written",
+        "make room on the disk, or make the folder of output.catalogue writable, then start the daemon again";
     SERVICE_LEDGER = "service.cannot-use-ledger", Reject,
         "the ledger could not be read or written",
         "make room on the disk, or make the folder of output.ledger writable, then start the daemon again";

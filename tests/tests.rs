@@ -15,5 +15,7 @@ mod spectrum;
 mod service;
 // The report document.
 mod report;
+// Rows, exports, loading.
+mod catalogue;
 // FITS byte writer, folders.
 mod support;

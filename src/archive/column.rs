@@ -104,7 +104,7 @@ const PLAIN: [Plain; 26] = [
     ("airmass", "/object/airmass", Kind::Float, "", "obs.airMass", "Airmass"),
     ("instrument", "/object/instrument", Kind::Text, "", "meta.id;instr", "Telescope and instrument"),
     ("program", "/object/program", Kind::Text, "", "meta.id;obs.proposal", "Observing programme"),
-    ("source_path", "/source/path", Kind::Text, "", "meta.file", "Path of the spectrum"),
+    ("source_path", "/source/path", Kind::Text, "", "meta.id;meta.file", "Path of the spectrum"),
     (
         "source_blake3",
         "/source/blake3",
@@ -345,11 +345,19 @@ pub fn row(report: &Value, report_path: &str, pointer: &str, is_current: bool) -
 
 fn cell(value: &Value, kind: Kind) -> Cell {
     match kind {
-        // NUL ends a string in C and in FITS, and PostgreSQL refuses it: it becomes the replacement character.
-        Kind::Text => value.as_str().map_or(Cell::Null, |text| Cell::Text(text.replace('\0', "\u{fffd}"))),
+        Kind::Text => value.as_str().map_or(Cell::Null, |text| Cell::Text(printable(text))),
         Kind::Integer => value.as_i64().map_or(Cell::Null, Cell::Integer),
         Kind::Float => value.as_f64().filter(|number| number.is_finite()).map_or(Cell::Null, Cell::Float),
     }
+}
+
+/// Control characters become the replacement character: XML has none, NUL ends a string in C and in FITS, and
+/// PostgreSQL refuses it. Line ends and tabs stay.
+fn printable(text: &str) -> String {
+    let is_illegal = |c: char| {
+        (c.is_control() && !matches!(c, '\t' | '\n' | '\r')) || matches!(c, '\u{fffe}' | '\u{ffff}')
+    };
+    text.replace(is_illegal, "\u{fffd}")
 }
 
 fn flag_codes(report: &Value) -> String {

@@ -4,6 +4,7 @@
 //! configuration, 3 some input failed (its report says why).
 
 mod analyst;
+mod catalogue;
 pub mod check;
 mod codes;
 pub mod compare;
@@ -62,6 +63,8 @@ enum Command {
     Check(check::CheckArgs),
     /// Compare the reports of two runs.
     Compare(compare::CompareArgs),
+    /// Export the catalogue of results, or fill it from reports.
+    Catalogue(catalogue::CatalogueArgs),
     /// List the stable codes of faults and flags with their meaning and remedy.
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
@@ -91,6 +94,7 @@ pub fn run() -> ExitCode {
         Command::Status(arguments) => status::run(&arguments).map_err(Into::into),
         Command::Check(arguments) => check::run(&arguments).map_err(Into::into),
         Command::Compare(arguments) => compare::run(&arguments).map_err(Into::into),
+        Command::Catalogue(arguments) => catalogue::run(&arguments),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
     };

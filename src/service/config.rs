@@ -148,6 +148,8 @@ pub struct OutputConfig {
     pub reports: PathBuf,
     /// The ledger file.
     pub ledger: PathBuf,
+    /// The catalogue; empty means beside the ledger.
+    pub catalogue: PathBuf,
     /// Folder that originals are moved to when they are finished; empty leaves them where they are.
     pub move_finished_to: PathBuf,
 }
@@ -409,6 +411,15 @@ impl Config {
         // make all configurations look the same, which the tests would see.
         let text = serde_json::to_string(&(&self.fit, &self.instrument)).unwrap_or_default();
         blake3::hash(text.as_bytes()).to_hex().to_string()
+    }
+
+    /// The catalogue's database.
+    pub fn catalogue_path(&self) -> PathBuf {
+        if self.output.catalogue.as_os_str().is_empty() {
+            beside(&self.output.ledger, ".catalogue")
+        } else {
+            self.output.catalogue.clone()
+        }
     }
 
     /// The socket of the running daemon.

@@ -14,6 +14,7 @@ use std::time::{Duration, Instant};
 use sd_notify::NotifyState;
 use serde::{Deserialize, Serialize};
 
+use crate::archive::catalogue::{Catalogue, CatalogueError};
 use crate::archive::ledger::{Ledger, LedgerError};
 use crate::codes;
 use crate::service::analyst::{AnalystFactory, Fault};
@@ -79,6 +80,9 @@ pub enum StartError {
     /// The ledger cannot be used.
     #[error(transparent)]
     Ledger(#[from] LedgerError),
+    /// The catalogue cannot be used.
+    #[error(transparent)]
+    Catalogue(#[from] CatalogueError),
     /// The science cannot be used, or something else makes going on pointless.
     #[error("cannot start")]
     Fault(#[from] Fault),
@@ -158,7 +162,8 @@ impl Daemon {
         let (resumed, given_up) = ledger.recover(max_interruptions, codes::SERVICE_INTERRUPTED.id, now_s)?;
         finished::resume(&mut ledger)?;
         let stale = ledger.queue_stale(&fingerprint, now_s)?;
-        mend_pointers(&ledger, &reports, &fingerprint)?;
+        let mut catalogue = Catalogue::open(&config.catalogue_path())?;
+        mend_pointers(&ledger, &mut catalogue, &reports, &fingerprint)?;
         tracing::info!(resumed, given_up, stale, fingerprint, "ledger opened");
 
         let socket = config.socket_path();
@@ -166,6 +171,7 @@ impl Daemon {
         let shared = Arc::new(Shared::new(
             Settings { config, analyst, fingerprint },
             ledger,
+            catalogue,
             options.clock.clone(),
             sender.clone(),
         )?);
@@ -342,7 +348,12 @@ impl Daemon {
             .map_err(|fault| fault.to_string())?;
         if fingerprint != before.fingerprint {
             shared
-                .with_ledger(|ledger| Ok(mend_pointers(ledger, &reports, &fingerprint)))
+                .with_ledger(|ledger| {
+                    Ok(shared.with_catalogue(|catalogue| {
+                        Ok(mend_pointers(ledger, catalogue, &reports, &fingerprint))
+                    }))
+                })
+                .and_then(|outcome| outcome)
                 .map_err(|fault| fault.to_string())?
                 .map_err(|error| chain(&error))?;
         }
@@ -405,6 +416,7 @@ fn check_needs_no_restart(before: &Config, after: &Config) -> Result<(), String>
     let same = [
         ("output.reports", before.output.reports == after.output.reports),
         ("output.ledger", before.output.ledger == after.output.ledger),
+        ("output.catalogue", before.output.catalogue == after.output.catalogue),
         ("service.socket", before.service.socket == after.service.socket),
         ("log.destination", before.log.destination == after.log.destination),
         ("log.format", before.log.format == after.log.format),
@@ -415,14 +427,27 @@ fn check_needs_no_restart(before: &Config, after: &Config) -> Result<(), String>
     }
 }
 
-/// Makes every pointer lead to the report that is in force under this fingerprint.
-fn mend_pointers(ledger: &Ledger, reports: &Path, fingerprint: &str) -> Result<(), StartError> {
+/// Makes every pointer lead to the report that is in force under this fingerprint, and the catalogue agree: rows
+/// that a crash or a lost catalogue left out are put in from the reports.
+fn mend_pointers(
+    ledger: &Ledger,
+    catalogue: &mut Catalogue,
+    reports: &Path,
+    fingerprint: &str,
+) -> Result<(), StartError> {
     let system = |source| StartError::System { attempted: "setting pointers to reports".to_owned(), source };
     for (report, pointer) in ledger.reports_in_force(fingerprint)? {
+        if catalogue.standing(&report)? != Some(true)
+            && let Ok(row) = output::catalogue_row(reports, &report, &pointer, true)
+        {
+            // A report that is gone from the disk is the next scan's business.
+            catalogue.put(&[row])?;
+        }
         output::point(reports, &ReportPlace { report, pointer }).map_err(system)?;
     }
     for pointer in ledger.foreign_pointers(fingerprint)? {
         output::retire(reports, &pointer).map_err(system)?;
+        catalogue.retire(&pointer)?;
     }
     Ok(())
 }

@@ -15,6 +15,8 @@ use std::io::{self, ErrorKind, Write};
 use std::os::unix::fs::symlink;
 use std::path::{Path, PathBuf};
 
+use crate::archive::column;
+
 /// Longest readable part of a folder's name, bytes.
 const MAX_NAME_BYTES: usize = 80;
 
@@ -135,6 +137,20 @@ pub fn point(reports: &Path, place: &ReportPlace) -> io::Result<()> {
     remove_if_there(&temporary)?;
     symlink(target, &temporary)?;
     fs::rename(&temporary, &pointer)
+}
+
+/// The catalogue's row of a report on disk.
+///
+/// # Errors
+/// The report cannot be read, or is no JSON.
+pub fn catalogue_row(
+    reports: &Path,
+    report: &str,
+    pointer: &str,
+    is_current: bool,
+) -> io::Result<Vec<column::Cell>> {
+    let document = serde_json::from_slice(&fs::read(reports.join(report))?)?;
+    Ok(column::row(&document, report, pointer, is_current))
 }
 
 /// Removes a pointer that is no longer in force; the report stays.

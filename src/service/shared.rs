@@ -13,8 +13,10 @@ use std::time::{Duration, Instant, SystemTime, UNIX_EPOCH};
 
 use serde::{Deserialize, Serialize};
 
+use crate::archive::catalogue::{Catalogue, CatalogueError};
 use crate::archive::ledger::{Job, JobCounts, Ledger, LedgerError, Recorded, Signature, Trouble};
 use crate::codes;
+use crate::report::error_chain;
 use crate::service::analyst::{Analyst, Fault};
 use crate::service::config::Config;
 use crate::service::daemon::Command;
@@ -104,6 +106,7 @@ pub struct FolderStatus {
 pub struct Shared {
     settings: RwLock<Arc<Settings>>,
     ledger: Mutex<Ledger>,
+    catalogue: Mutex<Catalogue>,
     /// Told whenever a job may have become claimable, and at the stop.
     work: Condvar,
     clock: Clock,
@@ -134,6 +137,7 @@ impl Shared {
     pub fn new(
         settings: Settings,
         ledger: Ledger,
+        catalogue: Catalogue,
         clock: Clock,
         commands: Sender<Command>,
     ) -> Result<Shared, LedgerError> {
@@ -141,6 +145,7 @@ impl Shared {
             last_arrival: AtomicU64::new(ledger.last_arrival()?),
             settings: RwLock::new(Arc::new(settings)),
             ledger: Mutex::new(ledger),
+            catalogue: Mutex::new(catalogue),
             work: Condvar::new(),
             clock,
             started: Instant::now(),
@@ -191,6 +196,18 @@ impl Shared {
         action: impl FnOnce(&mut Ledger) -> Result<T, LedgerError>,
     ) -> Result<T, Fault> {
         action(&mut lock(&self.ledger)).map_err(ledger_fault)
+    }
+
+    /// Works on the catalogue; a failure of it is a reason to stop.
+    ///
+    /// # Errors
+    /// The catalogue cannot be used.
+    pub fn with_catalogue<T>(
+        &self,
+        action: impl FnOnce(&mut Catalogue) -> Result<T, CatalogueError>,
+    ) -> Result<T, Fault> {
+        let fault = |error: CatalogueError| Fault::stop(&codes::SERVICE_CATALOGUE, error_chain(&error));
+        action(&mut lock(&self.catalogue)).map_err(fault)
     }
 
     /// Whether the file is recorded and has its job.
@@ -361,12 +378,5 @@ impl Shared {
 }
 
 fn ledger_fault(error: LedgerError) -> Fault {
-    let mut detail = error.to_string();
-    let mut source = std::error::Error::source(&error);
-    while let Some(cause) = source {
-        detail.push_str(": ");
-        detail.push_str(&cause.to_string());
-        source = cause.source();
-    }
-    Fault::stop(&codes::SERVICE_LEDGER, detail)
+    Fault::stop(&codes::SERVICE_LEDGER, error_chain(&error))
 }

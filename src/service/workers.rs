@@ -14,6 +14,7 @@ use std::sync::{Arc, Mutex};
 use std::thread::JoinHandle;
 use std::time::{Duration, Instant};
 
+use crate::archive::column;
 use crate::archive::ledger::{DocumentRecord, Job, Signature};
 use crate::codes::{self, Flag};
 use crate::report::{Findings, Provenance, Report};
@@ -431,6 +432,12 @@ fn publish(
             catalogue_row: document.row.to_string(),
         });
     }
+    let rows = documents.iter().zip(&records).map(|(document, record)| {
+        // Our own report, fresh from its maker; a stand-in's text that is no JSON makes an empty row.
+        let report = serde_json::from_slice(&document.json).unwrap_or_default();
+        column::row(&report, &record.report, &record.pointer, is_in_force)
+    });
+    shared.with_catalogue(|catalogue| catalogue.put(&rows.collect::<Vec<_>>()))?;
     if is_in_force {
         retire_superseded(shared, settings, job, &records)?;
     }
@@ -459,6 +466,11 @@ fn adopt(
         }
         records.push(DocumentRecord { report: place.report, pointer: place.pointer, ..document.clone() });
     }
+    for record in &records {
+        let row = output::catalogue_row(reports, &record.report, &record.pointer, is_in_force)
+            .map_err(|error| cannot_write(shared, job, &reports.join(&record.report), &error))?;
+        shared.with_catalogue(|catalogue| catalogue.put(&[row]))?;
+    }
     if is_in_force {
         retire_superseded(shared, settings, job, &records)?;
     }
@@ -477,6 +489,7 @@ fn retire_superseded(
     for pointer in superseded.iter().filter(|old| records.iter().all(|new| new.pointer != **old)) {
         output::retire(reports, pointer)
             .map_err(|error| cannot_write(shared, job, &reports.join(pointer), &error))?;
+        shared.with_catalogue(|catalogue| catalogue.retire(pointer))?;
     }
     Ok(())
 }
@@ -499,6 +512,7 @@ fn retire_if_replaced(
         for record in records {
             output::retire(reports, &record.pointer)
                 .map_err(|error| cannot_write(shared, job, &reports.join(&record.pointer), &error))?;
+            shared.with_catalogue(|catalogue| catalogue.retire(&record.pointer))?;
         }
     }
     Ok(())

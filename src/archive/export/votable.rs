@@ -1,6 +1,5 @@
 //! VOTable 1.4 with TABLEDATA (IVOA Recommendation 2019). Null is an empty cell.
 
-use std::borrow::Cow;
 use std::io::{self, Write};
 
 use quick_xml::escape::escape;
@@ -49,7 +48,7 @@ impl<W: Write> Sink for Votable<W> {
         for cell in cells {
             match cell {
                 Cell::Null => write!(self.out, "<TD/>")?,
-                Cell::Text(text) => write!(self.out, "<TD>{}</TD>", escape(legal(text)))?,
+                Cell::Text(text) => write!(self.out, "<TD>{}</TD>", escape(text.as_str()))?,
                 Cell::Integer(number) => write!(self.out, "<TD>{number}</TD>")?,
                 Cell::Float(number) => write!(self.out, "<TD>{number}</TD>")?,
             }
@@ -61,12 +60,4 @@ impl<W: Write> Sink for Votable<W> {
         writeln!(self.out, "</TABLEDATA>\n</DATA>\n</TABLE>\n</RESOURCE>\n</VOTABLE>")?;
         super::flush(self.out)
     }
-}
-
-/// XML 1.0 has no control characters, not even escaped: they become the replacement character.
-fn legal(text: &str) -> Cow<'_, str> {
-    let is_illegal = |c: char| {
-        (c.is_control() && !matches!(c, '\t' | '\n' | '\r')) || matches!(c, '\u{fffe}' | '\u{ffff}')
-    };
-    if text.contains(is_illegal) { text.replace(is_illegal, "\u{fffd}").into() } else { text.into() }
 }
