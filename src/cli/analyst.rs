@@ -2,6 +2,7 @@
 
 use std::path::Path;
 use std::sync::{Arc, OnceLock};
+use std::time::Instant;
 
 use serde::Serialize;
 use serde::de::DeserializeOwned;
@@ -9,9 +10,10 @@ use serde::de::DeserializeOwned;
 use super::Tables;
 use crate::codes;
 use crate::fit::FitSettings;
-use crate::report::{Analysis, error_chain, report_file};
+use crate::report::{Analysis, error_chain, report_outcomes};
 use crate::service::analyst::{Analyst, AnalystFactory, Document, Fault};
 use crate::service::config::{Config, InstrumentConfig};
+use crate::service::reader_process::{Limits, ReaderPool};
 use crate::spectrum::{Assumptions, ReadSettings};
 
 /// Header keyword by which the readers look up an instrument's settings.
@@ -29,7 +31,7 @@ pub fn factory() -> AnalystFactory {
                 TABLES.get_or_init(|| read)
             }
         };
-        let settings = read_settings(config)?;
+        let settings = ReadSettings { exposures: config.reader.exposures, ..read_settings(config)? };
         let analysis = Analysis::new(&tables.grid, &tables.tracks, &FitSettings::default());
         let parts = [
             env!("CARGO_PKG_VERSION"),
@@ -38,13 +40,29 @@ pub fn factory() -> AnalystFactory {
             &config.answer_fingerprint(),
         ];
         let fingerprint = blake3::hash(parts.join("\n").as_bytes()).to_hex()[..32].to_owned();
-        Ok(Arc::new(DaemonAnalyst { analysis, settings, fingerprint }))
+        let readers = start_readers(config, &settings)?;
+        Ok(Arc::new(DaemonAnalyst { analysis, readers, fingerprint }))
+    })
+}
+
+/// This program, also after its file has been replaced.
+const THIS_PROGRAM: &str = "/proc/self/exe";
+
+fn start_readers(config: &Config, settings: &ReadSettings) -> Result<ReaderPool, Fault> {
+    let reader = &config.reader;
+    let limits = Limits { memory_bytes: (reader.memory_mb * 1e6) as u64, time_s: reader.time_limit_s };
+    let processes = match reader.processes {
+        0 => config.workers.thread_count(),
+        count => count,
+    };
+    ReaderPool::start(THIS_PROGRAM, settings, limits, processes).map_err(|error| {
+        Fault::stop(&codes::READER_NOT_STARTED, format!("cannot start a reader process: {error}"))
     })
 }
 
 struct DaemonAnalyst {
     analysis: Analysis<'static>,
-    settings: ReadSettings,
+    readers: ReaderPool,
     fingerprint: String,
 }
 
@@ -54,7 +72,15 @@ impl Analyst for DaemonAnalyst {
     }
 
     fn analyse(&self, path: &Path, _bytes_blake3: &str) -> Result<Vec<Document>, Fault> {
-        report_file(path, &self.settings, &self.analysis)
+        let started = Instant::now();
+        let outcomes = self.readers.read(path);
+        // Nothing was learnt about the file, so it keeps its turn.
+        if let [Err(refusal)] = outcomes.as_slice()
+            && refusal.fault.code().id == codes::READER_NOT_STARTED.id
+        {
+            return Err(Fault::retry(&codes::READER_NOT_STARTED, error_chain(&refusal.fault)));
+        }
+        report_outcomes(outcomes, started.elapsed().as_secs_f64() * 1e3, &self.analysis)
             .into_iter()
             .map(|report| {
                 let json = serde_json::to_vec_pretty(&report).map_err(|fault| internal(&fault))?;

@@ -9,6 +9,7 @@ mod codes;
 pub mod compare;
 pub mod fit;
 mod grid;
+mod reader_process;
 pub mod refit;
 mod rehearse;
 mod schema;
@@ -65,6 +66,9 @@ enum Command {
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
     Schema,
+    /// Read files for a running daemon; started by it alone.
+    #[command(name = crate::service::reader_process::COMMAND, hide = true)]
+    ReaderProcess,
 }
 
 /// What a command ends with when it could not do its work.
@@ -92,6 +96,7 @@ pub fn run() -> ExitCode {
         Command::Compare(arguments) => compare::run(&arguments).map_err(Into::into),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
+        Command::ReaderProcess => reader_process::run(),
     };
     match outcome {
         Ok(exit) => exit,

@@ -6,6 +6,7 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 use super::axis::{Medium, VelocityFrame};
+use super::exposures::Exposures;
 use super::units::{FluxScale, WaveUnit};
 
 /// What a column of errors holds.
@@ -94,6 +95,8 @@ pub struct ReadSettings {
     /// For files whose telescope and instrument keywords (`TELESCOP INSTRUME`) contain this name, letter
     /// case aside; goes before `assume`. Of several that fit, the longest name is used.
     pub instruments: BTreeMap<String, Assumptions>,
+    /// What is done with several exposures of one object in one file.
+    pub exposures: Exposures,
     /// Only this row, fibre or aperture, from 0.
     pub row: Option<usize>,
     /// Largest file, packed or unpacked, MB.
@@ -105,6 +108,7 @@ impl Default for ReadSettings {
         ReadSettings {
             assume: Assumptions::default(),
             instruments: BTreeMap::new(),
+            exposures: Exposures::default(),
             row: None,
             // A coadd of 500 multi-object spectra takes 60 MB.
             largest_file_mb: 256,

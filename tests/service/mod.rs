@@ -4,9 +4,11 @@ mod comparison;
 mod config;
 mod failures;
 mod flood;
+mod hostile;
 mod inbox;
 mod kill;
 mod ledger;
+mod readers;
 mod running;
 
 use crate::support::site;
