@@ -133,6 +133,14 @@ codes! {
         "the file has no errors; they were made from assume_snr", "do not read absolute values of chi-square";
     ARMS_JOINED = "spectrum.arms-joined", Note,
         "several arms or orders of one object were joined, each up to the middle of their overlap", "none needed";
+    EXPOSURES_COMBINED = "spectrum.exposures-combined", Note,
+        "several exposures of one object were averaged, as configured", "set exposures to apart to have each fitted";
+    EXPOSURES_APART = "spectrum.exposures-apart", Note,
+        "exposures of one object were not combined, although configured, because their wavelengths differ",
+        "rebin them to common wavelengths";
+    REST_FRAME = "spectrum.rest-frame", Review,
+        "the survey shifted the wavelengths to the star's rest frame; the detail says whether they were shifted back",
+        "check the radial velocity against a spectrum that was not shifted";
     FIBRE_WARNING = "spectrum.fibre-warning", Review,
         "the survey raised a warning for this fibre", "look the status up in the survey's documentation";
     MASK_NOT_READ = "spectrum.mask-not-read", Note,
@@ -162,6 +170,23 @@ codes! {
         "every flux is exactly zero", "check the reduction of this object";
     BAD_RESOLUTION = "spectrum.bad-resolution", Reject,
         "the spectral resolution is not positive or not believable", "check resolution_fwhm_aa or resolving_power";
+
+    // reader process
+    READER_CRASHED = "reader.crashed", Reject,
+        "the process that read the file died",
+        "report it with the input file; `emberline refit --failed` tries again";
+    READER_MEMORY = "reader.memory-limit", Reject,
+        "reading the file needs more memory than there is; for the daemon that is reader.memory_mb",
+        "raise reader.memory_mb if the file is meant to be this large, then run `emberline refit --failed`";
+    READER_TIME_LIMIT = "reader.time-limit", Reject,
+        "reading took longer than reader.time_limit_s, so the process was ended",
+        "raise reader.time_limit_s and run `emberline refit --failed`, or report it with the input file";
+    READER_BAD_ANSWER = "reader.bad-answer", Reject,
+        "the process that read the file answered something that is no answer, so it was ended",
+        "report it with the input file";
+    READER_NOT_STARTED = "reader.not-started", Reject,
+        "no process could be started to read the file",
+        "look at the limits of processes and memory of the service, then run `emberline refit --failed`";
 
     // report
     NO_PARAMETERS = "report.no-parameters", Reject,

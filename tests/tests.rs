@@ -11,6 +11,8 @@ mod science;
 mod cli;
 // Reading: values, decisions, refusals, mutated files.
 mod spectrum;
+// Mutated inputs for every reader and the configuration.
+mod fuzz;
 // The daemon: crashes, full disks, signals, reloads.
 mod service;
 // The report document.

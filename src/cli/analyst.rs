@@ -2,15 +2,17 @@
 
 use std::path::Path;
 use std::sync::{Arc, OnceLock};
+use std::time::Instant;
 
 use serde::Serialize;
 
 use super::Tables;
 use crate::codes;
 use crate::fit::FitSettings;
-use crate::report::{Analysis, error_chain, report_file};
+use crate::report::{Analysis, error_chain, report_outcomes};
 use crate::service::analyst::{Analyst, AnalystFactory, Document, Fault};
 use crate::service::config::Config;
+use crate::service::reader_process::{Limits, ReaderPool};
 use crate::spectrum::{ReadSettings, instruments_of};
 
 /// The tables, read once; they stay for the life of the process.
@@ -36,7 +38,24 @@ pub fn factory() -> AnalystFactory {
         let settings = read_settings(config);
         let analysis = Analysis::new(&tables.grid, &tables.tracks, &config.fit);
         let fingerprint = answer_fingerprint(tables, config);
-        Ok(Arc::new(DaemonAnalyst { analysis, settings, fit: config.fit.clone(), tables, fingerprint }))
+        let readers = start_readers(config, &settings)?;
+        let fit = config.fit.clone();
+        Ok(Arc::new(DaemonAnalyst { analysis, readers, settings, fit, tables, fingerprint }))
+    })
+}
+
+/// This program, also after its file has been replaced.
+const THIS_PROGRAM: &str = "/proc/self/exe";
+
+fn start_readers(config: &Config, settings: &ReadSettings) -> Result<ReaderPool, Fault> {
+    let reader = &config.reader;
+    let limits = Limits { memory_bytes: (reader.memory_mb * 1e6) as u64, time_s: reader.time_limit_s };
+    let processes = match reader.processes {
+        0 => config.workers.thread_count(),
+        count => count,
+    };
+    ReaderPool::start(THIS_PROGRAM, settings, limits, processes).map_err(|error| {
+        Fault::stop(&codes::READER_NOT_STARTED, format!("cannot start a reader process: {error}"))
     })
 }
 
@@ -53,6 +72,7 @@ fn hash_with_tables(tables: &Tables, rest: &str) -> String {
 
 struct DaemonAnalyst {
     analysis: Analysis<'static>,
+    readers: ReaderPool,
     settings: ReadSettings,
     fit: FitSettings,
     tables: &'static Tables,
@@ -66,12 +86,20 @@ impl Analyst for DaemonAnalyst {
 
     fn answer_key(&self, path: &Path) -> Option<String> {
         let instruments = instruments_of(path, &self.settings)?;
-        let used = serde_json::to_string(&(&self.fit, instruments)).ok()?;
+        let used = serde_json::to_string(&(&self.fit, self.settings.exposures, instruments)).ok()?;
         Some(hash_with_tables(self.tables, &used))
     }
 
     fn analyse(&self, path: &Path, bytes_blake3: &str) -> Result<Vec<Document>, Fault> {
-        report_file(path, &self.settings, &self.analysis)
+        let started = Instant::now();
+        let outcomes = self.readers.read(path);
+        // Nothing was learnt about the file, so it keeps its turn.
+        if let [Err(refusal)] = outcomes.as_slice()
+            && refusal.fault.code().id == codes::READER_NOT_STARTED.id
+        {
+            return Err(Fault::retry(&codes::READER_NOT_STARTED, error_chain(&refusal.fault)));
+        }
+        report_outcomes(outcomes, started.elapsed().as_secs_f64() * 1e3, &self.analysis)
             .into_iter()
             .map(|mut report| {
                 report.provenance.config_fingerprint = Some(self.fingerprint.clone());
@@ -91,7 +119,11 @@ impl Analyst for DaemonAnalyst {
 
 /// How the daemon reads files, by its configuration.
 pub(super) fn read_settings(config: &Config) -> ReadSettings {
-    ReadSettings { instruments: config.instrument.clone(), ..ReadSettings::default() }
+    ReadSettings {
+        instruments: config.instrument.clone(),
+        exposures: config.reader.exposures,
+        ..ReadSettings::default()
+    }
 }
 
 /// A value of an enumeration as the word that reports use.

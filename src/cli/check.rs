@@ -7,6 +7,7 @@ use std::process::ExitCode;
 use clap::Args;
 
 use crate::service::config::{Config, ConfigError};
+use crate::spectrum::readers::describe_layouts;
 
 /// Validate the configuration and print what is in effect.
 #[derive(Debug, Args)]
@@ -17,6 +18,9 @@ pub struct CheckArgs {
     /// Also demand what a daemon needs: folders that exist, and places for reports and ledger.
     #[arg(long)]
     pub for_daemon: bool,
+    /// Print the table of file layouts that are read, instead of checking a configuration.
+    #[arg(long, conflicts_with_all = ["config", "for_daemon"])]
+    pub layouts: bool,
 }
 
 /// The configuration could not be checked.
@@ -35,6 +39,10 @@ pub enum CheckError {
 /// # Errors
 /// The configuration is refused, or standard output cannot be written.
 pub fn run(args: &CheckArgs) -> Result<ExitCode, CheckError> {
+    if args.layouts {
+        io::stdout().lock().write_all(describe_layouts().as_bytes())?;
+        return Ok(ExitCode::SUCCESS);
+    }
     let (path, config) = Config::read(args.config.as_deref())?;
     if args.for_daemon {
         config.check_for_daemon()?;

@@ -14,7 +14,9 @@ use super::analyst::answer_fingerprint;
 use super::{CommandResult, EXIT_INPUT_FAILED, EXIT_WRONG_USE, Tables, progress};
 use crate::report::{Analysis, Report, Verdict, report_file};
 use crate::service::config::Config;
-use crate::spectrum::{Assumptions, ErrorKind, FluxScale, Medium, ReadSettings, VelocityFrame, WaveUnit};
+use crate::spectrum::{
+    Assumptions, ErrorKind, Exposures, FluxScale, Medium, ReadSettings, VelocityFrame, WaveUnit,
+};
 
 /// Files read and fitted at once before their reports are printed, so that output streams.
 const FILES_PER_BATCH: usize = 64;
@@ -69,6 +71,10 @@ pub struct FitArguments {
     #[arg(long)]
     overrule_file: bool,
 
+    /// Several exposures of one object in one file: apart or combine.
+    #[arg(long, value_parser = word::<Exposures>, default_value = "apart")]
+    exposures: Exposures,
+
     /// Only this row, fibre or aperture of each file, from 0.
     #[arg(long)]
     row: Option<usize>,
@@ -92,6 +98,7 @@ impl FitArguments {
                 velocity_frame: self.velocity_frame,
                 overrule_file: self.overrule_file,
             },
+            exposures: self.exposures,
             row: self.row,
             largest_file_mb: self.largest_file_mb,
             instruments: config.instrument.clone(),

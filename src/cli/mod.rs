@@ -11,6 +11,7 @@ pub mod compare;
 pub mod fit;
 mod grid;
 mod progress;
+mod reader_process;
 pub mod refit;
 mod rehearse;
 mod schema;
@@ -69,6 +70,9 @@ enum Command {
     Codes(codes::CodesArguments),
     /// Print the JSON schema of the report.
     Schema,
+    /// Read files for a running daemon; started by it alone.
+    #[command(name = crate::service::reader_process::COMMAND, hide = true)]
+    ReaderProcess,
 }
 
 /// What a command ends with when it could not do its work.
@@ -97,6 +101,7 @@ pub fn run() -> ExitCode {
         Command::Catalogue(arguments) => catalogue::run(&arguments),
         Command::Codes(arguments) => codes::run(&arguments),
         Command::Schema => schema::run(),
+        Command::ReaderProcess => reader_process::run(),
     };
     match outcome {
         Ok(exit) => exit,

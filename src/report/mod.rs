@@ -16,7 +16,7 @@ pub use assemble::{Findings, FittedParameters};
 pub use document::{
     LineRow, Parameter, Parameters, Provenance, Report, SCHEMA_VERSION, SolutionRow, Verdict,
 };
-pub use pipeline::{Analyse, error_chain, report_file, report_observation, report_refusal};
+pub use pipeline::{Analyse, error_chain, report_file, report_observation, report_outcomes, report_refusal};
 pub use write::{WriteFault, write_atomically};
 
 /// JSON schema of [`Report`], made from the type itself.

@@ -12,7 +12,7 @@ use std::time::Instant;
 use super::assemble::Findings;
 use super::document::{Provenance, Report};
 use crate::codes::{self, Flag};
-use crate::spectrum::{ObjectRecord, Observation, ReadSettings, Refusal, SourceRecord, read_file};
+use crate::spectrum::{ObjectRecord, Observation, Outcomes, ReadSettings, Refusal, SourceRecord, read_file};
 
 /// What is done with one observation between reading and reporting.
 pub trait Analyse: Sync {
@@ -27,7 +27,11 @@ pub fn report_file(path: &Path, settings: &ReadSettings, pipeline: &dyn Analyse)
         let source = SourceRecord { path: path.display().to_string(), ..SourceRecord::default() };
         return vec![report_panic("reading", ObjectRecord::default(), source)];
     };
-    let read_ms = started.elapsed().as_secs_f64() * 1e3;
+    report_outcomes(outcomes, started.elapsed().as_secs_f64() * 1e3, pipeline)
+}
+
+/// One report per outcome of reading, which took `read_ms`.
+pub fn report_outcomes(outcomes: Outcomes, read_ms: f64, pipeline: &dyn Analyse) -> Vec<Report> {
     let report_one = |outcome: Result<Observation, Box<Refusal>>| match outcome {
         Ok(observation) => report_observation(observation, read_ms, pipeline),
         Err(refusal) => report_refusal(*refusal, read_ms),

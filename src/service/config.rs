@@ -12,7 +12,7 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 use crate::fit::{FitSettings, WINDOWS};
-use crate::spectrum::{Instrument, InstrumentFault};
+use crate::spectrum::{Exposures, Instrument, InstrumentFault};
 
 /// Where the daemon looks when `--config` is not given.
 pub const PLACES: [&str; 2] = ["config/emberline.toml", "/etc/emberline/emberline.toml"];
@@ -74,6 +74,8 @@ pub struct Config {
     pub inbox: InboxConfig,
     /// Where results go.
     pub output: OutputConfig,
+    /// The processes that read files.
+    pub reader: ReaderConfig,
     /// The fitting threads.
     pub workers: WorkersConfig,
     /// What happens to faults that may pass.
@@ -152,6 +154,27 @@ pub struct OutputConfig {
     pub catalogue: PathBuf,
     /// Folder that originals are moved to when they are finished; empty leaves them where they are.
     pub move_finished_to: PathBuf,
+}
+
+/// The processes that read files.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
+#[serde(default)]
+pub struct ReaderConfig {
+    /// Number of processes; 0 means one per fitting thread.
+    pub processes: usize,
+    /// Address space of each, in 1e6 bytes.
+    pub memory_mb: f64,
+    /// Seconds that reading one file may take.
+    pub time_limit_s: f64,
+    /// What is done with several exposures of one object in one file.
+    pub exposures: Exposures,
+}
+
+impl Default for ReaderConfig {
+    fn default() -> Self {
+        // Packed, unpacked and decoded, the largest file takes four times its size.
+        ReaderConfig { processes: 0, memory_mb: 1500.0, time_limit_s: 30.0, exposures: Exposures::Apart }
+    }
 }
 
 /// The fitting threads.
@@ -333,6 +356,10 @@ impl Config {
         in_range("inbox.rescan_interval_s", inbox.rescan_interval_s, 0.05, YEAR_S, "0.05 s to a year")?;
         in_range("inbox.still_s", inbox.still_s, 0.0, 86400.0, "0 s to a day")?;
         in_range("inbox.max_file_mb", inbox.max_file_mb, 1e-6, 1e6, "up to 1e6 MB, above 0")?;
+        let reader = &self.reader;
+        in_range("reader.processes", reader.processes as f64, 0.0, 1024.0, "0 to 1024")?;
+        in_range("reader.memory_mb", reader.memory_mb, 200.0, 1e6, "200 to 1e6 MB")?;
+        in_range("reader.time_limit_s", reader.time_limit_s, 0.01, 86400.0, "0.01 s to a day")?;
         in_range("workers.threads", self.workers.threads as f64, 0.0, 1024.0, "0 to 1024")?;
         in_range("workers.time_limit_s", self.workers.time_limit_s, 0.01, 86400.0, "0.01 s to a day")?;
         in_range("retry.attempts", self.retry.attempts.into(), 1.0, 1000.0, "1 to 1000")?;
@@ -409,7 +436,8 @@ impl Config {
     pub fn answer_fingerprint(&self) -> String {
         // Serialising structs of strings and finite numbers cannot fail; an empty text would only
         // make all configurations look the same, which the tests would see.
-        let text = serde_json::to_string(&(&self.fit, &self.instrument)).unwrap_or_default();
+        let text =
+            serde_json::to_string(&(&self.fit, &self.instrument, self.reader.exposures)).unwrap_or_default();
         blake3::hash(text.as_bytes()).to_hex().to_string()
     }
 

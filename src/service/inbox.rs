@@ -22,6 +22,7 @@ use crate::service::config::{InboxConfig, Polling, seconds};
 use crate::service::exclusion::{ExclusionCounts, Look, Reason, Rules, hash_file};
 use crate::service::file_system::is_on_network;
 use crate::service::finished;
+use crate::service::logging::printable;
 use crate::service::shared::{FolderStatus, Shared};
 use crate::service::wholeness::Wholeness;
 
@@ -324,7 +325,7 @@ impl Inbox {
                 Ok(None) => self.look_at(&root, &path)?,
                 Err(error) if error.kind() == std::io::ErrorKind::NotFound => {}
                 Err(error) => {
-                    tracing::warn!(path = %path.display(), %error, "cannot read, left alone until the next scan");
+                    tracing::warn!(path = %printable(&path), %error, "cannot read, left alone until the next scan");
                     self.leave_alone(&path, Reason::Unreadable);
                 }
             }

@@ -1,6 +1,7 @@
 //! Where the log goes: the journal or stderr, as text or JSON; the level can change while running.
 
 use std::io::{self, Write};
+use std::path::Path;
 use std::sync::{Mutex, PoisonError};
 
 use indicatif::ProgressBar;
@@ -70,4 +71,10 @@ pub fn start(config: &LogConfig) -> LogHandle {
     let _ = tracing_subscriber::registry().with(filter).with(sink).try_init();
     std::panic::set_hook(Box::new(|panic| tracing::error!("{panic}")));
     LogHandle { filter: handle }
+}
+
+/// A path for the log, where line breaks and control characters in a name must not write.
+pub fn printable(path: &Path) -> String {
+    let escape = |c: char| if c.is_control() { c.escape_default().to_string() } else { c.to_string() };
+    path.to_string_lossy().chars().map(escape).collect()
 }

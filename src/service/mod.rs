@@ -11,6 +11,9 @@ pub mod config;
 /// The seam to the science.
 pub mod analyst;
 
+/// Reading in processes of its own.
+pub mod reader_process;
+
 /// Where the log goes.
 pub mod logging;
 

@@ -20,6 +20,7 @@ use crate::report::error_chain;
 use crate::service::analyst::{Analyst, Fault};
 use crate::service::config::Config;
 use crate::service::daemon::Command;
+use crate::service::logging::printable;
 
 /// Tells the time of day; tests bring their own.
 pub type Clock = Arc<dyn Fn() -> SystemTime + Send + Sync>;
@@ -238,7 +239,7 @@ impl Shared {
             ledger.record_file(path, signature, blake3, &fingerprint, arrival, now_s)
         })?;
         if recorded == Recorded::Queued {
-            tracing::debug!(path = %path.display(), blake3, "queued");
+            tracing::debug!(path = %printable(path), blake3, "queued");
             self.work.notify_one();
         }
         Ok(())

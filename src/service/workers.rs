@@ -21,6 +21,7 @@ use crate::report::{Findings, Provenance, Report};
 use crate::service::analyst::{Disposition, Document, Fault};
 use crate::service::daemon::Command;
 use crate::service::finished;
+use crate::service::logging::printable;
 use crate::service::output::{self, ReportPlace};
 use crate::service::shared::{Settings, Shared, WorkerCounts, lock};
 use crate::spectrum::{ObjectRecord, SourceRecord};
@@ -146,7 +147,7 @@ impl Pool {
                 &codes::SERVICE_TIME_LIMIT,
                 format!("no answer after {} s (workers.time_limit_s)", limits.time_limit_s),
             );
-            tracing::error!(path = %job.path.display(), abandoned = self.abandoned, "thread given up: {fault}");
+            tracing::error!(path = %printable(&job.path), abandoned = self.abandoned, "thread given up: {fault}");
             conclude_fault(&self.shared, &settings, &job, &fault)?;
             if !is_surplus
                 && self.abandoned <= limits.max_abandoned
@@ -220,7 +221,7 @@ fn work(shared: &Arc<Shared>, slot: &Slot) {
         *lock(&slot.state) =
             State::Analysing { job: job.clone(), settings: settings.clone(), since: Instant::now() };
         let span =
-            tracing::info_span!("object", path = %job.path.display(), job = job.id, refit = job.is_refit);
+            tracing::info_span!("object", path = %printable(&job.path), job = job.id, refit = job.is_refit);
         let _entered = span.enter();
         let outcome = analyse(shared, &settings, &job);
         {

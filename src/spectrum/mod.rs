@@ -8,6 +8,7 @@
 //! frame) from the configuration and records how, and never guesses.
 
 mod axis;
+mod exposures;
 pub mod fits;
 mod instrument;
 mod observation;
@@ -19,9 +20,10 @@ mod settle;
 mod units;
 
 pub use axis::{Medium, VelocityFrame};
+pub use exposures::Exposures;
 pub use instrument::{Instrument, InstrumentFault, InstrumentRecord};
 pub use observation::{Decisions, ObjectRecord, Observation, Refusal, SourceRecord};
-pub use read::{ReadFault, instruments_of, read_file, read_fits};
+pub use read::{Outcomes, ReadFault, instruments_of, read_file, read_fits, read_open_file, read_unpacked};
 pub use resolution::{FWHM_PER_SIGMA, Resolution};
 pub use settings::{Assumptions, ErrorKind, ReadSettings};
 pub use units::{FluxScale, WaveUnit};
@@ -53,8 +55,9 @@ pub struct BadPixels {
 }
 
 /// A one-dimensional spectrum that the fit may trust: equal lengths, ascending vacuum wavelengths,
-/// finite fluxes, positive errors, enough good pixels.
-#[derive(Debug, Clone, PartialEq)]
+/// finite fluxes, positive errors, enough good pixels. What comes from another process is checked again.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+#[serde(try_from = "UncheckedSpectrum")]
 pub struct Spectrum {
     wave_vac_aa: Vec<f64>,
     flux: Vec<f64>,
@@ -158,6 +161,31 @@ impl Spectrum {
     /// Whether the shape of the continuum is physical: fluxes in erg s^-1 cm^-2 A^-1, not counts.
     pub fn is_flux_calibrated(&self) -> bool {
         self.is_flux_calibrated
+    }
+}
+
+/// The fields of a [`Spectrum`] as they come from outside.
+#[derive(Deserialize)]
+struct UncheckedSpectrum {
+    wave_vac_aa: Vec<f64>,
+    flux: Vec<f64>,
+    sigma: Vec<f64>,
+    is_good: Vec<bool>,
+    bad_pixels: BadPixels,
+    resolution: Resolution,
+    is_flux_calibrated: bool,
+}
+
+impl TryFrom<UncheckedSpectrum> for Spectrum {
+    type Error = SpectrumFault;
+
+    fn try_from(values: UncheckedSpectrum) -> Result<Self, SpectrumFault> {
+        let UncheckedSpectrum { wave_vac_aa, flux, sigma, is_good, .. } = values;
+        let mut spectrum =
+            Spectrum::new(wave_vac_aa, flux, sigma, is_good, values.resolution, values.is_flux_calibrated)?;
+        // Why a pixel is bad was counted where the file was read; here all bad ones look masked.
+        spectrum.bad_pixels = values.bad_pixels;
+        Ok(spectrum)
     }
 }
 

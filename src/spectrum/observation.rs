@@ -10,7 +10,7 @@ use super::{ReadFault, Spectrum};
 use crate::codes::Flag;
 
 /// One spectrum of one object.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct Observation {
     /// The checked values.
     pub spectrum: Spectrum,
@@ -33,6 +33,14 @@ pub struct Refusal {
     pub fault: ReadFault,
 }
 
+impl Refusal {
+    /// The refusal of a file of which only the path is known.
+    pub fn of_file(path: String, fault: ReadFault) -> Box<Self> {
+        let source = SourceRecord { path, ..SourceRecord::default() };
+        Box::new(Refusal { object: ObjectRecord::default(), source, fault })
+    }
+}
+
 /// Whose light it is, as the file says; unknown is `null`.
 #[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize, JsonSchema)]
 #[serde(deny_unknown_fields)]
@@ -43,6 +51,8 @@ pub struct ObjectRecord {
     pub ra_deg: Option<f64>,
     /// Declination of the object, degrees.
     pub dec_deg: Option<f64>,
+    /// Epoch of the position, Julian year, where the file gives one.
+    pub position_epoch_yr: Option<f64>,
     /// Identifiers of the survey (plate, fibre, target id ...), in one line.
     pub survey_id: Option<String>,
     /// Start of the observation as the file gives it, or its modified Julian date.
@@ -53,6 +63,8 @@ pub struct ObjectRecord {
     pub airmass: Option<f64>,
     /// Telescope and instrument.
     pub instrument: Option<String>,
+    /// Where the telescope stands: name, or geographic coordinates.
+    pub site: Option<String>,
     /// Observing programme.
     pub program: Option<String>,
 }

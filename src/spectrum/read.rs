@@ -1,25 +1,52 @@
 //! A path in, observations out: open, recognise, read, settle.
 
+use std::fs::File;
 use std::path::Path;
 
 use super::SpectrumFault;
-use super::fits::{FileFault, FitsFile, Header};
+use super::exposures::{self, Exposures};
+use super::fits::{self, FileFault, FitsFile, Header};
 use super::instrument::Instrument;
 use super::observation::{ObjectRecord, Observation, Refusal, SourceRecord};
-use super::readers;
+use super::readers::{self, Layout};
 use super::settings::ReadSettings;
 use super::settle::{RawSpectrum, settle};
 use crate::codes::{self, Code, Disposition, Flag};
 
 /// Reads every object of a file. Never empty: a file that cannot be read at all is one refusal.
-pub fn read_file(path: &Path, settings: &ReadSettings) -> Vec<Result<Observation, Box<Refusal>>> {
-    let mut source = SourceRecord { path: path.display().to_string(), ..SourceRecord::default() };
-    let fits = match FitsFile::read(path, settings.largest_bytes()) {
-        Ok(fits) => fits,
-        Err(fault) => return vec![Err(refuse(source, fault.into()))],
+pub fn read_file(path: &Path, settings: &ReadSettings) -> Outcomes {
+    let shown_path = path.display().to_string();
+    match fits::open_regular_file(path) {
+        Ok(file) => read_open_file(file, shown_path, settings),
+        Err(fault) => vec![Err(Refusal::of_file(shown_path, fault.into()))],
+    }
+}
+
+/// The same for a file that is open already; `shown_path` is only written into the records.
+pub fn read_open_file(file: File, shown_path: String, settings: &ReadSettings) -> Outcomes {
+    match fits::read_unpacked(file, settings.largest_bytes()) {
+        Ok((bytes, blake3)) => read_unpacked(bytes, blake3, shown_path, settings),
+        Err(fault) => vec![Err(Refusal::of_file(shown_path, fault.into()))],
+    }
+}
+
+/// Reads every object of bytes that were unpacked already; `blake3` is that of the file.
+pub fn read_unpacked(
+    bytes: Vec<u8>,
+    blake3: String,
+    shown_path: String,
+    settings: &ReadSettings,
+) -> Outcomes {
+    let source = SourceRecord { path: shown_path, blake3: Some(blake3), ..SourceRecord::default() };
+    let outcomes = if let Some((layout, read)) = readers::recognise_text(&bytes) {
+        read_layout(layout, || read(&bytes), None, source, settings)
+    } else {
+        match FitsFile::of_unpacked(bytes) {
+            Ok(fits) => read_fits(&fits, source, settings),
+            Err(fault) => Err(refuse(source, fault.into())),
+        }
     };
-    source.blake3 = Some(fits.blake3().to_owned());
-    read_fits(&fits, source, settings).unwrap_or_else(|refusal| vec![Err(refusal)])
+    outcomes.unwrap_or_else(|refusal| vec![Err(refusal)])
 }
 
 /// The instrument sections that hold for the extensions of a file, each once: what of `settings.instruments`
@@ -47,7 +74,8 @@ fn refuse(source: SourceRecord, fault: ReadFault) -> Box<Refusal> {
     Box::new(Refusal { object: ObjectRecord::default(), source, fault })
 }
 
-type Outcomes = Vec<Result<Observation, Box<Refusal>>>;
+/// One entry per object, in the file's order; never empty.
+pub type Outcomes = Vec<Result<Observation, Box<Refusal>>>;
 
 /// Reads every object of an opened file; `source` holds path and hash already.
 ///
@@ -55,11 +83,11 @@ type Outcomes = Vec<Result<Observation, Box<Refusal>>>;
 /// What makes the whole file useless, with what is known of its source.
 pub fn read_fits(
     fits: &FitsFile,
-    mut source: SourceRecord,
+    source: SourceRecord,
     settings: &ReadSettings,
 ) -> Result<Outcomes, Box<Refusal>> {
     let missing = fits.missing_extensions();
-    let Some(layout) = readers::recognise(fits) else {
+    let Some((layout, read)) = readers::recognise(fits) else {
         let fault = if missing > 0 {
             let found = fits.hdus().len() as u64 - 1;
             FileFault::Truncated { hdu: 0, what: "announced extensions", found, needed: found + missing }
@@ -69,8 +97,19 @@ pub fn read_fits(
         };
         return Err(refuse(source, fault));
     };
+    read_layout(layout, || read(fits), Some(fits), source, settings)
+}
+
+/// Reads and settles every object by the rules of one layout; `fits` is the file, if it is FITS.
+fn read_layout(
+    layout: &'static Layout,
+    read: impl FnOnce() -> Result<Vec<RawSpectrum>, ReadFault>,
+    fits: Option<&FitsFile>,
+    mut source: SourceRecord,
+    settings: &ReadSettings,
+) -> Result<Outcomes, Box<Refusal>> {
     source.layout = Some(layout.name.to_owned());
-    let mut raws = match (layout.read)(fits) {
+    let mut raws = match read() {
         Ok(raws) => raws,
         Err(fault) => return Err(refuse(source, fault)),
     };
@@ -86,14 +125,20 @@ pub fn read_fits(
         let detail = "found no object in it, need one".to_owned();
         return Err(refuse(source, ReadFault::LayoutBroken { layout: layout.name, detail }));
     }
+    let missing = fits.map_or(0, FitsFile::missing_extensions);
     let settle = |mut raw: RawSpectrum| {
         if missing > 0 {
             raw.flags.push(Flag::new(&codes::EXTENSIONS_MISSING, format!("{missing} missing")));
         }
-        let headers = headers(fits, raw.hdu);
+        let headers = fits.map_or_else(Vec::new, |fits| headers(fits, raw.hdu));
         settle(raw, source.clone(), &settings.layers(&headers))
     };
-    Ok(raws.into_iter().map(settle).collect())
+    let keys: Vec<Option<String>> = raws.iter().map(|raw| raw.exposure_of.clone()).collect();
+    let outcomes = raws.into_iter().map(settle).collect();
+    Ok(match settings.exposures {
+        Exposures::Apart => outcomes,
+        Exposures::Combine => exposures::combine(outcomes, &keys),
+    })
 }
 
 /// Why a file or an object in it cannot be read.
@@ -162,6 +207,16 @@ pub enum ReadFault {
     /// Values that the fit may not trust.
     #[error(transparent)]
     Values(#[from] SpectrumFault),
+    /// A fault of another process that read for this one, or of that process itself.
+    #[error("{detail}")]
+    Told {
+        /// The row of the table of codes.
+        code: &'static Code,
+        /// What the daemon does about it.
+        disposition: Disposition,
+        /// The whole chain of causes.
+        detail: String,
+    },
 }
 
 fn or_nothing(found: &Option<String>) -> &str {
@@ -183,6 +238,7 @@ impl ReadFault {
             ReadFault::ErrorKindUnknown => &codes::ERROR_KIND_UNKNOWN,
             ReadFault::ResolutionUnknown => &codes::RESOLUTION_UNKNOWN,
             ReadFault::Values(fault) => fault.code(),
+            ReadFault::Told { code, .. } => code,
         }
     }
 
@@ -191,6 +247,7 @@ impl ReadFault {
         match self {
             ReadFault::File(fault) => fault.disposition(),
             ReadFault::Values(fault) => fault.disposition(),
+            ReadFault::Told { disposition, .. } => *disposition,
             ReadFault::LayoutUnknown { .. }
             | ReadFault::LayoutBroken { .. }
             | ReadFault::NoSuchRow { .. }

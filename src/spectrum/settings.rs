@@ -4,6 +4,7 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 use super::axis::{Medium, VelocityFrame};
+use super::exposures::Exposures;
 use super::fits::Header;
 use super::instrument::Instrument;
 use super::resolution::Resolution;
@@ -118,6 +119,8 @@ pub struct ReadSettings {
     pub assume: Assumptions,
     /// What is known of single instruments, in order of precedence.
     pub instruments: Vec<Instrument>,
+    /// What is done with several exposures of one object in one file.
+    pub exposures: Exposures,
     /// Only this row, fibre or aperture, from 0.
     pub row: Option<usize>,
     /// Largest file, packed or unpacked, MB.
@@ -129,6 +132,7 @@ impl Default for ReadSettings {
         ReadSettings {
             assume: Assumptions::default(),
             instruments: Vec::new(),
+            exposures: Exposures::default(),
             row: None,
             // A coadd of 500 multi-object spectra takes 60 MB.
             largest_file_mb: 256,

@@ -115,6 +115,8 @@ pub struct RawSpectrum {
     pub velocity_frame: Option<Stated<VelocityFrame>>,
     /// What the reader has to tell.
     pub flags: Vec<Flag>,
+    /// Where the file holds several exposures of one object: the same words for each of them.
+    pub exposure_of: Option<String>,
 }
 
 /// Settles everything about one spectrum. `source` holds path, hash and layout already.

@@ -168,7 +168,7 @@ fn every_data_file_has_a_source() {
         for entry in fs::read_dir(folder.join(part)).unwrap() {
             let path = entry.unwrap().path();
             let name = path.file_name().unwrap().to_string_lossy().into_owned();
-            let stem = name.trim_end_matches(".fits.gz");
+            let stem = name.trim_end_matches(".gz").trim_end_matches(".fits");
             assert!(sources.contains(stem), "{part}/{name} is not in SOURCES.md");
             bytes += fs::metadata(&path).unwrap().len();
         }

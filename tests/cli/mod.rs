@@ -142,3 +142,16 @@ fn a_reader_of_stdout_that_goes_away_is_no_failure() {
     let output = child.wait_with_output().unwrap();
     assert_eq!(exit_code(&output), 0, "{}", String::from_utf8_lossy(&output.stderr));
 }
+
+/// `src/spectrum/readers/LAYOUTS.md` is what the program prints.
+#[test]
+fn the_table_of_layouts_is_the_documentation() {
+    let printed = String::from_utf8(emberline(&["check", "--layouts"]).stdout).unwrap();
+    let place = Path::new(env!("CARGO_MANIFEST_DIR")).join("src/spectrum/readers/LAYOUTS.md");
+    let committed = std::fs::read_to_string(place).unwrap();
+    let (_, table) = committed.split_once("\n\n").expect("a sentence above the table");
+    assert_eq!(table, printed, "write the table again with `emberline check --layouts`");
+    for layout in emberline::spectrum::readers::LAYOUTS {
+        assert!(printed.contains(&format!("| `{}` |", layout.name)), "{}", layout.name);
+    }
+}

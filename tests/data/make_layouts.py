@@ -416,8 +416,145 @@ def two_df():
                np.sqrt(hdus["VARIANCE"].data[row]), np.ones(PIXELS, bool), None, "air")
 
 
+def sdss_mwm():
+    # A stack as of mwmStar (optical extension with one row, the others empty) and two visits as of mwmVisit.
+    wave = 10.0 ** (3.55 + 1e-4 * np.arange(PIXELS))
+    primary = fits.PrimaryHDU()
+    for key, value in [("V_ASTRA", "0.6.0"), ("SDSS_ID", 60000001), ("TELESCOP", "SDSS")]:
+        primary.header[key] = value
+
+    def table(rows, name, with_wave=True):
+        flags = np.zeros((rows, PIXELS), "i8")
+        if rows:
+            flags[0, 12] = 4
+        columns = [
+            fits.Column("v_rad", "E", array=[25.0, -40.0][:rows]), fits.Column("mjd", "J", array=[60010, 60020][:rows]),
+            fits.Column("flux", f"{PIXELS}E", array=np.stack([flux_like(scale=30.0) for _ in range(rows)])
+                        if rows else np.zeros((0, PIXELS), "f4")),
+            fits.Column("ivar", f"{PIXELS}E", array=np.full((rows, PIXELS), 4.0, "f4")),
+            fits.Column("pixel_flags", f"{PIXELS}K", array=flags),
+        ]
+        if with_wave:
+            columns.append(fits.Column("wavelength", f"{PIXELS}D", array=np.tile(wave, (rows, 1))))
+        hdu = fits.BinTableHDU.from_columns(columns, name=name)
+        if not with_wave:
+            for key, value in [("CRVAL", 3.55), ("CDELT", 1e-4), ("CRPIX", 1), ("CTYPE", "LOG-LINEAR")]:
+                hdu.header[key] = value
+        return hdu
+
+    for name, rows, with_wave in [("sdss_mwm_star", 1, True), ("sdss_mwm_visit", 2, False)]:
+        hdus = write(name, [primary, table(rows, "BOSS/APO", with_wave), table(0, "BOSS/LCO", with_wave),
+                            table(1, "APOGEE/APO", with_wave)])
+        t = hdus[1].data
+        for row in range(rows):
+            shifted = wave * (1.0 + t["v_rad"][row].astype("f8") / 299792.458)
+            expect(name, "sdss-mwm", row, "SDSS 60000001", shifted, t["flux"][row] * 1e-17,
+                   ivar_sigma(t["ivar"][row]) * 1e-17, t["pixel_flags"][row] == 0, None)
+
+
+def weave():
+    fibres = 3
+    data = fits.ImageHDU(np.stack([flux_like(scale=500.0) for _ in range(fibres)]), name="BLUE_DATA")
+    for key, value in [("CRVAL1", 4000.0), ("CD1_1", 0.5), ("CRPIX1", 1.0), ("CTYPE1", "AWAV"), ("CUNIT1", "Angstrom")]:
+        data.header[key] = value
+    ivar = np.full((fibres, PIXELS), 0.01, "f4")
+    ivar[0, 3] = 0
+    sensitivity = (np.linspace(1.0, 2.0, PIXELS) * 1e-18)[None, :] * np.ones((fibres, 1))
+    table = fits.BinTableHDU.from_columns([
+        fits.Column("FIBREID", "J", array=[11, 12, 13]), fits.Column("TARGUSE", "1A", array=["T", "S", "T"]),
+        fits.Column("CNAME", "20A", array=["KF J0011", "", "KF J0012"]), fits.Column("TARGID", "12A", array=["a1", "", "a3"]),
+        fits.Column("FIBRERA", "D", array=[1.0, 2.0, 3.0]), fits.Column("FIBREDEC", "D", array=[4.0, 5.0, 6.0]),
+    ], name="FIBTABLE")
+    primary = fits.PrimaryHDU()
+    for key, value in [("OBID", 3456), ("MJD-OBS", 60300.25), ("TELESCOP", "WHT"), ("INSTRUME", "WEAVE")]:
+        primary.header[key] = value
+    hdus = write("weave", [primary, data, fits.ImageHDU(ivar, name="BLUE_IVAR"),
+                           fits.ImageHDU(sensitivity, name="BLUE_SENSFUNC"), table])
+    wave = 4000.0 + 0.5 * np.arange(PIXELS)
+    for row in (0, 2):
+        factor = hdus["BLUE_SENSFUNC"].data[row]
+        expect("weave", "weave", row, hdus["FIBTABLE"].data["CNAME"][row], wave, hdus["BLUE_DATA"].data[row] * factor,
+               ivar_sigma(hdus["BLUE_IVAR"].data[row]) * factor, np.ones(PIXELS, bool), None, "air")
+
+
+def lamost_medium():
+    arms = {"COADD_B": np.linspace(4950.0, 5350.0, PIXELS), "COADD_R": np.linspace(6300.0, 6800.0, PIXELS)}
+    primary = fits.PrimaryHDU()
+    for key, value in [("TELESCOP", "LAMOST"), ("DESIG", "KF J0013+00"), ("HELIO", True)]:
+        primary.header[key] = value
+    hdus = [primary]
+    for name, wave in arms.items():
+        mask = np.zeros((1, PIXELS), "i4")
+        mask[0, 2] = 1
+        hdus.append(fits.BinTableHDU.from_columns([
+            fits.Column("FLUX", f"{PIXELS}E", array=flux_like()[None]),
+            fits.Column("IVAR", f"{PIXELS}E", array=np.full((1, PIXELS), 2500.0, "f4")),
+            fits.Column("WAVELENGTH", f"{PIXELS}D", array=wave[None]),
+            fits.Column("ANDMASK", f"{PIXELS}J", array=mask),
+        ], name=name))
+    hdus = write("lamost_medium", hdus)
+    tables = [hdus[name].data for name in arms]
+    joined = lambda column: np.concatenate([t[column][0] for t in tables])
+    wave = joined("WAVELENGTH")
+    expect("lamost_medium", "lamost", None, "KF J0013+00", wave, joined("FLUX"), ivar_sigma(joined("IVAR")),
+           joined("ANDMASK") == 0, wave / 7500.0)
+
+
+def row_stack():
+    wave = np.linspace(0.38, 0.52, PIXELS)
+    primary = fits.PrimaryHDU(np.stack([wave, flux_like().astype("f8") * 1e-13, np.full(PIXELS, 1e-15)]))
+    # A celestial axis left over from the frame, as seen on real files.
+    for key, value in [("OBJECT", "KF J0014"), ("XUNITS", "um"), ("YUNITS", "Wm-2um-1"), ("AIRORVAC", "vac"),
+                       ("CTYPE1", "RA---TAN"), ("CRVAL1", 12.0), ("CDELT1", -1e-4)]:
+        primary.header[key] = value
+    d = write("row_stack", [primary])[0].data
+    expect("row_stack", "row-stack", None, "KF J0014", d[0] * 1e4, d[1] * 0.1, d[2] * 0.1, np.ones(PIXELS, bool), None)
+
+
+def text():
+    from astropy.table import Table
+
+    wave = 4000.0 + 1.25 * np.arange(PIXELS)
+    table = Table({"wave_vac": wave / 10.0, "flux": flux_like().astype("f8"), "sigma": np.full(PIXELS, 0.02)})
+    table["wave_vac"].unit, table["flux"].unit = "nm", "adu"
+    table["flux"][5] = np.nan
+    table.meta.update({"OBJECT": "KF J0015", "AIRMASS": 1.2})
+    # With commas as with blanks: two files of the same values.
+    for name, delimiter in [("text_blanks", " "), ("text_commas", ",")]:
+        buffer = io.StringIO()
+        table.write(buffer, format="ascii.ecsv", delimiter=delimiter)
+        with open(FOLDER / f"{name}.ecsv.gz", "wb") as file:
+            with gzip.GzipFile(filename="", fileobj=file, mode="wb", mtime=0) as packed:
+                packed.write(buffer.getvalue().encode())
+        t = Table.read(buffer.getvalue(), format="ascii.ecsv")
+        expect(name, "text", None, "KF J0015", t["wave_vac"] * 10.0, np.array(t["flux"]), np.array(t["sigma"]),
+               np.ones(PIXELS, bool), None)
+
+
+def votable():
+    from astropy.io.votable import from_table, parse_single_table, tree
+    from astropy.table import Table
+
+    # Columns of one name that says nothing and two that do: the first is found by its ucd.
+    table = Table({"x1": 4000.0 + 1.25 * np.arange(PIXELS), "flux": flux_like().astype("f8"), "ivar": np.full(PIXELS, 2500.0)})
+    table["x1"].unit, table["x1"].info.meta = "Angstrom", {"ucd": "em.wl"}
+    table["ivar"][9] = 0.0
+    document = from_table(table)
+    document.resources[0].infos.append(tree.Info(name="OBJECT", value="KF J0016"))
+    document.resources[0].infos.append(tree.Info(name="VACUUM", value="T"))
+    buffer = io.BytesIO()
+    document.to_xml(buffer)
+    with open(FOLDER / "votable.xml.gz", "wb") as file:
+        with gzip.GzipFile(filename="", fileobj=file, mode="wb", mtime=0) as packed:
+            packed.write(buffer.getvalue())
+    t = parse_single_table(io.BytesIO(buffer.getvalue())).to_table()
+    expect("votable", "votable", None, "KF J0016", np.array(t["x1"]), np.array(t["flux"]), ivar_sigma(np.array(t["ivar"])),
+           np.ones(PIXELS, bool), None)
+
+
 FOLDER.mkdir(exist_ok=True)
-for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table, pypeit, image_set, sdss_spplate, two_df):
+for make in (sdss_spec, sdss_spspec, lamost, desi, eso_sdp, hst_x1d, iraf_multispec, image, table, pypeit, image_set, sdss_spplate, two_df,
+             sdss_mwm, weave, lamost_medium, row_stack, text, votable):
     make()
 with open(FOLDER / "expected.json", "w") as file:
     json.dump(expected, file, indent=None, separators=(",", ":"), allow_nan=False)

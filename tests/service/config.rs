@@ -105,7 +105,7 @@ fn check_shows_a_configuration_that_parses_to_itself() {
         assert_eq!(parse(&shown).unwrap(), config);
     }
     let site = crate::support::site::Site::new();
-    let args = CheckArgs { config: Some(site.config_path.clone()), for_daemon: true };
+    let args = CheckArgs { config: Some(site.config_path.clone()), for_daemon: true, layouts: false };
     assert_eq!(check::run(&args).unwrap(), ExitCode::SUCCESS);
     std::fs::remove_dir(&site.inbox).unwrap();
     let refusal = check::run(&args).unwrap_err().to_string();

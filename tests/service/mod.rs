@@ -4,10 +4,12 @@ mod comparison;
 mod config;
 mod failures;
 mod flood;
+mod hostile;
 mod inbox;
 mod kill;
 mod ledger;
 mod moving;
+mod readers;
 mod real;
 mod running;
 

@@ -1,7 +1,9 @@
 //! What reading promises: values from the file, decisions on record, refusals with a stable code.
 
+mod exposures;
 mod layouts;
-mod mutants;
+pub mod mutants;
+mod provenance;
 mod refusals;
 mod values;
 

@@ -1,6 +1,6 @@
 //! A path to bytes in memory: an ordinary file, of bounded size, unpacked with a bound.
 
-use std::fs::OpenOptions;
+use std::fs::{File, OpenOptions};
 use std::io::{self, Read};
 use std::os::unix::fs::{FileTypeExt, OpenOptionsExt};
 use std::path::Path;
@@ -11,8 +11,8 @@ use super::FileFault;
 
 const GZIP_START: [u8; 2] = [0x1f, 0x8b];
 
-/// Reads an ordinary file; never waits for a pipe, never reads a device.
-pub fn read_regular_file(path: &Path, largest_bytes: u64) -> Result<Vec<u8>, FileFault> {
+/// Opens an ordinary file for reading; never waits for a pipe, never opens a device.
+pub fn open_regular_file(path: &Path) -> Result<File, FileFault> {
     // Without O_NONBLOCK, opening a pipe that nobody writes to would wait for ever.
     let file =
         OpenOptions::new().read(true).custom_flags(libc::O_NONBLOCK).open(path).map_err(
@@ -33,8 +33,13 @@ pub fn read_regular_file(path: &Path, largest_bytes: u64) -> Result<Vec<u8>, Fil
         };
         return Err(FileFault::NotRegular { found });
     }
+    Ok(file)
+}
+
+/// All bytes of an open file, if they are not too many.
+pub fn read_open_file(file: File, largest_bytes: u64) -> Result<Vec<u8>, FileFault> {
     read_bounded(file, largest_bytes, "on disk").map_err(|fault| match fault {
-        BoundedFault::TooLarge(fault) => fault,
+        BoundedFault::TooLarge(fault) | BoundedFault::NoMemory(fault) => fault,
         BoundedFault::Io(error) => FileFault::Unreadable(error),
     })
 }
@@ -46,7 +51,7 @@ pub fn unpack(packed: Vec<u8>, largest_bytes: u64) -> Result<Vec<u8>, FileFault>
     }
     read_bounded(MultiGzDecoder::new(packed.as_slice()), largest_bytes, "after unpacking").map_err(|fault| {
         match fault {
-            BoundedFault::TooLarge(fault) => fault,
+            BoundedFault::TooLarge(fault) | BoundedFault::NoMemory(fault) => fault,
             BoundedFault::Io(error) => FileFault::BadGzip(error),
         }
     })
@@ -54,12 +59,17 @@ pub fn unpack(packed: Vec<u8>, largest_bytes: u64) -> Result<Vec<u8>, FileFault>
 
 enum BoundedFault {
     TooLarge(FileFault),
+    NoMemory(FileFault),
     Io(io::Error),
 }
 
 fn read_bounded(source: impl Read, largest_bytes: u64, when: &'static str) -> Result<Vec<u8>, BoundedFault> {
     let mut bytes = Vec::new();
-    source.take(largest_bytes.saturating_add(1)).read_to_end(&mut bytes).map_err(BoundedFault::Io)?;
+    let outcome = source.take(largest_bytes.saturating_add(1)).read_to_end(&mut bytes);
+    outcome.map_err(|error| match error.kind() {
+        io::ErrorKind::OutOfMemory => BoundedFault::NoMemory(FileFault::NoMemory { when }),
+        _ => BoundedFault::Io(error),
+    })?;
     if bytes.len() as u64 > largest_bytes {
         return Err(BoundedFault::TooLarge(FileFault::TooLarge { largest_bytes, when }));
     }

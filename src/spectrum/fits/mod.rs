@@ -16,9 +16,12 @@ mod walk;
 pub use header::{Header, Value};
 pub use walk::{Column, Hdu, Image, Kind, Table};
 
+pub use bytes::open_regular_file;
+
 use std::cell::RefCell;
 use std::collections::BTreeMap;
 use std::collections::btree_map::Entry;
+use std::fs::File;
 use std::io;
 use std::path::Path;
 
@@ -33,7 +36,6 @@ const MOST_VALUES: u64 = 20_000_000;
 pub struct FitsFile {
     hdus: Vec<Hdu>,
     bytes: Vec<u8>,
-    blake3: String,
     /// The units that the C library has open, by index: readers go back and forth between them.
     open: RefCell<BTreeMap<usize, Handle>>,
 }
@@ -44,7 +46,7 @@ impl FitsFile {
     /// # Errors
     /// [`FileFault`].
     pub fn read(path: &Path, largest_bytes: u64) -> Result<Self, FileFault> {
-        let packed = bytes::read_regular_file(path, largest_bytes)?;
+        let packed = bytes::read_open_file(bytes::open_regular_file(path)?, largest_bytes)?;
         Self::parse(packed, largest_bytes)
     }
 
@@ -53,10 +55,16 @@ impl FitsFile {
     /// # Errors
     /// [`FileFault`].
     pub fn parse(packed: Vec<u8>, largest_bytes: u64) -> Result<Self, FileFault> {
-        let blake3 = blake3::hash(&packed).to_hex().to_string();
-        let bytes = bytes::unpack(packed, largest_bytes)?;
+        Self::of_unpacked(bytes::unpack(packed, largest_bytes)?)
+    }
+
+    /// Checks bytes that are not packed.
+    ///
+    /// # Errors
+    /// [`FileFault`].
+    pub fn of_unpacked(bytes: Vec<u8>) -> Result<Self, FileFault> {
         let hdus = walk::walk(&bytes)?;
-        Ok(FitsFile { hdus, bytes, blake3, open: RefCell::default() })
+        Ok(FitsFile { hdus, bytes, open: RefCell::default() })
     }
 
     /// All header-data units, the primary first.
@@ -69,11 +77,6 @@ impl FitsFile {
     pub fn missing_extensions(&self) -> u64 {
         let announced = self.hdus[0].header.integer("NEXTEND").unwrap_or(0);
         u64::try_from(announced).unwrap_or(0).saturating_sub(self.hdus.len() as u64 - 1)
-    }
-
-    /// BLAKE3 of the bytes on disk (before unpacking), hexadecimal.
-    pub fn blake3(&self) -> &str {
-        &self.blake3
     }
 
     /// The first unit with this `EXTNAME`, letter case aside.
@@ -197,6 +200,17 @@ impl FitsFile {
     }
 }
 
+/// The unpacked bytes of an open file of at most `largest_bytes`, packed or unpacked, and the BLAKE3 of the
+/// bytes on disk, hexadecimal.
+///
+/// # Errors
+/// [`FileFault`].
+pub fn read_unpacked(file: File, largest_bytes: u64) -> Result<(Vec<u8>, String), FileFault> {
+    let packed = bytes::read_open_file(file, largest_bytes)?;
+    let blake3 = blake3::hash(&packed).to_hex().to_string();
+    Ok((bytes::unpack(packed, largest_bytes)?, blake3))
+}
+
 fn find_column<'a>(hdu: &'a Hdu, name: &str) -> Result<(&'a Table, &'a Column), FileFault> {
     let Kind::Table(table) = &hdu.kind else {
         return Err(bad_data(hdu, "found no table, need one".to_owned()));
@@ -242,6 +256,12 @@ pub enum FileFault {
     TooLarge {
         /// The limit.
         largest_bytes: u64,
+        /// Before or after unpacking.
+        when: &'static str,
+    },
+    /// The memory that this process may use does not hold the file.
+    #[error("cannot hold the file in memory {when}")]
+    NoMemory {
         /// Before or after unpacking.
         when: &'static str,
     },
@@ -293,6 +313,7 @@ impl FileFault {
             FileFault::Unreadable(_) => &codes::FILE_UNREADABLE,
             FileFault::Empty => &codes::FILE_EMPTY,
             FileFault::TooLarge { .. } => &codes::FILE_TOO_LARGE,
+            FileFault::NoMemory { .. } => &codes::READER_MEMORY,
             FileFault::BadGzip(_) => &codes::FILE_BAD_GZIP,
             FileFault::NotFits { .. } => &codes::FILE_NOT_FITS,
             FileFault::BadHeader { .. } => &codes::FILE_BAD_HEADER,
@@ -311,6 +332,7 @@ impl FileFault {
             FileFault::Missing
             | FileFault::NotRegular { .. }
             | FileFault::TooLarge { .. }
+            | FileFault::NoMemory { .. }
             | FileFault::NotFits { .. }
             | FileFault::BadHeader { .. }
             | FileFault::BadData { .. } => Disposition::Reject,

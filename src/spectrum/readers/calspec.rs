@@ -19,9 +19,9 @@ use crate::spectrum::{ErrorKind, Medium, Resolution};
 pub const LAYOUT: Layout = Layout {
     name: "calspec",
     title: "CALSPEC flux standards: table with WAVELENGTH, FLUX, STATERROR, FWHM",
+    identified_by: "DBTABLE = CRSPECTRUM, or a table with WAVELENGTH, FLUX, STATERROR, SYSERROR, FWHM",
     rule: "medium from the history lines; errors are sigma; DATAQUAL 1 = good; resolution from FWHM where plausible",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 fn identify(fits: &FitsFile) -> bool {
@@ -56,6 +56,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
             .map(|widths| Stated::new(Resolution::FwhmPerPixelAa(widths), "column FWHM")),
         velocity_frame: None,
         flags: Vec::new(),
+        exposure_of: None,
     }])
 }
 

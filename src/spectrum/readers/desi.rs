@@ -19,9 +19,9 @@ use crate::spectrum::{ErrorKind, Medium, ObjectRecord, VelocityFrame};
 pub const LAYOUT: Layout = Layout {
     name: "desi",
     title: "DESI coadd and spectra files: FIBERMAP and the arms B, R, Z, one row per target",
+    identified_by: "extensions X_WAVELENGTH and X_FLUX for an arm X of B, R, Z",
     rule: "vacuum and barycentric by the survey; ivar; mask 0 = good; resolution from the second moment of the resolution extension; arms joined in the middle of their overlap",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 const ARMS: [&str; 3] = ["B", "R", "Z"];
@@ -131,6 +131,7 @@ fn read_row(fits: &FitsFile, map: &Hdu, arms: &[ArmHdus<'_>], row: u64) -> Resul
         )),
         ..RawSpectrum::default()
     };
+    raw.exposure_of = raw.object.name.clone();
     join(parts, "extension RESOLUTION", &mut raw);
     if arms.iter().any(|arm| arm.is_mask_unread) {
         let detail = "masks are compressed images; inverse variances of zero still mark bad pixels";
@@ -183,12 +184,17 @@ fn object_record(fits: &FitsFile, map: &Hdu, row: u64) -> ObjectRecord {
     let mut object = object::from_headers(&[&fits.hdus()[0].header]);
     object.ra_deg = real("TARGET_RA");
     object.dec_deg = real("TARGET_DEC");
+    object.position_epoch_yr = real("REF_EPOCH").filter(|year| *year > 1850.0);
+    let primary = &fits.hdus()[0].header;
+    object.program = object::survey_id(primary, &["SURVEY", "PROGRAM"]).or(object.program);
     object.exposure_s = real("COADD_EXPTIME").or_else(|| real("EXPTIME")).filter(|exposure| *exposure > 0.0);
     object.observed_at = real("MEAN_MJD").or_else(|| real("MJD")).map(|mjd| format!("MJD {mjd}"));
     if let Some(id) = integer("TARGETID") {
         object.name = Some(format!("DESI {id}"));
-        let exposure = integer("EXPID").map(|exposure| format!(" EXPID={exposure}")).unwrap_or_default();
-        object.survey_id = Some(format!("TARGETID={id}{exposure}"));
+        let numbers = ["TILEID", "FIBER", "NIGHT", "EXPID"];
+        let numbers = numbers.map(|name| integer(name).map(|value| format!("{name}={value}")));
+        let parts = [Some(format!("TARGETID={id}")), object::join(&numbers, " ")];
+        object.survey_id = object::join(&parts, " ");
     }
     object
 }

@@ -18,9 +18,9 @@ use crate::spectrum::{ErrorKind, Medium};
 pub const LAYOUT: Layout = Layout {
     name: "eso-sdp",
     title: "ESO science data product spectra (Phase 3): one row of vectors, columns by TUTYP",
+    identified_by: "PRODCATG = SCIENCE.SPECTRUM..., or an extension with VOCLASS = SPECTRUM...",
     rule: "unit from TUNIT; em.wl is vacuum, em.wl;obs.atmos is air; StatError is sigma; QUAL 0 = good; SPEC_RES; SPECSYS",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 fn identify(fits: &FitsFile) -> bool {
@@ -85,6 +85,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
         resolution: super::stated_power(&headers),
         velocity_frame: super::stated_frame(&headers),
         flags: Vec::new(),
+        exposure_of: None,
     }])
 }
 

@@ -17,9 +17,9 @@ use crate::spectrum::{ErrorKind, Medium, VelocityFrame};
 pub const LAYOUT: Layout = Layout {
     name: "hst-x1d",
     title: "HST STIS and COS one-dimensional extractions (x1d, sx1)",
+    identified_by: "TELESCOP = HST and a table with NELEM, WAVELENGTH, FLUX, ERROR, DQ",
     rule: "vacuum by the archive's convention; ERROR is sigma; DQ without serious bits = good; heliocentric if HELCORR is complete; resolution from the configuration",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 const COLUMNS: &[&str] = &["NELEM", "WAVELENGTH", "FLUX", "ERROR", "DQ"];
@@ -88,6 +88,7 @@ fn read_exposure(fits: &FitsFile, hdu: &Hdu, exposure: Option<usize>) -> Result<
             .then(|| Stated::new(VelocityFrame::Heliocentric, "HELCORR = 'COMPLETE'")),
         ..RawSpectrum::default()
     };
+    raw.exposure_of = exposure.map(|_| "the target of the file".to_owned());
     raw.object.name = primary.text("TARGNAME").map(str::to_owned).or(raw.object.name);
     join(arms, "", &mut raw);
     Ok(raw)

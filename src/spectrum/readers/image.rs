@@ -23,9 +23,9 @@ use crate::spectrum::{ErrorKind, Medium, VelocityFrame, WaveUnit};
 pub const LAYOUT: Layout = Layout {
     name: "image",
     title: "image with a linear or logarithmic wavelength axis, also with apertures and bands",
+    identified_by: "an image with CRVAL1 and CD1_1 or CDELT1 whose first axis is no celestial coordinate",
     rule: "axis from CRVAL1, CD1_1 or CDELT1, DC-FLAG, CTYPE1; medium from CTYPE1 (WAVE, AWAV), VACUUM or AIRORVAC; errors from a sigma band or extension",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// Most lines of an image: the fibres of the largest multi-object spectrographs; a raw frame has more.
@@ -171,6 +171,7 @@ pub fn read_lines(
             resolution: super::stated_power(&headers),
             velocity_frame: super::stated_frame(&headers).or_else(|| eso_frame(primary)),
             flags,
+            exposure_of: None,
         });
     }
     Ok(raws)

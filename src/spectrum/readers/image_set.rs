@@ -12,9 +12,9 @@ use crate::spectrum::settle::{RawSpectrum, Stated, UnitWords};
 pub const LAYOUT: Layout = Layout {
     name: "image-set",
     title: "one-dimensional images FLUX, WAVELENGTH and ERROR or IVAR",
+    identified_by: "one-dimensional images named FLUX and WAVELENGTH of equal length",
     rule: "units from BUNIT of each image; ERROR is sigma; medium from VACUUM or AIRORVAC",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 const ERROR_NAMES: &[(&str, ErrorKind)] = &[
@@ -60,5 +60,6 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
         resolution: super::stated_power(&headers),
         velocity_frame: super::stated_frame(&headers),
         flags: Vec::new(),
+        exposure_of: None,
     }])
 }

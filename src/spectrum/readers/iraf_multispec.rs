@@ -19,9 +19,9 @@ use crate::spectrum::settle::{RawSpectrum, UnitWords};
 pub const LAYOUT: Layout = Layout {
     name: "iraf-multispec",
     title: "IRAF multispec images: apertures or echelle orders with a dispersion each",
+    identified_by: "CTYPE1 = MULTISPE or WAT0_001 with system=multispec, and WAT2_001",
     rule: "wavelengths from WAT2_nnn, unit from WAT1_001; medium and resolution usually from the configuration; errors from a sigma band if there is one",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// Characters of text in one WAT card.

@@ -17,11 +17,16 @@ mod iraf_multispec;
 mod lamost;
 mod object;
 mod pypeit;
+mod row_stack;
 mod sdss_image;
+mod sdss_mwm;
 mod sdss_plate;
 mod sdss_table;
 mod table;
+mod text;
 mod two_df;
+mod votable;
+mod weave;
 
 use super::axis::{Medium, VelocityFrame};
 use super::fits::{FitsFile, Hdu, Header, Kind};
@@ -35,18 +40,39 @@ pub struct Layout {
     pub name: &'static str,
     /// What writes it, one sentence.
     pub title: &'static str,
+    /// What in the headers it is recognised by, one sentence.
+    pub identified_by: &'static str,
     /// How wavelengths, errors, mask and resolution are known, one sentence.
     pub rule: &'static str,
-    /// Whether a file has this layout; looks at headers only.
-    pub identify: fn(&FitsFile) -> bool,
-    /// Every object in the file.
-    pub read: fn(&FitsFile) -> Result<Vec<RawSpectrum>, ReadFault>,
+    /// How it is recognised and read.
+    pub reader: Reader,
+}
+
+/// What a layout's files are made of.
+#[derive(Clone, Copy)]
+pub enum Reader {
+    /// FITS.
+    Fits {
+        /// Whether a file has this layout; looks at headers only.
+        identify: fn(&FitsFile) -> bool,
+        /// Every object in the file.
+        read: fn(&FitsFile) -> Result<Vec<RawSpectrum>, ReadFault>,
+    },
+    /// Lines of text.
+    Text {
+        /// Whether bytes that are no FITS have this layout.
+        identify: fn(&[u8]) -> bool,
+        /// Every object in the file.
+        read: fn(&[u8]) -> Result<Vec<RawSpectrum>, ReadFault>,
+    },
 }
 
 /// All layouts in the order in which they are tried.
 pub static LAYOUTS: &[Layout] = &[
     eso_sdp::LAYOUT,
     desi::LAYOUT,
+    weave::LAYOUT,
+    sdss_mwm::LAYOUT,
     sdss_table::LAYOUT,
     sdss_image::LAYOUT,
     sdss_plate::LAYOUT,
@@ -59,11 +85,38 @@ pub static LAYOUTS: &[Layout] = &[
     image_set::LAYOUT,
     image::LAYOUT,
     table::LAYOUT,
+    row_stack::LAYOUT,
+    votable::LAYOUT,
+    text::LAYOUT,
 ];
 
-/// The layout of a file, if it is a known one.
-pub fn recognise(fits: &FitsFile) -> Option<&'static Layout> {
-    LAYOUTS.iter().find(|layout| (layout.identify)(fits))
+/// A function from a file to every object in it.
+type ReadAll<F> = fn(&F) -> Result<Vec<RawSpectrum>, ReadFault>;
+
+/// The layout of a FITS file, if it is a known one, and its reader.
+pub fn recognise(fits: &FitsFile) -> Option<(&'static Layout, ReadAll<FitsFile>)> {
+    LAYOUTS.iter().find_map(|layout| match layout.reader {
+        Reader::Fits { identify, read } if identify(fits) => Some((layout, read)),
+        Reader::Fits { .. } | Reader::Text { .. } => None,
+    })
+}
+
+/// The layout of bytes that are no FITS, if it is a known one, and its reader.
+pub fn recognise_text(bytes: &[u8]) -> Option<(&'static Layout, ReadAll<[u8]>)> {
+    LAYOUTS.iter().find_map(|layout| match layout.reader {
+        Reader::Text { identify, read } if identify(bytes) => Some((layout, read)),
+        Reader::Text { .. } | Reader::Fits { .. } => None,
+    })
+}
+
+/// All layouts in words, as Markdown: for `emberline check --layouts` and the documentation.
+pub fn describe_layouts() -> String {
+    let mut words =
+        String::from("| layout | written by | recognised by | what is taken from it |\n|---|---|---|---|\n");
+    for Layout { name, title, identified_by, rule, .. } in LAYOUTS {
+        words.push_str(&format!("| `{name}` | {title} | {identified_by} | {rule} |\n"));
+    }
+    words
 }
 
 /// What is in a file, in one line, for the message that refuses it.

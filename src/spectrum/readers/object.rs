@@ -9,16 +9,64 @@ pub fn from_headers(headers: &[&Header]) -> ObjectRecord {
     let text = |keys: &[&str]| first(headers, keys, |header, key| header.text(key).map(str::to_owned));
     let real = |keys: &[&str]| first(headers, keys, Header::real);
     ObjectRecord {
-        name: text(&["OBJECT", "TARGNAME", "TARGET", "TARGETID"]),
+        name: text(&["ESO OBS TARG NAME"])
+            .filter(|_| has_template_name(headers))
+            .or_else(|| text(&["OBJECT", "TARGNAME", "TARGET", "TARGETID"])),
         ra_deg: first(headers, &["RA", "RA_TARG", "RA_OBJ"], right_ascension_deg),
         dec_deg: first(headers, &["DEC", "DEC_TARG", "DEC_OBJ"], declination_deg),
-        survey_id: None,
+        position_epoch_yr: position_epoch_yr(headers),
+        survey_id: survey_id_of(headers, &["OBID1", "ROOTNAME"]),
         observed_at: observed_at(headers),
-        exposure_s: real(&["EXPTIME", "TEXPTIME", "EXPOSURE"]).filter(|exposure| *exposure > 0.0),
-        airmass: real(&["AIRMASS"]).filter(|airmass| (1.0..40.0).contains(airmass)),
+        exposure_s: real(&["EXPTIME", "TEXPTIME", "EXPOSURE", "EXPOSED", "ITIME"])
+            .filter(|exposure| *exposure > 0.0),
+        airmass: airmass(headers),
         instrument: join(&[text(&["TELESCOP"]), text(&["INSTRUME"])], " "),
-        program: text(&["PROG_ID", "PROPID", "PROGRAM", "PROPOSID"]),
+        site: site(headers),
+        program: text(&["PROG_ID", "ESO OBS PROG ID", "PROPID", "PROGRAM", "PROPOSID", "PROPOSAL"]),
     }
+}
+
+/// Files of some ESO pipelines name the template in OBJECT and the star in a keyword of its own.
+fn has_template_name(headers: &[&Header]) -> bool {
+    let is_template = |name: &str| {
+        let mut letters = name.chars().filter(|c| c.is_alphabetic());
+        name.contains('_') && letters.all(|c| c.is_ascii_uppercase()) && !name.contains(char::is_whitespace)
+    };
+    first(headers, &["OBJECT"], |header, key| header.text(key).map(is_template)).unwrap_or(true)
+}
+
+/// Mean of start and end where a file gives both.
+fn airmass(headers: &[&Header]) -> Option<f64> {
+    let one =
+        |keys: &[&str]| first(headers, keys, Header::real).filter(|airmass| (1.0..40.0).contains(airmass));
+    one(&["AIRMASS", "SECZ", "AM"]).or_else(|| {
+        let start = one(&["AMSTART", "ESO TEL AIRM START"])?;
+        let end = one(&["AMEND", "ESO TEL AIRM END"]).unwrap_or(start);
+        Some(0.5 * (start + end))
+    })
+}
+
+/// Julian year of the position. EQUINOX is that of the axes and says nothing about it, and EPOCH is an
+/// old name of EQUINOX.
+fn position_epoch_yr(headers: &[&Header]) -> Option<f64> {
+    let is_year = |year: &f64| (1850.0..2200.0).contains(year);
+    first(headers, &["ESO TEL TARG EPOCH", "TARGEPOC"], Header::real).filter(is_year)
+}
+
+/// Name of the site, else its longitude and latitude.
+fn site(headers: &[&Header]) -> Option<String> {
+    let named =
+        |header: &Header, key: &str| header.text(key).map(str::to_owned).filter(|name| !name.is_empty());
+    first(headers, &["OBSERVAT", "OBSERVATORY", "SITENAME", "SITE", "SITEID"], named).or_else(|| {
+        let longitude = first(headers, &["LONGITUD", "SITELONG", "GEOLON", "ESO TEL GEOLON"], Header::real)?;
+        let latitude = first(headers, &["LATITUDE", "SITELAT", "GEOLAT", "ESO TEL GEOLAT"], Header::real)?;
+        let is_place = (-360.0..=360.0).contains(&longitude) && (-90.0..=90.0).contains(&latitude);
+        is_place.then(|| format!("longitude {longitude} latitude {latitude}"))
+    })
+}
+
+fn survey_id_of(headers: &[&Header], keys: &[&str]) -> Option<String> {
+    headers.iter().find_map(|header| survey_id(header, keys))
 }
 
 /// Name, value pairs as `name=value name=value`, for identifiers of a survey.
@@ -75,12 +123,17 @@ fn observed_at(headers: &[&Header]) -> Option<String> {
     }
     // 1900 to 2200; files are known that keep a Julian date under MJD.
     let is_plausible = |mjd: &f64| (15_000.0..125_000.0).contains(mjd);
-    first(headers, &["MJD-OBS", "MJD_OBS", "MJD"], Header::real)
-        .filter(is_plausible)
+    let mjd = first(headers, &["MJD-OBS", "MJD_OBS", "MJD", "EXPSTART"], Header::real).filter(is_plausible);
+    // International atomic time in seconds since MJD 0; its 37 s from universal time do not matter here.
+    let tai = || first(headers, &["TAI", "TAI-BEG"], Header::real).map(|seconds| seconds / 86400.0);
+    let julian = || first(headers, &["JD", "JULDATE"], Header::real).map(|days| days - 2_400_000.5);
+    mjd.or_else(|| tai().filter(is_plausible))
+        .or_else(|| julian().filter(is_plausible))
         .map(|mjd| format!("MJD {mjd}"))
 }
 
-fn join(parts: &[Option<String>], separator: &str) -> Option<String> {
+/// The known ones of several parts in one line.
+pub fn join(parts: &[Option<String>], separator: &str) -> Option<String> {
     let found: Vec<&str> = parts.iter().flatten().map(String::as_str).collect();
     (!found.is_empty()).then(|| found.join(separator))
 }

@@ -16,9 +16,9 @@ use crate::spectrum::{ErrorKind, Medium, Resolution, VelocityFrame, WaveUnit};
 pub const LAYOUT: Layout = Layout {
     name: "pypeit",
     title: "PypeIt Coadd1D and spec1d files",
+    identified_by: "a table of DMODCLS = OneSpec or SpecObj",
     rule: "vacuum by the pipeline; ivar; mask 1 = good; resolution from OPT_FWHM where present; calibrated where fluxed",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// Unit of calibrated fluxes.
@@ -109,5 +109,6 @@ fn read_columns(fits: &FitsFile, hdu: &Hdu, columns: &Columns) -> Result<RawSpec
         resolution: widths.map(|widths| Stated::new(Resolution::FwhmPerPixelAa(widths), "column OPT_FWHM")),
         velocity_frame: frame.map(|frame| Stated::new(frame, "VEL_TYPE or REFFRAME")),
         flags: Vec::new(),
+        exposure_of: None,
     })
 }

@@ -16,9 +16,9 @@ use crate::spectrum::{ErrorKind, Medium, ObjectRecord, Resolution, VelocityFrame
 pub const LAYOUT: Layout = Layout {
     name: "sdss-spspec",
     title: "SDSS spSpec files up to DR7: image with lines flux, residual, error, mask",
+    identified_by: "primary image of 4 or 5 lines with TELESCOP containing SDSS, ARRAY1 = SPECTRUM, or a table with restWave and lineMask",
     rule: "vacuum and heliocentric by the survey; line 2 is sigma; andMask 0 = good; resolution from the dispersion column",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// Bit of the mask line that marks a spectral line found in this pixel.
@@ -78,6 +78,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
             "layout: the survey corrects for the Earth's motion",
         )),
         flags: Vec::new(),
+        exposure_of: None,
     }])
 }
 

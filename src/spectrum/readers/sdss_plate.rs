@@ -13,9 +13,9 @@ use crate::spectrum::{ErrorKind, Medium, ObjectRecord, Resolution, VelocityFrame
 pub const LAYOUT: Layout = Layout {
     name: "sdss-spplate",
     title: "SDSS spPlate files: one line per fibre",
+    identified_by: "primary image of more than 5 lines with TELESCOP containing SDSS and COEFF0",
     rule: "vacuum and heliocentric by the survey; ivar; and-mask 0 = good; resolution from the dispersion image; sky fibres left out",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// Order of the units in the file.
@@ -78,6 +78,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
                 "layout: the survey corrects for the Earth's motion",
             )),
             flags: Vec::new(),
+            exposure_of: None,
         });
     }
     Ok(raws)

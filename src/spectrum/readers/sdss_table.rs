@@ -18,9 +18,9 @@ use crate::spectrum::{ErrorKind, Medium, ObjectRecord, Resolution, VelocityFrame
 pub const LAYOUT: Layout = Layout {
     name: "sdss-spec",
     title: "SDSS, BOSS, eBOSS and SDSS-V spec files, lite and full: coadd table with flux, loglam, ivar",
+    identified_by: "a table with columns flux, loglam, ivar, one row per pixel",
     rule: "vacuum and heliocentric by the survey; ivar; and_mask 0 = good; resolution from wdisp",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 const COLUMNS: &[&str] = &["flux", "loglam", "ivar"];
@@ -75,6 +75,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
         )),
         wave,
         flags: Vec::new(),
+        exposure_of: None,
     }])
 }
 
@@ -102,5 +103,9 @@ fn object_record(fits: &FitsFile, coadd: &Hdu) -> ObjectRecord {
         object.name = Some(format!("SDSS {plate}-{mjd}-{fibre}"));
         object.survey_id = Some(format!("PLATE={plate} MJD={mjd} FIBERID={fibre}"));
     }
+    object.program = object.program.or_else(|| {
+        let text = |name: &str| fits.text_cell(catalogue?, name, 0).ok().filter(|text| !text.is_empty());
+        text("SURVEY").or_else(|| text("PROGRAMNAME"))
+    });
     object
 }

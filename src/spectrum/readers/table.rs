@@ -14,12 +14,13 @@ use crate::spectrum::{ErrorKind, Medium, Resolution, WaveUnit};
 pub const LAYOUT: Layout = Layout {
     name: "table",
     title: "binary table with a column of wavelengths and one of fluxes",
+    identified_by: "a table with a column of wavelengths and one of fluxes, by name",
     rule: "units from TUNIT; medium from VACUUM, AIRORVAC or the column's name; kind of error from the column's name",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
-const WAVE_NAMES: &[&str] = &[
+/// Names of such columns, in lower case.
+pub const WAVE_NAMES: &[&str] = &[
     "wavelength",
     "wave",
     "lambda",
@@ -34,7 +35,8 @@ const WAVE_NAMES: &[&str] = &[
     "wavelength_air",
     "awav",
 ];
-const FLUX_NAMES: &[&str] = &["flux", "flam", "f_lambda", "flux_lambda", "spec", "spectrum", "counts"];
+/// Names of such columns, in lower case.
+pub const FLUX_NAMES: &[&str] = &["flux", "flam", "f_lambda", "flux_lambda", "spec", "spectrum", "counts"];
 const SIGMA_NAMES: &[&str] = &[
     "err",
     "error",
@@ -56,8 +58,10 @@ const SIGMA_NAMES: &[&str] = &[
 const VARIANCE_NAMES: &[&str] = &["var", "variance", "flux_var"];
 const IVAR_NAMES: &[&str] = &["ivar", "invvar", "inverse_variance", "flux_ivar"];
 const WEIGHT_NAMES: &[&str] = &["weight", "weights", "wgt"];
-const BAD_NAMES: &[&str] = &["mask", "dq", "qual", "quality", "flags", "and_mask"];
-const GOOD_NAMES: &[&str] = &["good", "is_good", "goodpix"];
+/// Names of masks whose 0 is good.
+pub const BAD_NAMES: &[&str] = &["mask", "dq", "qual", "quality", "flags", "and_mask"];
+/// Names of masks whose 1 is good.
+pub const GOOD_NAMES: &[&str] = &["good", "is_good", "goodpix"];
 
 /// The columns of one table that make a spectrum.
 struct Columns<'a> {
@@ -83,10 +87,7 @@ fn find(fits: &FitsFile) -> Option<(&Hdu, &Table, Columns<'_>)> {
 }
 
 fn identify(fits: &FitsFile) -> bool {
-    // These tables of SDSS-V hold spectra shifted to the star's rest frame; read as an ordinary table
-    // they would give a velocity near zero without a warning.
-    let is_at_rest = fits.hdus()[0].header.has("V_ASTRA");
-    !is_at_rest && find(fits).is_some()
+    find(fits).is_some()
 }
 
 fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
@@ -168,23 +169,27 @@ fn read_one(
         resolution,
         velocity_frame: super::stated_frame(&headers),
         flags: Vec::new(),
+        exposure_of: None,
     })
 }
 
-/// The column of errors and what its name says they are; weights say nothing.
+/// Names of columns of errors, in lower case, and what the names say they are; weights say nothing.
+pub const ERROR_KINDS: [(&[&str], Option<ErrorKind>); 4] = [
+    (SIGMA_NAMES, Some(ErrorKind::Sigma)),
+    (IVAR_NAMES, Some(ErrorKind::InverseVariance)),
+    (VARIANCE_NAMES, Some(ErrorKind::Variance)),
+    (WEIGHT_NAMES, None),
+];
+
+/// The column of errors and what its name says they are.
 fn error_column(table: &Table) -> Option<(&Column, Option<ErrorKind>)> {
-    let kinds = [
-        (SIGMA_NAMES, Some(ErrorKind::Sigma)),
-        (IVAR_NAMES, Some(ErrorKind::InverseVariance)),
-        (VARIANCE_NAMES, Some(ErrorKind::Variance)),
-        (WEIGHT_NAMES, None),
-    ];
-    kinds.into_iter().find_map(|(names, kind)| {
+    ERROR_KINDS.into_iter().find_map(|(names, kind)| {
         named(table, names).filter(|column| column.is_numeric()).map(|column| (column, kind))
     })
 }
 
-fn medium_of_name(name: &str) -> Option<Stated<Medium>> {
+/// The medium that the name of a column of wavelengths tells.
+pub fn medium_of_name(name: &str) -> Option<Stated<Medium>> {
     let medium = match name.to_ascii_lowercase() {
         name if name.ends_with("_vac") => Medium::Vacuum,
         name if name.ends_with("_air") || name == "awav" => Medium::Air,

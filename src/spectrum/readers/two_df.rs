@@ -15,9 +15,9 @@ use crate::spectrum::{Medium, VelocityFrame};
 pub const LAYOUT: Layout = Layout {
     name: "two-df",
     title: "2dF and AAOmega files reduced by 2dfdr: one line per fibre, with VARIANCE and FIBRES",
+    identified_by: "primary image with extensions VARIANCE and FIBRES",
     rule: "air unless VACUUM = T; topocentric unless SPECSYS says otherwise; VARIANCE; only fibres of type P; resolution from the configuration",
-    identify,
-    read,
+    reader: super::Reader::Fits { identify, read },
 };
 
 /// log10 of angstroms stays below this, angstroms and nanometres above.
@@ -56,6 +56,7 @@ fn read(fits: &FitsFile) -> Result<Vec<RawSpectrum>, ReadFault> {
             angle.is_finite().then(|| angle.to_degrees())
         };
         raw.object.name = fits.text_cell(table, "NAME", row).ok().filter(|name| !name.is_empty());
+        raw.object.survey_id = Some(format!("FIBRE={}", row + 1));
         raw.object.ra_deg = angle_deg("RA");
         raw.object.dec_deg = angle_deg("DEC");
         raw.medium.get_or_insert_with(|| Stated::new(Medium::Air, "layout: air unless VACUUM = T"));
