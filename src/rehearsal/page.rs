@@ -339,8 +339,7 @@ fn times(night: &[(Sighting, Report)]) -> Figure {
     let (mut figure, _) = histogram(&values, (0.0, last), TIME_BINS, 0.0);
     let ticks: Vec<f64> = (0..=5).map(|i| last * f64::from(i) / 5.0).collect();
     figure.title = "Time per object".to_owned();
-    figure.x_label =
-        format!("reading and fitting, ms of one core (median {median:.0}, 99 % below {most:.0})");
+    figure.x_label = format!("reading and fitting, ms (median {median:.0}, 99 % below {most:.0})");
     figure.x_ticks = Axis::horizontal((0.0, last)).ticks(&ticks, |value| format!("{value:.0}"));
     figure
 }

@@ -50,9 +50,15 @@ pub fn read_unpacked(
 }
 
 /// The instrument sections that hold for the extensions of a file, each once: what of `settings.instruments`
-/// can change what is read from it. None for a file that is no FITS file.
+/// can change what is read from it. None for a file that never can be read; `None` where it cannot be told now.
 pub fn instruments_of<'s>(path: &Path, settings: &'s ReadSettings) -> Option<Vec<&'s Instrument>> {
-    let fits = FitsFile::read(path, settings.largest_bytes()).ok()?;
+    if settings.instruments.is_empty() {
+        return Some(Vec::new());
+    }
+    let fits = match FitsFile::read(path, settings.largest_bytes()) {
+        Ok(fits) => fits,
+        Err(fault) => return (fault.disposition() == Disposition::Reject).then(Vec::new),
+    };
     let mut found: Vec<&Instrument> = Vec::new();
     for hdu in 0..fits.hdus().len() {
         if let Some(instrument) = settings.layers(&headers(&fits, hdu)).instrument

@@ -1,7 +1,7 @@
 //! The daemon with the real analysis: `cargo bench --bench daemon -- latency [FILES]` (file closed -> report on
 //! disk, idle daemon) and `cargo bench --bench daemon -- flood [FILES]` (all at once: rate, peak memory).
 //! Files are invented spectra of the Kestrel Fell survey, written before the clock starts.
-#![allow(missing_docs, clippy::unwrap_used)]
+#![allow(missing_docs, clippy::unwrap_used, clippy::print_stdout)]
 
 use std::fs;
 use std::path::{Path, PathBuf};
