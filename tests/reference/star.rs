@@ -221,8 +221,8 @@ fn verif_flags() {
         let report = describe(teff_k, log_g, &[[1e4, 0.0], [0.0, 1e-4]], velocity, &TRACKS);
         report.flags.into_iter().map(|flag| flag.code).collect()
     };
-    assert!(codes(12_000.0, 8.0, Some(40.0)).is_empty());
-    assert_eq!(codes(12_000.0, 8.0, Some(700.0)), ["star.velocity-implausible"]);
+    assert!(codes(20_000.0, 8.0, Some(40.0)).is_empty());
+    assert_eq!(codes(20_000.0, 8.0, Some(700.0)), ["star.velocity-implausible"]);
     assert!(codes(12_000.0, 7.0, None).contains(&"star.below-single-star-mass".to_owned()));
     assert!(codes(12_000.0, 7.0, None).contains(&"star.outside-initial-final-relation".to_owned()));
     assert!(codes(12_000.0, 9.0, None).contains(&"star.core-composition-ambiguous".to_owned()));
