@@ -151,8 +151,9 @@ fn run_daemon(config: &Config, stars: u64) -> Result<f64, Box<dyn Error>> {
         log: None,
     };
     let started = Instant::now();
+    let caught = signals::catch()?;
     let (daemon, commands) = Daemon::start(options)?;
-    signals::forward(commands)?;
+    caught.forward(commands)?;
     let ending = progress::run_daemon(daemon, &progress::bar(stars, "fitting", "spectra"));
     let seconds = started.elapsed().as_secs_f64();
     if ending.exit_code != EXIT_DONE {

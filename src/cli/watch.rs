@@ -48,13 +48,14 @@ pub(super) fn run_daemon(
         is_drain: args.drain,
         log: Some(log),
     };
+    let catching = |source| StartError::System { attempted: "catching signals".to_owned(), source };
+    let caught = signals::catch().map_err(catching)?;
     let (daemon, commands) = Daemon::start(options)?;
     if retry_failed {
         // The daemon listens to its commands before it asks itself whether something is left to do.
         let _ = commands.send(Command::Reload { failed: true, reply: None });
     }
-    signals::forward(commands)
-        .map_err(|source| StartError::System { attempted: "catching signals".to_owned(), source })?;
+    caught.forward(commands).map_err(catching)?;
     let ending = if args.drain {
         progress::run_daemon(daemon, &progress::bar(0, "draining", "files"))
     } else {

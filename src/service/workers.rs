@@ -335,6 +335,8 @@ fn conclude(shared: &Shared, settings: &Settings, job: &Job, outcome: Outcome) -
             finished::move_content(shared, &shared.settings().config, &job.blake3)?;
         }
         Outcome::Lost => {
+            // Unless it is just being moved, and the ledger does not know of it yet.
+            let _no_move = shared.lock_moves();
             tracing::info!("the file is gone or was replaced; the job is dropped");
             let now_s = shared.now_s();
             shared.with_ledger(|ledger| ledger.lose(job, now_s))?;
