@@ -8,6 +8,7 @@
 //! frame) from the configuration and records how, and never guesses.
 
 mod axis;
+mod bits;
 mod exposures;
 pub mod fits;
 mod instrument;
@@ -59,8 +60,11 @@ pub struct BadPixels {
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 #[serde(try_from = "UncheckedSpectrum")]
 pub struct Spectrum {
+    #[serde(with = "bits")]
     wave_vac_aa: Vec<f64>,
+    #[serde(with = "bits")]
     flux: Vec<f64>,
+    #[serde(with = "bits")]
     sigma: Vec<f64>,
     is_good: Vec<bool>,
     bad_pixels: BadPixels,
@@ -167,8 +171,11 @@ impl Spectrum {
 /// The fields of a [`Spectrum`] as they come from outside.
 #[derive(Deserialize)]
 struct UncheckedSpectrum {
+    #[serde(with = "bits")]
     wave_vac_aa: Vec<f64>,
+    #[serde(with = "bits")]
     flux: Vec<f64>,
+    #[serde(with = "bits")]
     sigma: Vec<f64>,
     is_good: Vec<bool>,
     bad_pixels: BadPixels,

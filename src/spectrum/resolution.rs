@@ -15,7 +15,7 @@ pub enum Resolution {
     /// Constant FWHM, A.
     FwhmAa(f64),
     /// FWHM of each pixel, A; same length as the wavelength axis.
-    FwhmPerPixelAa(Vec<f64>),
+    FwhmPerPixelAa(#[serde(with = "super::bits")] Vec<f64>),
 }
 
 impl Resolution {

@@ -113,7 +113,7 @@ fn mutants_cost_no_reader() {
 }
 
 #[test]
-#[ignore = "15 minutes; run: nice cargo test -- --ignored --nocapture a_hundred_thousand_mutants_cost_no_reader"]
+#[ignore = "20 minutes; run: nice cargo test -- --ignored --nocapture a_hundred_thousand_mutants_cost_no_reader"]
 fn a_hundred_thousand_mutants_cost_no_reader() {
     assert!(read_mutants(MANY_MUTANTS) >= 100_000);
 }

@@ -280,9 +280,9 @@ mod tests {
         turned.reverse();
         let good = postcard::to_allocvec(&sent.spectrum).unwrap();
         let mut bad = good.clone();
-        // One byte of length, then the wavelengths.
+        // Two bytes of length, then the wavelengths.
         for (pixel, wave) in turned.iter().enumerate() {
-            bad[1 + 8 * pixel..9 + 8 * pixel].copy_from_slice(&wave.to_le_bytes());
+            bad[2 + 8 * pixel..10 + 8 * pixel].copy_from_slice(&wave.to_le_bytes());
         }
         assert!(postcard::from_bytes::<Spectrum>(&good).is_ok());
         assert!(postcard::from_bytes::<Spectrum>(&bad).is_err());

@@ -6,7 +6,7 @@
 //! limit of memory ([`sandbox`]). Back come checked messages ([`message`]). A child that dies, hangs
 //! or answers nonsense costs the file that it was at; the next file gets a new child ([`pool`]).
 //!
-//! The hop costs about 0.2 ms for 4 000 pixels (benchmark `reading::calspec_in_a_reader_process`).
+//! What the hop costs is measured by the benchmark `reading::calspec_plain_in_a_reader_process`.
 
 mod child;
 mod message;
