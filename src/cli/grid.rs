@@ -58,7 +58,7 @@ pub fn run(arguments: &GridArguments) -> CommandResult {
             // Where no bar can be seen (a log file), a line now and then.
             let on_node = || {
                 bar.inc(1);
-                if bar.is_hidden() && bar.position() % NODES_PER_LINE == 0 {
+                if bar.is_hidden() && bar.position().is_multiple_of(NODES_PER_LINE) {
                     let _ = writeln!(io::stderr(), "{} nodes done", bar.position());
                 }
             };
