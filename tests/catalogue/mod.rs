@@ -95,6 +95,36 @@ fn columns_name_places_of_the_report() {
     assert_eq!(names.len(), columns().len(), "names are unique");
 }
 
+/// The keys of a report are those of its schema version. A key that goes away or changes its meaning needs a
+/// higher `SCHEMA_VERSION`; a new one does not. In either case the list is written anew, by
+/// `EMBERLINE_WRITE_KEYS=1 cargo test --locked -- keys_of_the_report`.
+#[test]
+fn keys_of_the_report_change_with_its_version() {
+    fn gather(value: &Value, place: &str, keys: &mut Vec<String>) {
+        match value {
+            Value::Object(map) if !map.is_empty() => {
+                map.iter().for_each(|(key, value)| gather(value, &format!("{place}/{key}"), keys));
+            }
+            Value::Array(list) if place != "/solutions/0/covariance" && !list.is_empty() => {
+                gather(&list[0], &format!("{place}/0"), keys);
+            }
+            _ => keys.push(place.to_owned()),
+        }
+    }
+    let mut keys = vec![format!("schema_version {SCHEMA_VERSION}")];
+    gather(&real_report(), "", &mut keys);
+    keys[1..].sort();
+    let path = root().join("tests/data/report_keys.txt");
+    if std::env::var_os("EMBERLINE_WRITE_KEYS").is_some() {
+        fs::write(&path, keys.join("\n") + "\n").unwrap();
+    }
+    let kept = fs::read_to_string(path).unwrap();
+    let kept: Vec<&str> = kept.lines().collect();
+    let gone: Vec<&&str> = kept.iter().filter(|key| !keys.iter().any(|found| found == **key)).collect();
+    assert!(gone.is_empty(), "keys went away without a step of SCHEMA_VERSION: {gone:?}");
+    assert_eq!(keys, kept, "new keys: write the list anew");
+}
+
 /// What is said twice changes nothing, what is superseded stays, and one row per spectrum is in force.
 #[test]
 fn rows_are_kept_once_and_superseded() {
