@@ -93,6 +93,8 @@ impl Catalogue {
         if found > VERSION {
             return Err(CatalogueError::TooNew { found });
         }
+        // All that is read through this connection is one state of the catalogue, whatever is written meanwhile.
+        connection.execute_batch("BEGIN")?;
         Ok(Catalogue { connection })
     }
 

@@ -352,11 +352,10 @@ fn cell(value: &Value, kind: Kind) -> Cell {
 }
 
 /// Control characters become the replacement character: XML has none, NUL ends a string in C and in FITS, and
-/// PostgreSQL refuses it. Line ends and tabs stay.
+/// PostgreSQL refuses it, and readers of text change CR. Line feeds and tabs stay.
 fn printable(text: &str) -> String {
-    let is_illegal = |c: char| {
-        (c.is_control() && !matches!(c, '\t' | '\n' | '\r')) || matches!(c, '\u{fffe}' | '\u{ffff}')
-    };
+    let is_illegal =
+        |c: char| (c.is_control() && !matches!(c, '\t' | '\n')) || matches!(c, '\u{fffe}' | '\u{ffff}');
     text.replace(is_illegal, "\u{fffd}")
 }
 

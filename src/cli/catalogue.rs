@@ -48,7 +48,7 @@ struct ExportArgs {
     #[arg(long, value_parser = ["accepted", "review", "rejected"])]
     verdict: Option<String>,
     /// Only what was fitted at or after this time, UTC, such as 2026-03-01 or 2026-03-01T12:00.
-    #[arg(long, value_name = "TIME")]
+    #[arg(long, value_name = "TIME", value_parser = checked_time)]
     since: Option<String>,
     /// Only this run: the first characters of a configuration's fingerprint; implies --superseded.
     #[arg(long, value_name = "FINGERPRINT")]
@@ -58,6 +58,16 @@ struct ExportArgs {
     superseded: bool,
     /// The file to write.
     file: PathBuf,
+}
+
+/// A time that begins with a date; it is compared as text with the times of the catalogue.
+fn checked_time(text: &str) -> Result<String, String> {
+    let is_date = text.get(..10).is_some_and(|date| date.parse::<jiff::civil::Date>().is_ok());
+    if is_date {
+        Ok(text.to_owned())
+    } else {
+        Err("need a time such as 2026-03-01 or 2026-03-01T12:00".to_owned())
+    }
 }
 
 /// Runs the command.

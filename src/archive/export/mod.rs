@@ -8,8 +8,9 @@ mod parquet;
 mod text;
 mod votable;
 
-use std::fs::{self, File};
+use std::fs::{File, Permissions};
 use std::io::{self, BufWriter, Write};
+use std::os::unix::fs::PermissionsExt;
 use std::path::{Path, PathBuf};
 
 use super::catalogue::{Catalogue, CatalogueError, Filter};
@@ -66,30 +67,31 @@ pub fn export(
     path: &Path,
     on_row: &dyn Fn(),
 ) -> Result<u64, ExportError> {
-    let temporary = path.with_extension("part");
     let failed = |source| ExportError::Write { path: path.to_owned(), source };
-    let outcome = write_all(catalogue, filter, format, &temporary, on_row);
-    let count = match outcome {
-        Ok(count) => count,
-        Err(fault) => {
-            // What is left of it would only mislead; if it cannot be removed, the first fault matters more.
-            let _ = fs::remove_file(&temporary);
-            return Err(fault);
-        }
-    };
-    File::open(&temporary).and_then(|file| file.sync_all()).map_err(failed)?;
-    fs::rename(&temporary, path).map_err(failed)?;
+    let folder = path.parent().filter(|folder| !folder.as_os_str().is_empty()).unwrap_or(Path::new("."));
+    // Of its own name, and gone if anything fails.
+    let temporary = tempfile::Builder::new()
+        .permissions(Permissions::from_mode(READABLE_BY_ALL))
+        .tempfile_in(folder)
+        .map_err(failed)?;
+    let file = temporary.as_file().try_clone().map_err(failed)?;
+    let count = write_all(catalogue, filter, format, file, on_row)?;
+    temporary.as_file().sync_all().map_err(failed)?;
+    temporary.persist(path).map_err(|fault| failed(fault.error))?;
+    File::open(folder).and_then(|folder| folder.sync_all()).map_err(failed)?;
     Ok(count)
 }
+
+/// Mode of an export, less the process's mask: others load it.
+const READABLE_BY_ALL: u32 = 0o644;
 
 fn write_all(
     catalogue: &Catalogue,
     filter: &Filter,
     format: Format,
-    path: &Path,
+    file: File,
     on_row: &dyn Fn(),
 ) -> Result<u64, ExportError> {
-    let file = File::create(path).map_err(|source| ExportError::Write { path: path.to_owned(), source })?;
     let out: BufWriter<File> = BufWriter::with_capacity(1 << 18, file);
     let mut sink: Box<dyn Sink> = match format {
         Format::Csv => Box::new(text::Csv::new(out)?),

@@ -17,14 +17,16 @@ use parquet::schema::types::Type;
 use super::Sink;
 use crate::archive::column::{Cell, Column, Kind, columns};
 
-/// Rows held in memory and written together.
+/// Most rows, and bytes of text, held in memory and written together.
 const GROUP_ROWS: usize = 16_384;
+const GROUP_TEXT_BYTES: usize = 64 << 20;
 
 /// Writes rows as Parquet.
 pub struct Parquet<W: Write + Send> {
     writer: SerializedFileWriter<W>,
     /// The rows of the group that is being filled, column by column.
     held: Vec<Vec<Cell>>,
+    held_text_bytes: usize,
 }
 
 impl<W: Write + Send> Parquet<W> {
@@ -44,7 +46,7 @@ impl<W: Write + Send> Parquet<W> {
         let properties = WriterProperties::builder().set_key_value_metadata(Some(vec![about])).build();
         let writer =
             SerializedFileWriter::new(out, Arc::new(schema), Arc::new(properties)).map_err(io_error)?;
-        Ok(Parquet { writer, held: vec![Vec::new(); columns().len()] })
+        Ok(Parquet { writer, held: vec![Vec::new(); columns().len()], held_text_bytes: 0 })
     }
 
     fn write_group(&mut self) -> Result<(), ParquetError> {
@@ -77,6 +79,7 @@ impl<W: Write + Send> Parquet<W> {
             column.close()?;
             cells.clear();
         }
+        self.held_text_bytes = 0;
         group.close()?;
         Ok(())
     }
@@ -85,9 +88,16 @@ impl<W: Write + Send> Parquet<W> {
 impl<W: Write + Send> Sink for Parquet<W> {
     fn write_row(&mut self, cells: &[Cell]) -> io::Result<()> {
         for (held, cell) in self.held.iter_mut().zip(cells) {
+            if let Cell::Text(text) = cell {
+                self.held_text_bytes += text.len();
+            }
             held.push(cell.clone());
         }
-        if self.held[0].len() == GROUP_ROWS { self.write_group().map_err(io_error) } else { Ok(()) }
+        if self.held[0].len() == GROUP_ROWS || self.held_text_bytes > GROUP_TEXT_BYTES {
+            self.write_group().map_err(io_error)
+        } else {
+            Ok(())
+        }
     }
 
     fn finish(mut self: Box<Self>) -> io::Result<()> {
